@@ -1,0 +1,1 @@
+"""Instruments and time: VISA session, roles, dialects, bench file, clock, safe state. Knows nothing of procedures."""

@@ -1,0 +1,1 @@
+"""Procedures, specifications, packs and benches that ship with packmime (data)."""

@@ -1,0 +1,1 @@
+"""How people look at a record: pytest plugin, figures, pages."""

@@ -1,0 +1,1 @@
+"""What happens on the bench: stand-in, scan loop, guard, methods, record."""

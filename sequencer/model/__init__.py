@@ -1,0 +1,1 @@
+"""What people write, as checked data: procedure, specification, pack, order, findings. Pure."""
