@@ -1,0 +1,211 @@
+"""The bench file: which instruments there are, how they are wired, what the bench may reach."""
+
+from __future__ import annotations
+
+import re
+from typing import Annotated, Any, Literal
+
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+
+from drivers.text.binding import Written
+from drivers.text.measures import (
+    AmpereHours,
+    Amperes,
+    Band,
+    Limit,
+    Ohms,
+    PositiveAmperes,
+    PositiveVolts,
+    Seconds,
+    Volts,
+    refuse,
+)
+from drivers.text.nearest import unknown
+
+VIRTUAL = "virtual"
+
+
+class _Part(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+def _iso_date(value: str) -> str:
+    if not re.fullmatch(r"\d{4}-\d{2}-\d{2}", value):
+        raise refuse(f'"{value}" is not a date; expected such as "2027-03-01"')
+    return value
+
+
+class CertifiedVolts(_Part):
+    """One line of a calibration certificate: expanded uncertainty U (k = 2) in a range."""
+
+    range: PositiveVolts
+    U: PositiveVolts
+
+
+class CertifiedAmperes(_Part):
+    range: PositiveAmperes
+    U: PositiveAmperes
+
+
+class Certificate(_Part):
+    """The calibration certificate of one instrument; overrides the accuracy of its family."""
+
+    number: str
+    due: Annotated[str, AfterValidator(_iso_date)]
+    voltage: CertifiedVolts | None = None
+    current: CertifiedAmperes | None = None
+
+
+class Instrument(_Part):
+    address: str = Field(description="VISA resource name, or 'virtual' on a virtual bench")
+    dialect: str = Field(description="name of a shipped dialect, or path of a dialect file")
+    serial: str | None = Field(None, description="must stand in the identity that the instrument answers")
+    certificate: Certificate | None = None
+
+
+def _has_tolerance(value: Band) -> Band:
+    if value.nominal is None or value.nominal <= 0:
+        raise refuse(f'"{value.text}": a shunt needs a resistance and its tolerance, such as "10 mΩ ± 0.1 %"')
+    return value
+
+
+class CurrentPath(_Part):
+    """How the charger's current is measured: a Kelvin shunt and the meter across it."""
+
+    shunt: Annotated[Band, Limit("resistance"), AfterValidator(_has_tolerance)]
+    meter: str
+
+    @property
+    def shunt_ohm(self) -> float:
+        assert self.shunt.nominal is not None
+        return self.shunt.nominal
+
+
+class NodeWiring(_Part):
+    """The junction of charger, supply and load, and who measures there."""
+
+    supply: str
+    load: str
+    voltage: str = Field(description="meter at the node")
+    charger_voltage: str = Field(description="meter at the charger's own contacts (Kelvin)")
+    current: CurrentPath
+    ballast: Ohms = Field(description="resistor in the charger's path, at least half of the pack's resistance")
+    ballast_power: Annotated[str, Field(description="its rating, such as '10 W'")] | None = None
+
+
+class MainsWiring(_Part):
+    switch: str
+
+
+class Wiring(_Part):
+    node: NodeWiring
+    mains: MainsWiring
+
+
+class Limits(_Part):
+    """What the bench may reach; no procedure and no command line option moves these."""
+
+    node: PositiveVolts
+    current: PositiveAmperes
+    charge: AmpereHours
+    time: Seconds = 12 * 3600.0
+
+
+class Hardware(_Part):
+    """What acts without the program. "none" is listed on each report."""
+
+    emergency_stop: str = "none"
+    node_clamp: str = "none"
+    fuse: str = "none"
+    watchdog_relay: str = "none"
+
+    def missing(self) -> list[str]:
+        return [name.replace("_", " ") for name, value in self if value == "none"]
+
+
+class VirtualNode(_Part):
+    """How slow the virtual supply is: command delay, then a first-order settling."""
+
+    delay: Seconds = 0.005
+    settling: Seconds = 0.01
+
+
+def _scale(value: Any) -> float:
+    try:
+        number = float(value)
+    except (TypeError, ValueError) as reason:
+        raise refuse(f'"{value}" is not a number; expected such as 1') from reason
+    if not 0 <= number <= 100:
+        raise refuse(f'"{value}" must lie between 0 and 100')
+    return number
+
+
+class Virtual(_Part):
+    """The physical truth of a virtual bench. A bench with this section drives no hardware."""
+
+    transport: Literal["sockets", "in-process"] = "sockets"
+    charger: str | None = Field(None, description="name of a shipped virtual charger, or path of a charger file")
+    leads: Ohms = Field(0.008, description="wiring and contacts between charger and node, beyond ballast and shunt")
+    node: VirtualNode = VirtualNode()
+    meter_delay: Seconds = 0.0
+    supply_limit: Amperes | None = Field(None, description="a supply that goes into current limit early (trouble)")
+    shunt_factor: Annotated[float, BeforeValidator(_scale)] = Field(
+        1.0, description="true over declared shunt (trouble)"
+    )
+    errors: Annotated[float, BeforeValidator(_scale)] = Field(1.0, description="scale of gain, offset, drift, noise")
+    node_offset: Volts = 0.0
+
+
+class Bench(Written):
+    """One set of wired instruments."""
+
+    name: str
+    visa: str = Field("@py", description="VISA library: '@py', '@ivi' or the path of one")
+    line_frequency: Literal["50 Hz", "60 Hz"] = "50 Hz"
+    instruments: dict[str, Instrument]
+    wiring: Wiring
+    limits: Limits
+    hardware: Hardware = Hardware()
+    virtual: Virtual | None = None
+
+    @model_validator(mode="after")
+    def _names_exist(self) -> Bench:
+        for where, name in self.wired():
+            if name not in self.instruments:
+                raise refuse(f"wiring.{where}: {unknown(name, self.instruments, 'instrument')}")
+        used = [name for _, name in self.wired()]
+        twice = sorted({name for name in used if used.count(name) > 1})
+        if twice:
+            raise refuse(f"wiring: '{twice[0]}' stands in more than one place; each place needs its own instrument")
+        return self
+
+    @model_validator(mode="after")
+    def _virtual_throughout(self) -> Bench:
+        unreal = [name for name, part in self.instruments.items() if part.address == VIRTUAL]
+        if self.virtual is None and unreal:
+            raise refuse(f"'{unreal[0]}' has the address 'virtual', but the bench has no 'virtual' section")
+        if self.virtual is not None and len(unreal) < len(self.instruments):
+            raise refuse("a bench with a 'virtual' section drives no hardware: every address must read 'virtual'")
+        return self
+
+    def wired(self) -> list[tuple[str, str]]:
+        """(place in the wiring, name of the instrument there), in a fixed order."""
+        node = self.wiring.node
+        return [
+            ("node.supply", node.supply),
+            ("node.load", node.load),
+            ("node.voltage", node.voltage),
+            ("node.charger_voltage", node.charger_voltage),
+            ("node.current.meter", node.current.meter),
+            ("mains.switch", self.wiring.mains.switch),
+        ]
+
+
+ROLE_AT = {
+    "node.supply": "supply",
+    "node.load": "load",
+    "node.voltage": "meter",
+    "node.charger_voltage": "meter",
+    "node.current.meter": "meter",
+    "mains.switch": "mains switch",
+}
