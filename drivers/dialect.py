@@ -37,11 +37,15 @@ STATUS = {
 
 
 class Setting(BaseModel):
-    """One setting: the text sent, with {value}, and the query that reads it back (where it must be proven)."""
+    """One setting: the text sent, with {value}; the query that reads it back, and the words that prove it.
+
+    Without `expect` the readback must be the number that was set.
+    """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
     send: str
     back: str | None = None
+    expect: tuple[str, ...] = ()
 
     @model_validator(mode="after")
     def _only_value(self) -> Setting:
