@@ -1,0 +1,225 @@
+"""Draws the charge figure by matplotlib: for a page as SVG that follows the page's colours, for a file as it is."""
+
+from __future__ import annotations
+
+import io
+import re
+import warnings
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from typing import TYPE_CHECKING, Any, NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from reports.profile import Level, Profile, Stage, charge_profile
+from reports.wording import sentence
+
+if TYPE_CHECKING:
+    from matplotlib.axes import Axes
+    from matplotlib.figure import Figure
+
+Floats = NDArray[np.float64]
+
+# One colour, one meaning; each hex value occurs once, so that a page can put its own (light or dark) in its place.
+INK, MUTED, GRID, BAND, BAND_TOO = "#1b2126", "#5c6770", "#dfe3e6", "#f1f3f5", "#e4e9ed"
+VOLTAGE, CURRENT, TRIP, PAPER = "#1d4f91", "#9a4a00", "#b3122e", "#fffffe"
+_PAGE = {INK: "ink", MUTED: "muted", GRID: "grid", BAND: "band", BAND_TOO: "band-too"}
+_PAGE |= {VOLTAGE: "voltage", CURRENT: "current", TRIP: "trip", PAPER: "paper"}
+
+
+class _Flagged(NamedTuple):
+    """A trace of a foreign log, nan where it says nothing."""
+
+    time_s: Floats
+    value: Floats
+    flag: NDArray[np.int64]
+
+
+def charge_figure(
+    time_s: Floats, voltage_V: Floats, current_A: Floats, classification: Mapping[str, Any], title: str
+) -> Figure:
+    """The figure of a logged charge: voltage above current, stages shaded and named, levels as lines.
+
+    time_s, voltage_V, current_A : (n,), s, V, A; current positive into the pack; nan where nothing is known.
+    classification : the object of `classify --json`. title : any text; drawn as it is, on one line.
+    Save it by `save_figure`. ValueError for fewer than two samples.
+    """
+    flag = np.zeros(np.shape(time_s), dtype=np.int64)
+    profile = charge_profile(_Flagged(time_s, voltage_V, flag), _Flagged(time_s, current_A, flag), classification)
+    if profile is None:
+        raise ValueError(f"a figure needs at least two samples, the log has {np.size(time_s)}")
+    return draw(profile, title=sentence(title))
+
+
+def save_figure(figure: Figure, path: str, kind: str) -> None:
+    """Write a figure as "png", "svg" or "pdf", the same bytes each time."""
+    from matplotlib import rc_context
+
+    nothing = {"svg": {"Date": None, "Creator": None}, "pdf": {"CreationDate": None}, "png": {"Software": None}}
+    with _quiet(), rc_context({"svg.hashsalt": "packmime", "svg.fonttype": "none"}):
+        figure.savefig(path, format=kind, dpi=160, metadata=nothing[kind])
+
+
+@contextmanager
+def _quiet() -> Iterator[None]:
+    """A letter that the figure's own face lacks is drawn as a box or by the page's faces; no one needs a warning."""
+    with warnings.catch_warnings():
+        warnings.filterwarnings("ignore", message="Glyph", category=UserWarning)
+        yield
+
+
+def draw(profile: Profile, *, title: str = "", width_in: float = 8.6, height_in: float = 4.7) -> Figure:
+    """Voltage at the charger's contacts above, current into the pack below, one axis of time."""
+    import matplotlib
+    from matplotlib.figure import Figure
+
+    with matplotlib.rc_context():
+        matplotlib.rcdefaults()  # a person's own matplotlibrc shall not reach a report
+        matplotlib.rcParams.update({"font.size": 9, "axes.unicode_minus": True, "path.simplify_threshold": 0.2})
+        figure = Figure(figsize=(width_in, height_in), facecolor=PAPER)
+        left, right, top = 0.62 / width_in, 1 - 0.12 / width_in, 1 - (0.62 if title else 0.32) / height_in
+        upper, lower = figure.subplots(
+            2,
+            1,
+            sharex=True,
+            height_ratios=(1.15, 1),
+            gridspec_kw={"left": left, "right": right, "top": top, "bottom": 0.48 / height_in, "hspace": 0.1},
+        )
+        if title:
+            # parse_math off: a dollar sign in outside text is a dollar sign.
+            figure.text(left, 1 - 0.12 / height_in, title, va="top", fontsize=11, color=INK, parse_math=False)
+        factor_s, unit = _clock(profile.window)
+        _frame(upper, "voltage / V")
+        _frame(lower, "current / A")
+        _traces(profile, upper, lower, factor_s)
+        for axes in (upper, lower):
+            _bands(axes, profile.stages, factor_s)
+        _names(upper, profile, factor_s, width_in * (right - left) * 72)
+        for limit_V in profile.limits_V:
+            upper.axhline(limit_V, color=MUTED, linewidth=0.9, linestyle=":", zorder=2)
+        span = (profile.window[1] - profile.window[0]) / factor_s
+        _levels(upper, profile.voltage_levels, factor_s, span, VOLTAGE, below=True)
+        _levels(lower, profile.current_levels, factor_s, span, CURRENT, below=False)
+        _trips(upper, lower, profile, factor_s)
+        lower.set_xlabel(f"time since the start of the run / {unit}", color=INK)
+        lower.set_xlim(profile.window[0] / factor_s, profile.window[1] / factor_s)
+        return figure
+
+
+def _clock(window: tuple[float, float]) -> tuple[float, str]:
+    """Seconds in the unit of the time axis, and the unit."""
+    span_s = window[1] - window[0]
+    if span_s > 6 * 3600:
+        return 3600.0, "h"
+    return (60.0, "min") if span_s > 300 else (1.0, "s")
+
+
+def _frame(axes: Axes, label: str) -> None:
+    axes.set_facecolor(PAPER)
+    axes.set_ylabel(label, color=INK)
+    axes.grid(True, color=GRID, linewidth=0.6)
+    axes.set_axisbelow(False)
+    axes.tick_params(colors=MUTED, labelcolor=INK, length=3)
+    axes.spines[["top", "right"]].set_visible(False)
+    axes.spines[["left", "bottom"]].set_color(MUTED)
+
+
+def _traces(profile: Profile, upper: Axes, lower: Axes, factor_s: float) -> None:
+    """Both traces, with ranges that the time after removal (0 V) does not spoil."""
+    for axes, trace, colour, zero in (
+        (upper, profile.voltage_V, VOLTAGE, False),
+        (lower, profile.current_A, CURRENT, True),
+    ):
+        axes.plot(trace.time_s / factor_s, trace.level, color=colour, linewidth=1.3, zorder=3)
+        seen = trace.level[(trace.time_s >= profile.body[0]) & (trace.time_s <= profile.body[1])]
+        seen = seen[np.isfinite(seen)]
+        if seen.size:
+            low, high = float(seen.min()), float(seen.max())
+            low = min(low, 0.0) if zero else low
+            margin = 0.09 * ((high - low) or abs(high) or 1.0)
+            axes.set_ylim(low - (0.5 * margin if zero else margin), high + margin)
+
+
+def _bands(axes: Axes, stages: tuple[Stage, ...], factor_s: float) -> None:
+    for stage in stages:
+        colour = BAND_TOO if stage.number % 2 else BAND
+        axes.axvspan(stage.start_s / factor_s, stage.end_s / factor_s, color=colour, linewidth=0, zorder=0)
+
+
+def _names(axes: Axes, profile: Profile, factor_s: float, width_pt: float) -> None:
+    """Each stage's number and name above its band; the number alone where the name has no room; else nothing."""
+    span_s = profile.window[1] - profile.window[0]
+    for stage in profile.stages:
+        room_pt = (stage.end_s - stage.start_s) / span_s * width_pt
+        full = f"{stage.number} {stage.words}"
+        # 4.9 pt: mean advance of the 8.5 pt face; a name that does not fit would run into its neighbour's.
+        text = full if room_pt > 4.9 * len(full) + 4 else str(stage.number) if room_pt > 9 else ""
+        middle = (stage.start_s + stage.end_s) / 2 / factor_s
+        axes.text(
+            middle,
+            1.03,
+            text,
+            transform=axes.get_xaxis_transform(),
+            ha="center",
+            fontsize=8.5,
+            color=INK,
+            parse_math=False,
+        )
+
+
+def _levels(axes: Axes, levels: tuple[Level, ...], factor_s: float, span: float, colour: str, *, below: bool) -> None:
+    for number, level in enumerate(levels):
+        start, stop = level.start_s / factor_s, level.end_s / factor_s
+        # A little to the right, for at its start the trace itself climbs through the level; each further right than
+        # the one before, for levels may lie close together.
+        place = start + (0.05 + 0.22 * number) * span
+        axes.plot([start, stop], [level.value] * 2, color=colour, linewidth=0.8, linestyle=(0, (5, 3)), zorder=2)
+        shift, anchor = ((0, -4), "top") if below else ((0, 3), "bottom")
+        spot = (place, level.value)
+        axes.annotate(level.words, spot, shift, textcoords="offset points", va=anchor, fontsize=8.5, color=colour)
+
+
+def _trips(upper: Axes, lower: Axes, profile: Profile, factor_s: float) -> None:
+    for trip in profile.trips:
+        early = trip.time_s < (profile.window[0] + profile.window[1]) / 2
+        for axes in (upper, lower):
+            axes.axvline(trip.time_s / factor_s, color=TRIP, linewidth=1.1, zorder=4)
+        lower.annotate(
+            trip.words,
+            (trip.time_s / factor_s, 0.5),
+            (4 if early else -4, 0),
+            xycoords=lower.get_xaxis_transform(),
+            textcoords="offset points",
+            ha="left" if early else "right",
+            va="center",
+            fontsize=8.5,
+            color=TRIP,
+            parse_math=False,
+        )
+
+
+def svg_for_page(figure: Figure, *, salt: str, label: str) -> str:
+    """A figure as an `<svg>` element for a page: the page's colours and fonts, no ids but its own, no scripts.
+
+    salt : tells the ids of two figures on one page apart. label : what the figure shows, for those who do not see it;
+    fixed text of ours, without markup.
+    """
+    from matplotlib import rc_context
+
+    text = io.StringIO()
+    with _quiet(), rc_context({"svg.hashsalt": salt, "svg.fonttype": "none"}):
+        figure.savefig(text, format="svg", metadata={"Date": None, "Creator": None})
+    svg = text.getvalue()
+    svg = svg[svg.index("<svg") :]
+    svg = re.sub(r"<metadata>.*?</metadata>", "", svg, flags=re.DOTALL)
+    svg = re.sub(r"<defs>\s*<style.*?</style>\s*</defs>", "", svg, flags=re.DOTALL)
+    svg = re.sub(r' id="[a-zA-Z]+(?:\.axis)?_\d+"', "", svg)
+    svg = re.sub(r'font: ([\d.]+px) [^;"]*', r"font-size: \1", svg)
+    svg = re.sub(r"<!--.*?-->", "", svg, flags=re.DOTALL)
+    for colour, name in _PAGE.items():
+        svg = svg.replace(colour, f"var(--{name})")
+    head = re.match(r'<svg [^>]*viewBox="([^"]*)"[^>]*>', svg)
+    assert head is not None
+    opening = f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="{head[1]}" role="img" aria-label="{label}">'
+    return re.sub(r"\s*\n\s*", "\n", opening + svg[head.end() :])

@@ -1,0 +1,208 @@
+"""The rows of a report's tables: chosen, ordered and rounded text from the record's numbers."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from reports import wording
+from reports.inputs import Measurand
+from reports.limit_bar import Bar, limit_bar
+from reports.wording import Word, clean, si
+
+Json = Mapping[str, Any]
+
+
+@dataclass(frozen=True)
+class VerdictRow:
+    """One limit: the verdict and its reason first, then what was measured against what."""
+
+    node: str
+    limit: str
+    verdict: Word
+    why: str
+    result: str
+    per: str
+    coverage: str
+    demanded: str
+    bar: Bar | None
+    basis: tuple[str, ...]
+    evidence: str
+
+
+@dataclass(frozen=True)
+class StageRow:
+    """One stage of the charge."""
+
+    number: int
+    words: str
+    span: str
+    duration: str
+    current: str
+    voltage: str
+    charge: str
+
+
+@dataclass(frozen=True)
+class Contribution:
+    """One line of an uncertainty budget, each value with its unit."""
+
+    name: str
+    u: str
+    sensitivity: str
+    share: str
+    distribution: str
+    dof: str
+    source: str
+
+
+@dataclass(frozen=True)
+class Budget:
+    """The uncertainty budget of one finding (JCGM 100, clause 7.2.7)."""
+
+    limit: str
+    result: str
+    summary: str
+    contributions: tuple[Contribution, ...]
+
+
+@dataclass(frozen=True)
+class Pair:
+    """A name and what it is."""
+
+    name: str
+    text: str
+
+
+def verdict_row(number: int, verdict: Json, measurands: Mapping[str, Measurand]) -> VerdictRow:
+    """The row of one entry of verdicts.json; ValueError for a verdict that is none of the seven words."""
+    unit = str(verdict.get("unit") or "")
+    U = expanded(verdict)
+    value, low, high = verdict.get("value"), verdict.get("low"), verdict.get("high")
+    number_like = isinstance(value, int | float) and not isinstance(value, bool)
+    guard = float(verdict.get("guard_band") or 0.0)
+    k, evidence = verdict.get("k"), verdict.get("evidence")
+    finding = measurands.get(str(verdict.get("finding")))
+    return VerdictRow(
+        node=node_name(number),
+        limit=clean(verdict["limit"]),
+        verdict=wording.verdict_word(verdict["verdict"]),
+        why=clean(verdict.get("why")),
+        result=wording.measured(value, U, unit),
+        per="per cell" if number_like and finding is not None and finding.per_cell else "",
+        coverage=f"k = {k:.2f}" if U is not None and k is not None else "",
+        demanded=wording.limits(low, high, verdict.get("expected"), unit),
+        bar=limit_bar(float(value), U or 0.0, low, high, guard) if number_like and value is not None else None,
+        basis=_basis(verdict, unit),
+        evidence=" to ".join(wording.since_start(float(moment)) for moment in evidence) if evidence else "",
+    )
+
+
+def measurand_rows(verdicts: Sequence[Json], measurands: Mapping[str, Measurand]) -> tuple[Pair, ...]:
+    """What each judged finding measures, when, and by which statistic; each once, in the order of the verdicts."""
+    names = dict.fromkeys(str(verdict.get("finding")) for verdict in verdicts)
+    return tuple(
+        Pair(clean(name), clean(f"{one.measures}. When: {one.when}. Statistic: {one.statistic}."))
+        for name in names
+        if (one := measurands.get(name)) is not None
+    )
+
+
+def node_name(number: int) -> str:
+    """The id of a verdict in pytest, from 1: v001. Opaque, for an outside word in an id crashes pytest-html."""
+    return f"v{number:03d}"
+
+
+def expanded(verdict: Json) -> float | None:
+    """U = k u of a verdict, None where it has no uncertainty."""
+    u, k = verdict.get("u"), verdict.get("k")
+    return None if u is None or k is None else float(u) * float(k)
+
+
+def _basis(verdict: Json, unit: str) -> tuple[str, ...]:
+    """Rule, guard band, number of readings, probability of conformity: what of them there is."""
+    parts = []
+    if verdict.get("rule") is not None:
+        parts.append(clean(verdict["rule"]))
+    if verdict.get("guard_band"):
+        parts.append(f"w = {si(float(verdict['guard_band']), unit, 2)}")
+    if verdict.get("n") is not None:
+        parts.append(f"n = {clean(verdict['n'])}")
+    if verdict.get("p_conform") is not None:
+        p = wording.probability(float(verdict["p_conform"]))
+        parts.append(f"p {p}" if p[0] in "<>" else f"p = {p}")
+    return tuple(parts)
+
+
+def stage_rows(classification: Json) -> tuple[StageRow, ...]:
+    """The stages of a classification (design 5), numbered from 1."""
+    return tuple(
+        StageRow(
+            number=number,
+            words=wording.stage_words(stage["kind"]),
+            span=f"{wording.since_start(float(stage['start_s']))} to {wording.since_start(float(stage['end_s']))}",
+            duration=wording.clock_time(float(stage["end_s"]) - float(stage["start_s"])),
+            current=_estimate(stage.get("current_A"), "A"),
+            voltage=_estimate(stage.get("voltage_V"), "V"),
+            charge=si(float(stage["charge_Ah"]), "Ah", 4) if stage.get("charge_Ah") is not None else wording.NOTHING,
+        )
+        for number, stage in enumerate(classification.get("stages") or (), 1)
+    )
+
+
+def _estimate(estimate: Json | None, unit: str) -> str:
+    """A value with its standard uncertainty, as "u": a classification states no coverage factor."""
+    if not estimate or estimate.get("value") is None:
+        return wording.NOTHING
+    return wording.measured(estimate["value"], estimate.get("u"), unit).replace(" ± ", ", u = ")
+
+
+def budget_table(limit: str, budget: Json) -> Budget:
+    """One entry of budgets.json as a table."""
+    unit = str(budget.get("unit") or "")
+    dof, k, u = budget.get("dof"), budget.get("k"), budget.get("u")
+    parts = [
+        f"u = {si(float(u), unit, 3)}" if u is not None else "",
+        f"effective degrees of freedom {_dof(dof)}",
+        f"k = {float(k):.2f}" if k is not None else "",
+        f"shape {clean(budget.get('shape'))}" if budget.get("shape") is not None else "",
+    ]
+    return Budget(
+        limit=clean(limit),
+        result=wording.measured(budget.get("value"), budget.get("U"), unit),
+        summary=", ".join(part for part in parts if part),
+        contributions=tuple(_contribution(line, unit, float(u or 0.0)) for line in budget.get("contributions") or ()),
+    )
+
+
+def _contribution(line: Json, unit: str, total: float) -> Contribution:
+    share = float(line.get("contribution") or 0.0)
+    variance = f" ({100 * (share / total) ** 2:.0f} %)" if total > 0 else ""
+    sensitivity = line.get("sensitivity")
+    return Contribution(
+        name=clean(line.get("name")),
+        u=f"{float(line['u']):.3g}" if line.get("u") is not None else wording.NOTHING,
+        sensitivity=f"{float(sensitivity):.4g}" if sensitivity is not None else wording.NOTHING,
+        share=si(share, unit, 3) + variance,
+        distribution=clean(line.get("distribution")),
+        dof=_dof(line.get("dof")),
+        source=clean(line.get("source")),
+    )
+
+
+def _dof(dof: float | None) -> str:
+    """Degrees of freedom; ∞ for a contribution taken as exactly known (JCGM 100, G.4.3)."""
+    if dof is None or float(dof) > 9999:
+        return "∞"
+    return f"{float(dof):.3g}"
+
+
+def finding_rows(findings: Sequence[Json]) -> tuple[Pair, ...]:
+    """Everything that the analysis read off the traces, judged or not."""
+    rows = []
+    for finding in findings:
+        value = _estimate({"value": finding.get("value"), "u": finding.get("u")}, str(finding.get("unit") or ""))
+        words = finding.get("words")
+        rows.append(Pair(clean(finding.get("name")), f"{value}: {clean(words)}" if words else value))
+    return tuple(rows)

@@ -1,0 +1,170 @@
+"""All that a report says, chosen, ordered and rounded; the template only places it."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from reports import header, rows, wording
+from reports.profile import Profile, charge_profile
+from reports.rows import Budget, Pair, StageRow, VerdictRow
+from reports.source import Source
+from reports.wording import Word, clean
+
+
+@dataclass(frozen=True)
+class View:
+    """One report. Every text is plain (not yet escaped for HTML), every number is already written out."""
+
+    rehearsal: bool
+    overall: Word
+    tally: str
+    model: str
+    procedure: str
+    purpose: str
+    dated: str
+    duration: str
+    run: str
+    number: str
+    judged: str
+    person: str
+    reason: str
+    ending: str
+    safe: bool
+    trips: tuple[str, ...]
+    deviations: tuple[str, ...]
+    changed: tuple[str, ...]
+    verdicts: tuple[VerdictRow, ...]
+    algorithm: str
+    algorithm_note: str
+    profile: Profile | None
+    profile_note: str
+    stages: tuple[StageRow, ...]
+    findings: tuple[Pair, ...]
+    budgets: tuple[Budget, ...]
+    inputs: tuple[tuple[str, str, str, str], ...]
+    instruments: tuple[tuple[str, str, str, str, str], ...]
+    surroundings: tuple[Pair, ...]
+    protections: tuple[Pair, ...]
+    missing_hardware: tuple[str, ...]
+    integrity: tuple[str, ...]
+    notes: tuple[str, ...]
+    measurands: tuple[Pair, ...]
+    rules: tuple[str, ...]
+    cautions: tuple[str, ...]
+    not_covered: tuple[str, ...]
+
+
+def build(source: Source) -> View:
+    """The view of a judgement. Same source, same view: no clock, no machine, no randomness is read.
+
+    KeyError or ValueError where the judgement lacks what design 5 and 13 demand of it.
+    """
+    manifest, judgement = source.manifest, source.judgement
+    verdicts = source.verdicts["verdicts"]
+    classification = source.findings.get("classification") or {}
+    profile = _profile(source, classification)
+    return View(
+        rehearsal=bool(source.verdicts["rehearsal"]) or bool(manifest.get("rehearsal")),
+        overall=wording.verdict_word(source.verdicts["overall"]),
+        tally=wording.tally([str(verdict["verdict"]) for verdict in verdicts]),
+        model=clean(header.part(manifest, "specification").get("model")),
+        procedure=clean(header.part(manifest, "procedure").get("name")),
+        purpose=clean(header.part(manifest, "procedure").get("purpose")),
+        dated=header.dated(manifest),
+        duration=wording.clock_time(float(manifest.get("duration_s") or 0.0)),
+        run=clean(manifest.get("run")),
+        number=clean(source.name),
+        judged=wording.utc(judgement.get("utc")),
+        person=clean(judgement.get("person") or manifest.get("person")),
+        reason=clean(judgement["reason"]) if judgement.get("reason") is not None else "",
+        ending=header.ending(manifest, source.events),
+        safe=manifest.get("safe") is True,
+        trips=header.trip_lines(source.events),
+        deviations=header.unique(judgement.get("deviations"), manifest.get("deviations")),
+        changed=header.unique(judgement.get("changed")),
+        verdicts=tuple(rows.verdict_row(number, one, source.measurands) for number, one in enumerate(verdicts, 1)),
+        algorithm=_algorithm(classification),
+        algorithm_note=clean(classification.get("why")) if classification.get("why") else "",
+        profile=profile,
+        profile_note=_profile_note(source, profile),
+        stages=rows.stage_rows(classification),
+        findings=rows.finding_rows(source.findings.get("findings") or ()),
+        budgets=_budgets(source),
+        inputs=header.inputs(manifest),
+        instruments=header.instruments(manifest),
+        surroundings=header.surroundings(manifest),
+        protections=header.protections(manifest),
+        missing_hardware=header.unique(manifest.get("missing_hardware")),
+        integrity=header.unique(source.notes),
+        notes=header.unique(event.get("text") for event in source.events if event.get("event") == "note"),
+        measurands=rows.measurand_rows(verdicts, source.measurands),
+        rules=_rules(verdicts),
+        cautions=wording.CAUTIONS,
+        not_covered=wording.NOT_COVERED,
+    )
+
+
+def _profile(source: Source, classification: Mapping[str, Any]) -> Profile | None:
+    """The charge figure's content; None for a record that ended before any charge was watched."""
+    voltage, current = source.series("charger.voltage"), source.series("charger.current")
+    if voltage is None or current is None:
+        return None
+    return charge_profile(voltage, current, classification, source.events, limits_V=_pack_limits(source))
+
+
+def _pack_limits(source: Source) -> tuple[float, ...]:
+    """The limits of the voltage that the charger holds, for the whole pack, V; empty where the cells are unknown."""
+    for verdict in source.verdicts["verdicts"]:
+        if verdict["limit"] == "charge.voltage" and source.cells is not None:
+            return tuple(source.cells * float(verdict[side]) for side in ("low", "high") if verdict[side] is not None)
+    return ()
+
+
+def _profile_note(source: Source, profile: Profile | None) -> str:
+    """What a reader must know of the figure: gaps, thinning, scaled capacity."""
+    if profile is None:
+        return "The record holds no voltage and current of a charge."
+    parts = ["Voltage at the charger's own contacts, for the whole pack; current is positive into the pack."]
+    if _pack_limits(source):
+        parts.append("Dotted: the limits of the voltage that the charger holds.")
+    parts.append("Drawn from the lowest and highest sample of each short stretch of time; the record holds them all.")
+    if profile.left_out:
+        parts.append(f"Left out: {profile.left_out} samples flagged as stale, overloaded or not a number.")
+    compression = source.series("pack.compression")
+    fastest = 1.0 if compression is None else float(np.fmax.reduce(compression.value, initial=1.0))
+    if fastest > 1.0:
+        parts.append(
+            f"The pack's capacity was scaled: its state of charge moved up to {fastest:.3g} times faster"
+            " than the real pack's, so times and charges here are not those of a real charge."
+        )
+    return " ".join(parts)
+
+
+def _algorithm(classification: Mapping[str, Any]) -> str:
+    """How the charge was classified, how surely, with what flags."""
+    if not classification.get("algorithm"):
+        return ""
+    confidence = classification.get("confidence")
+    words = f"Read as {clean(classification['algorithm'])}"
+    if confidence is not None:
+        words += f", confidence {wording.probability(float(confidence))}"
+    flags = ", ".join(clean(flag) for flag in classification.get("flags") or ())
+    return words + (f"; flags: {flags}." if flags else ".")
+
+
+def _budgets(source: Source) -> tuple[Budget, ...]:
+    """In the order of the verdicts, then any other."""
+    judged = [str(verdict["limit"]) for verdict in source.verdicts["verdicts"]]
+    order = [limit for limit in dict.fromkeys(judged) if limit in source.budgets]
+    order += [limit for limit in source.budgets if limit not in order]
+    return tuple(rows.budget_table(limit, source.budgets[limit]) for limit in order)
+
+
+def _rules(verdicts: list[dict[str, Any]]) -> tuple[str, ...]:
+    """The decision rules in use, each in a sentence with its source."""
+    used = dict.fromkeys(str(verdict["rule"]) for verdict in verdicts if verdict.get("rule"))
+    return tuple(wording.RULES.get(rule, clean(rule)) for rule in used)
