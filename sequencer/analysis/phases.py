@@ -1,0 +1,145 @@
+"""The phases of one unbroken run of charging current: plateaus, held voltage, held power, other slopes."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+from typing import Literal
+
+import numpy as np
+
+from sequencer.analysis.regulation import Held, held_voltage, holds_power, tolerance_V
+from sequencer.analysis.segments import Segment, cut
+from sequencer.analysis.trace import Trace
+
+Kind = Literal["precharge", "cc", "cv", "constant-power", "taper", "pulse", "rest", "float", "top-up"]
+
+SAME_LEVEL = 0.02  # plateaus closer than this are one
+LEAST_TIME = 0.005  # of a run: what is shorter is a transition
+FLOAT_SHARE = 0.12  # of the largest plateau: a plateau below, after the charge, is a float
+FLOAT_DROP = 0.6  # of the current before: how far the current falls at once into a float
+
+
+@dataclass(frozen=True)
+class Phase:
+    """Samples start ... stop-1 of one kind. level_A: plateau current, else the first current.
+
+    fall: share by which the current falls in it.    levels: digital steps of a held voltage, 0 for a smooth one.
+    after_foldback: a plateau that was reached by a slope without a held voltage.
+    """
+
+    kind: Kind
+    start: int
+    stop: int
+    level_A: float
+    fall: float = 0.0
+    levels: int = 0
+    after_foldback: bool = False
+
+
+def phases_of_run(trace: Trace, start: int, stop: int) -> list[Phase]:
+    """Phases of the run of samples start ... stop-1, in order."""
+    segments = cut(trace.time_s, trace.current_A, start, stop, scale_A=trace.scale_A, noise_A=trace.noise_A)
+    segments = [segment for segment in segments if not _rises(trace, segment)]
+    phases = _regulated(trace, segments)
+    least_s = LEAST_TIME * trace.duration(start, stop)
+    lasting = [p for p in phases if p.kind == "cv" or trace.duration(p.start, p.stop) >= least_s]
+    return _foldback_marked(_merged(trace, lasting))
+
+
+def _rises(trace: Trace, segment: Segment) -> bool:
+    """A soft start: no phase of its own."""
+    if segment.kind != "slope":
+        return False
+    return float(trace.current_A[segment.stop - 1]) > segment.level_A + 3.0 * trace.noise_A
+
+
+def _regulated(trace: Trace, segments: list[Segment]) -> list[Phase]:
+    """Held voltages found from the end backwards, everything else by its own shape."""
+    phases: list[Phase] = []
+    last = len(segments) - 1
+    while last >= 0:
+        found = held_voltage(trace, segments, last)
+        if found is None:
+            phases[:0] = _alone(trace, segments, last)
+            last -= 1
+            continue
+        first, held = found
+        phases[:0] = _with_float(trace, segments[first : last + 1], held)
+        if held.start > segments[first].start:
+            phases[:0] = _unheld(trace, segments[first], held.start)
+        last = first - 1
+    return phases
+
+
+def _unheld(trace: Trace, segment: Segment, stop: int) -> list[Phase]:
+    """What comes before the held voltage in the same slope."""
+    if stop - segment.start < 2:
+        return []
+    return [_slope(trace, segment.start, stop, segment.level_A)]
+
+
+def _alone(trace: Trace, segments: list[Segment], index: int) -> list[Phase]:
+    segment = segments[index]
+    if segment.kind == "flat":
+        return [Phase("cc", segment.start, segment.stop, segment.level_A)]
+    if segment.kind == "short":
+        return []
+    phase = _slope(trace, segment.start, segment.stop, segment.level_A)
+    knee = phase.fall < 3.0 * SAME_LEVEL and index > 0 and segments[index - 1].kind == "flat"
+    if knee and _steady_voltage(trace, segment):
+        return [replace(phase, kind="cv")]
+    return [phase]
+
+
+def _steady_voltage(trace: Trace, segment: Segment) -> bool:
+    voltage = trace.voltage_V[segment.start : segment.stop]
+    return float(np.ptp(voltage)) <= tolerance_V(trace, float(np.median(voltage)))
+
+
+def _slope(trace: Trace, start: int, stop: int, level_A: float) -> Phase:
+    fall = 1.0 - float(trace.current_A[stop - 1]) / level_A if level_A > 0.0 else 0.0
+    kind: Kind = "constant-power" if holds_power(trace, start, stop) else "taper"
+    return Phase(kind, start, stop, level_A, fall)
+
+
+def _with_float(trace: Trace, group: list[Segment], held: Held) -> list[Phase]:
+    """The held voltage, and the float where its last piece is a low plateau that the current fell to at once."""
+    tail = group[-1]
+    plain = Phase("cv", held.start, held.stop, _first_current(trace, held), held.fall, held.levels)
+    if len(group) < 2 or tail.kind != "flat" or held.levels or tail.level_A > FLOAT_SHARE * trace.scale_A:
+        return [plain]
+    end = group[-2].stop
+    before = float(trace.current_A[end - 1])
+    if tail.level_A > FLOAT_DROP * before:
+        return [plain]
+    return [replace(plain, stop=end), Phase("float", tail.start, tail.stop, tail.level_A)]
+
+
+def _first_current(trace: Trace, held: Held) -> float:
+    return float(trace.current_A[held.start])
+
+
+def _merged(trace: Trace, phases: list[Phase]) -> list[Phase]:
+    """Neighbouring plateaus of one level become one: a glitch between them is no step."""
+    merged: list[Phase] = []
+    for phase in phases:
+        if merged and phase.kind == "cc" == merged[-1].kind and same_level(trace, phase.level_A, merged[-1].level_A):
+            longer = max(phase, merged[-1], key=lambda p: trace.duration(p.start, p.stop))
+            merged[-1] = replace(longer, start=merged[-1].start, stop=phase.stop)
+        else:
+            merged.append(phase)
+    return merged
+
+
+def same_level(trace: Trace, a_A: float, b_A: float) -> bool:
+    """Whether two plateau currents are one setting."""
+    return abs(a_A - b_A) <= max(SAME_LEVEL * max(a_A, b_A), trace.noise_A)
+
+
+def _foldback_marked(phases: list[Phase]) -> list[Phase]:
+    """Plateaus that the current slid to, rather than stepped to, are no stages of the algorithm."""
+    marked: list[Phase] = []
+    for phase in phases:
+        slid = phase.kind == "cc" and bool(marked) and marked[-1].kind in ("taper", "constant-power")
+        marked.append(replace(phase, after_foldback=True) if slid and phase.level_A < marked[-1].level_A else phase)
+    return marked

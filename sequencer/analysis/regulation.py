@@ -1,0 +1,141 @@
+"""What the charger holds while its current falls: the voltage, the power, or neither. Voltage beside current decides.
+
+Field practice: constant voltage is a voltage within ±0.3 % (or 3 σ) while the current falls by half or more; constant
+power is V I within 1 to 2 %; in a thermal foldback the voltage falls with the current.
+"""
+
+from __future__ import annotations
+
+import itertools
+from dataclasses import dataclass
+
+import numpy as np
+
+from sequencer.analysis.segments import Segment
+from sequencer.analysis.smoothing import moving_mean, width_for
+from sequencer.analysis.trace import Trace
+
+VOLTAGE_SHARE = 0.003
+POWER_SHARE = 0.015
+LEAST_FALL = 0.05  # of the current before: less shows a knee, not what is held after it
+LADDER_LEVELS = 6  # so many levels in small steps at a held voltage are one regulation in digital steps
+LADDER_STEP = 0.12  # of the first level
+
+
+@dataclass(frozen=True)
+class Held:
+    """Samples start ... stop-1 in which the voltage is held; levels is the number of digital steps (0: smooth)."""
+
+    start: int
+    stop: int
+    voltage_V: float
+    fall: float
+    levels: int
+
+
+def tolerance_V(trace: Trace, voltage_V: float) -> float:
+    """How far from a held voltage a sample may lie."""
+    return max(VOLTAGE_SHARE * abs(voltage_V), 3.0 * trace.noise_V)
+
+
+def held_voltage(trace: Trace, segments: list[Segment], last: int) -> tuple[int, Held] | None:
+    """The constant-voltage phase that ends with segment `last`, and the index of its first segment; None if none."""
+    first, start = _reach_back(trace, segments, last)
+    if start >= segments[last].stop:
+        return None
+    if first < last and segments[first].kind == "flat" and _opens(segments, first):
+        first += 1
+        start = segments[first].start
+    group = segments[first : last + 1]
+    before = _current_before(trace, segments, first, start)
+    stop = segments[last].stop
+    fall = 1.0 - _smooth_end(trace, start, stop) / before if before > 0.0 else 0.0
+    if fall < LEAST_FALL or not _one_regulation(trace, group, before) or _folds_back(trace, start, stop, fall):
+        return None
+    flats = sum(segment.kind == "flat" for segment in group)
+    voltage = float(np.median(trace.voltage_V[start:stop]))
+    return first, Held(start, stop, voltage, fall, flats if flats >= LADDER_LEVELS else 0)
+
+
+def holds_power(trace: Trace, start: int, stop: int) -> bool:
+    """Whether V I stays within ±1.5 % while the current falls by more than that allows by chance."""
+    current = trace.current_A[start:stop]
+    power = trace.voltage_V[start:stop] * current
+    width = width_for(trace.noise_A, 0.003 * trace.scale_A, max(1, (stop - start) // 10))
+    smooth = moving_mean(power, width)
+    middle = float(np.median(smooth))
+    fall = 1.0 - _smooth_end(trace, start, stop) / float(np.mean(current[:width]))
+    spread = float(np.quantile(np.abs(smooth - middle), 0.95))
+    return spread <= POWER_SHARE * middle and fall > 2.0 * POWER_SHARE
+
+
+def _reach_back(trace: Trace, segments: list[Segment], last: int) -> tuple[int, int]:
+    """First segment and sample from which the voltage stays where it is in segment `last`."""
+    tail = segments[last]
+    voltage = float(np.median(trace.voltage_V[tail.start + int(0.6 * tail.size) : tail.stop]))
+    allowed = tolerance_V(trace, voltage)
+    first, start = last, _held_from(trace, tail, voltage, allowed)
+    while start == segments[first].start and first > 0 and _continues(segments[first - 1], segments[first]):
+        onset = _held_from(trace, segments[first - 1], voltage, allowed)
+        if onset >= segments[first - 1].stop or (onset > segments[first - 1].start and _is_flat(segments[first - 1])):
+            break
+        first, start = first - 1, onset
+    return first, start
+
+
+def _is_flat(segment: Segment) -> bool:
+    return segment.kind == "flat"
+
+
+def _continues(before: Segment, after: Segment) -> bool:
+    return before.level_A >= after.level_A * 0.99
+
+
+def _held_from(trace: Trace, segment: Segment, voltage_V: float, allowed_V: float) -> int:
+    """Sample of the segment from which on the voltage stays within the tolerance; its stop where it never does."""
+    width = width_for(trace.noise_V, 0.3 * allowed_V, max(1, segment.size // 10))
+    smooth = moving_mean(trace.voltage_V[segment.start : segment.stop], width)
+    outside = np.flatnonzero(np.abs(smooth - voltage_V) > allowed_V)
+    return segment.start + (int(outside[-1]) + 1 if outside.size else 0)
+
+
+def _opens(segments: list[Segment], first: int) -> bool:
+    """Whether a plateau is the one the charge began with (or rose to), not a digital step on the way down."""
+    flats = [segment for segment in segments[:first] if segment.kind == "flat"]
+    return not flats or flats[-1].level_A < segments[first].level_A
+
+
+def _current_before(trace: Trace, segments: list[Segment], first: int, start: int) -> float:
+    if start > segments[first].start:
+        return float(trace.current_A[start])
+    earlier = [segment for segment in segments[:first] if segment.kind == "flat"]
+    return earlier[-1].level_A if earlier else segments[first].level_A
+
+
+def _one_regulation(trace: Trace, group: list[Segment], before_A: float) -> bool:
+    """A smooth fall, or so many and so small digital steps that nobody would call them stages."""
+    flats = [segment for segment in group if segment.kind == "flat"]
+    smooth_s = sum(trace.duration(s.start, s.stop) for s in group if s.kind != "flat")
+    flat_s = sum(trace.duration(s.start, s.stop) for s in flats)
+    if not flats or smooth_s > flat_s:
+        return True
+    levels = [before_A, *(segment.level_A for segment in flats)]
+    steps = [a - b for a, b in itertools.pairwise(levels)]
+    return len(flats) >= LADDER_LEVELS and max(steps) <= LADDER_STEP * before_A
+
+
+def _folds_back(trace: Trace, start: int, stop: int, fall: float) -> bool:
+    """A small fall during which the voltage falls too, by more than its noise: not regulated by voltage."""
+    if fall >= 0.5 or stop - start < 5:
+        return False
+    current, voltage = trace.current_A[start:stop], trace.voltage_V[start:stop]
+    deviation = current - float(np.mean(current))
+    slope = float(deviation @ (voltage - float(np.mean(voltage)))) / float(deviation @ deviation)
+    drop = slope * float(current[0] - current[-1])
+    return drop > float(max(0.0005 * float(np.mean(voltage)), 3.0 * trace.noise_V / np.sqrt((stop - start) / 4.0)))
+
+
+def _smooth_end(trace: Trace, start: int, stop: int) -> float:
+    """Current at the end, with as many samples averaged as the noise asks for."""
+    wanted = width_for(trace.noise_A, 0.01 * trace.scale_A, max(1, (stop - start) // 5))
+    return float(np.mean(trace.current_A[stop - wanted : stop]))
