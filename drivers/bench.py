@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field
 
 from drivers.text.binding import Written
 from drivers.text.measures import (
@@ -20,9 +20,6 @@ from drivers.text.measures import (
     Volts,
     refuse,
 )
-from drivers.text.nearest import unknown
-
-VIRTUAL = "virtual"
 
 
 class _Part(BaseModel):
@@ -109,6 +106,9 @@ class Limits(_Part):
     current: PositiveAmperes
     charge: AmpereHours
     time: Seconds = 12 * 3600.0
+    equal_readings: int = Field(
+        50, ge=0, description="so many readings equal to the last digit are a dead meter; 0: off"
+    )
 
 
 class Hardware(_Part):
@@ -167,26 +167,6 @@ class Bench(Written):
     limits: Limits
     hardware: Hardware = Hardware()
     virtual: Virtual | None = None
-
-    @model_validator(mode="after")
-    def _names_exist(self) -> Bench:
-        for where, name in self.wired():
-            if name not in self.instruments:
-                raise refuse(f"wiring.{where}: {unknown(name, self.instruments, 'instrument')}")
-        used = [name for _, name in self.wired()]
-        twice = sorted({name for name in used if used.count(name) > 1})
-        if twice:
-            raise refuse(f"wiring: '{twice[0]}' stands in more than one place; each place needs its own instrument")
-        return self
-
-    @model_validator(mode="after")
-    def _virtual_throughout(self) -> Bench:
-        unreal = [name for name, part in self.instruments.items() if part.address == VIRTUAL]
-        if self.virtual is None and unreal:
-            raise refuse(f"'{unreal[0]}' has the address 'virtual', but the bench has no 'virtual' section")
-        if self.virtual is not None and len(unreal) < len(self.instruments):
-            raise refuse("a bench with a 'virtual' section drives no hardware: every address must read 'virtual'")
-        return self
 
     def wired(self) -> list[tuple[str, str]]:
         """(place in the wiring, name of the instrument there), in a fixed order."""

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import re
 import socket
-from typing import TYPE_CHECKING, Any
+from typing import TYPE_CHECKING, Any, TypeAlias
 
 from drivers.trouble import LinkFault
 
@@ -19,6 +19,7 @@ if TYPE_CHECKING:
 
     from drivers.dialect import Dialect
 
+Library: TypeAlias = "str | VisaLibraryBase"  # "@py", the path of a VISA library, or a library object
 PROBE_TIMEOUT_s = 3.0
 _SOCKET = re.compile(r"TCPIP\d*::(?P<host>[^:]+|\[[^\]]+\])::(?P<port>\d+)::SOCKET", re.IGNORECASE)
 
@@ -41,7 +42,7 @@ def probe(name: str, address: str) -> None:
 class Session:
     """A link that asks and is answered; one at a time, by one caller."""
 
-    def __init__(self, name: str, address: str, dialect: Dialect, library: str | VisaLibraryBase) -> None:
+    def __init__(self, name: str, address: str, dialect: Dialect, library: Library) -> None:
         self.name = name
         self.address = address
         self._dialect = dialect

@@ -45,4 +45,5 @@ CHANNELS: tuple[Channel, ...] = (
     Channel("pack.soc", "1", "computed"),
     Channel("pack.compression", "1", "computed"),  # how many times faster than real capacity the state of charge moves
     Channel("loop.period", "s", "computed"),
+    Channel("node.condition", "1", "computed"),  # 1 while the supply holds the node: constant voltage, and sourcing
 )

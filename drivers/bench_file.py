@@ -1,0 +1,98 @@
+"""A bench file together with the dialects it names: read, and checked against each other."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from pathlib import Path
+
+from drivers.bench import ROLE_AT, Bench, Instrument
+from drivers.dialect import Dialect
+from drivers.shipped import locate
+from drivers.text.binding import Bound, bind
+from drivers.text.document import read
+from drivers.text.faults import BadInput, Faults
+from drivers.text.nearest import unknown
+
+DIALECTS = Path(__file__).parent / "dialects"
+
+
+@dataclass(frozen=True)
+class BenchFile:
+    """The bench, and the dialect of each of its instruments by the instrument's name."""
+
+    bound: Bound[Bench]
+    dialects: dict[str, Bound[Dialect]]
+
+    @property
+    def bench(self) -> Bench:
+        return self.bound.model
+
+    def dialect(self, instrument: str) -> Dialect:
+        return self.dialects[instrument].model
+
+    def at(self, where: str) -> tuple[str, Instrument, Dialect]:
+        """Name, entry and dialect of the instrument at a place in the wiring, such as "node.supply"."""
+        name = dict(self.bench.wired())[where]
+        return name, self.bench.instruments[name], self.dialect(name)
+
+
+def load_bench(path: Path, faults: Faults) -> BenchFile | None:
+    """Read a bench file and its dialects; every fault goes to `faults`."""
+    try:
+        bound = bind(Bench, read(path), "bench", faults)
+    except BadInput as bad:
+        faults.found.extend(bad.faults)
+        return None
+    if bound is None:
+        return None
+    _check_wiring(bound, faults)
+    _check_addresses(bound, faults)
+    dialects = {name: _dialect(bound, name, faults) for name in bound.model.instruments}
+    known = {name: dialect for name, dialect in dialects.items() if dialect is not None}
+    bench_file = BenchFile(bound, known)
+    _check_roles(bench_file, faults)
+    return bench_file if len(known) == len(dialects) else None
+
+
+def _dialect(bound: Bound[Bench], name: str, faults: Faults) -> Bound[Dialect] | None:
+    place = bound.place("instruments", name, "dialect")
+    beside = Path(bound.document.name).parent
+    path = locate(bound.model.instruments[name].dialect, DIALECTS, "dialect", place, faults, beside=beside)
+    if path is None:
+        return None
+    try:
+        return bind(Dialect, read(path), "dialect", faults)
+    except BadInput as bad:
+        faults.found.extend(bad.faults)
+        return None
+
+
+def _check_wiring(bound: Bound[Bench], faults: Faults) -> None:
+    bench = bound.model
+    used: dict[str, str] = {}
+    for where, name in bench.wired():
+        place = bound.place("wiring", *where.split("."))
+        if name not in bench.instruments:
+            faults.add(place, unknown(name, bench.instruments, "instrument"))
+        elif name in used:
+            faults.add(place, f"'{name}' stands at {used[name]} already; each place needs an instrument of its own")
+        used.setdefault(name, where)
+
+
+def _check_addresses(bound: Bound[Bench], faults: Faults) -> None:
+    bench = bound.model
+    for name, part in bench.instruments.items():
+        place = bound.place("instruments", name, "address")
+        if bench.virtual is None and part.address == "virtual":
+            faults.add(place, "the address 'virtual' needs a bench with a 'virtual' section")
+        if bench.virtual is not None and part.address != "virtual":
+            faults.add(place, "a bench with a 'virtual' section drives no hardware: the address must be 'virtual'")
+
+
+def _check_roles(bench_file: BenchFile, faults: Faults) -> None:
+    for where, name in bench_file.bench.wired():
+        dialect = bench_file.dialects.get(name)
+        if dialect is not None and dialect.model.role != ROLE_AT[where]:
+            place = bench_file.bound.place("wiring", *where.split("."))
+            told = f"'{name}' speaks '{dialect.model.name}', the dialect of a {dialect.model.role}"
+            faults.add(place, f"{told}; a {ROLE_AT[where]} is needed here")

@@ -1,0 +1,92 @@
+"""The manifest: what a run was, with which files, instruments and versions."""
+
+from __future__ import annotations
+
+import hashlib
+import platform
+import sys
+from importlib.metadata import PackageNotFoundError, version
+from typing import Any
+
+from drivers.open_bench import OpenBench
+from drivers.safe import SafeState
+from drivers.text.document import Document
+from sequencer.engine.inputs import Inputs
+
+PACKAGES = ("pyvisa", "pyvisa-py", "numpy", "scipy", "pyarrow", "pydantic", "ruamel.yaml", "pytest", "pytest-html")
+
+
+def program_version() -> str:
+    try:
+        return version("packmime")
+    except PackageNotFoundError:
+        return "unknown"
+
+
+def sha256(content: bytes) -> str:
+    return hashlib.sha256(content).hexdigest()
+
+
+def manifest_of(
+    inputs: Inputs, bench: OpenBench, start_utc: str, ended: str, safe: SafeState, performance: dict[str, float]
+) -> dict[str, Any]:
+    """Everything but the hashes of the record's own files, which sealing adds."""
+    procedure, specification, pack = inputs.procedure.model, inputs.specification.model, inputs.pack.model
+    hardware = bench.file.bench.hardware
+    return {
+        "packmime": program_version(),
+        "format": 1,
+        "run": sha256(f"{start_utc}{procedure.name}{specification.model}".encode())[:12],
+        "rehearsal": bench.file.bench.virtual is not None,
+        "seed": None,
+        "started_utc": start_utc,
+        "ended_utc": bench.clock.utc(),
+        "duration_s": round(bench.clock.now(), 3),
+        "ended": ended,
+        "safe": safe.verified,
+        "procedure": {"name": procedure.name, "purpose": procedure.purpose, **_file(inputs.procedure.document)},
+        "specification": {"model": specification.model, **_file(inputs.specification.document)},
+        "pack": {"name": pack.name, **_file(inputs.pack.document)},
+        "bench": {"name": bench.file.bench.name, **_file(bench.file.bound.document)},
+        "charger": bench.access.charger,
+        "instruments": [_instrument(bench, where, name) for where, name in bench.file.bench.wired()],
+        "hardware": dict(hardware),
+        "missing_hardware": hardware.missing(),
+        "deviations": inputs.deviations,
+        "changes": inputs.changes,
+        "environment": _environment(),
+        "standin": None,
+        "performance": performance,
+        "person": None,
+    }
+
+
+def _file(document: Document) -> dict[str, str]:
+    # The name alone: a record goes to other machines, whose folders are nobody's business.
+    return {"file": document.name.replace("\\", "/").rpartition("/")[2], "sha256": sha256(document.content)}
+
+
+def _instrument(bench: OpenBench, where: str, name: str) -> dict[str, Any]:
+    _, entry, dialect = bench.file.at(where)
+    certificate = entry.certificate
+    return {
+        "name": name,
+        "place": where,
+        "role": dialect.role,
+        "dialect": dialect.name,
+        "address": entry.address,
+        "identity": bench.identities.get(name),
+        "certificate": None if certificate is None else certificate.model_dump(mode="json"),
+    }
+
+
+def _environment() -> dict[str, Any]:
+    packages = {name: _version(name) for name in PACKAGES}
+    return {"python": sys.version.split()[0], "platform": platform.platform(), "packages": packages}
+
+
+def _version(name: str) -> str | None:
+    try:
+        return version(name)
+    except PackageNotFoundError:
+        return None

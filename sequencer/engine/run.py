@@ -1,0 +1,223 @@
+"""One run, from open links to a sealed record. Every way out goes through the safe state."""
+
+from __future__ import annotations
+
+import traceback
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+from drivers.clock import wall_seconds
+from drivers.open_bench import OpenBench
+from drivers.safe import SafeState, to_safe_state
+from drivers.trouble import BenchFault
+from sequencer.engine import methods, startup
+from sequencer.engine.guard import Bounds, Guard, Trip
+from sequencer.engine.inputs import Inputs
+from sequencer.engine.loop import Interrupted, Loop, RecordLost, StopFlag
+from sequencer.engine.manifest import manifest_of
+from sequencer.engine.pace import Pace
+from sequencer.engine.record import RecordFolder
+from sequencer.engine.scan import Scan
+from sequencer.engine.standin import Events
+from sequencer.model.findings import findings_text
+from sequencer.model.procedure import Procedure, Step
+
+FAST_SHARE = 10  # one rehearsal in so many runs fast throughout, and must give the same verdicts
+
+
+@dataclass
+class Watching:
+    """What a person is shown while it runs; both are called with plain sentences and scans."""
+
+    says: Callable[[str], None] = field(default=lambda words: None)
+    scans: Callable[[Scan], None] = field(default=lambda scan: None)
+    alarm: Callable[[str], None] = field(default=lambda words: None)
+
+
+@dataclass(frozen=True)
+class Ended:
+    """How a run ended. `fault` is a bug of ours, with its traceback in the record."""
+
+    record: Path
+    ended: str
+    why: str
+    safe: SafeState
+    sealed: bool
+    performance: dict[str, float]
+    fault: BaseException | None = None
+
+
+@dataclass(frozen=True)
+class Options:
+    """What the command line adds to the files."""
+
+    out: Path
+    seed: int | None = None
+    only: tuple[str, ...] = ()
+    forced_delay: int | None = None  # of the stand-in: shows in a test what the stability rule protects from
+    always_fast: bool = False
+
+
+def run(inputs: Inputs, bench: OpenBench, options: Options, stop: StopFlag, watching: Watching) -> Ended:
+    """Carry out the procedure and seal the record. Raises RecordError before anything is touched, nothing after."""
+    begun = wall_seconds()
+    with RecordFolder.create(options.out) as record:
+        for name, document in inputs.documents().items():
+            record.add_input(name, document.content)
+        record.add_input("findings.yaml", findings_text())
+        start_utc = bench.clock.utc()
+        journal = record.start_journal(start_utc=start_utc, wall_s=wall_seconds)
+        loop = _loop(inputs, bench, options, stop, record, journal, watching)
+        record.event(0.0, "run-start", start_utc=start_utc, seed=options.seed, procedure=inputs.procedure.model.name)
+        ended, why, fault = _guarded(inputs, loop, options, watching)
+        safe = _to_safety(bench, loop, watching)
+        loop.event("run-end", ended=ended, why=why)
+    performance = _performance(loop, bench, wall_seconds() - begun)
+    sealed = _seal(record, inputs, bench, options, start_utc, ended, safe, performance)
+    return Ended(options.out, ended, why, safe, sealed, performance, fault)
+
+
+def _loop(
+    inputs: Inputs,
+    bench: OpenBench,
+    options: Options,
+    stop: StopFlag,
+    record: RecordFolder,
+    journal: Any,
+    watching: Watching,
+) -> Loop:
+    specification, pack = inputs.specification.model, inputs.pack.model
+    wiring = bench.file.bench.wiring.node
+    fast = options.always_fast or not bench.clock.virtual or (options.seed or 1) % FAST_SHARE == 0
+    return Loop(
+        bench=bench,
+        record=record,
+        journal=journal,
+        guard=Guard(Bounds.of(bench.file.bench.limits, pack), wiring.ballast + wiring.current.shunt_ohm),
+        pace=Pace(bench.clock.now(), specification.dwell.response, fast).moved(bench.clock.now()),
+        stop=stop,
+        events=Events.of(specification, 1.0),
+        on_scan=watching.scans,
+    )
+
+
+def _guarded(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> tuple[str, str, BaseException | None]:
+    """Run the steps; whatever happens becomes a word and a sentence."""
+    try:
+        _prepare(inputs, loop, watching)
+        return "complete", _steps(inputs, loop, options, watching), None
+    except Trip as trip:
+        loop.event("trip", **trip.as_dict())
+        return "trip", str(trip), None
+    except Interrupted as interrupted:
+        return "stopped", str(interrupted), None
+    except BenchFault as fault:
+        loop.event("bench-fault", instrument=fault.instrument, what=fault.what)
+        return "bench fault", str(fault), None
+    except RecordLost as lost:
+        return "bench fault", f"the record cannot be written any more: {lost}", None
+    except Exception as fault:  # a bug of ours: into the record, then the safe state, then exit 70
+        loop.event("internal-fault", traceback=traceback.format_exc())
+        return "internal fault", f"{type(fault).__name__}: {fault}", fault
+
+
+def _prepare(inputs: Inputs, loop: Loop, watching: Watching) -> None:
+    watching.says("looking at what the outputs do now")
+    state = startup.drive_down(loop.bench)
+    if state is not None:
+        loop.event("note", text="outputs were on at the start and were driven down: " + "; ".join(state.words))
+        if not state.verified:
+            raise BenchFault("bench", "outputs were on at the start and could not be proven off")
+    watching.says("fixing ranges, arming protections")
+    methods.prepare(loop.bench, inputs.pack.model, inputs.specification.model)
+    startup.refuse_foreign_voltage(loop.bench)
+
+
+def _steps(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> str:
+    for number, step in enumerate(inputs.procedure.model.steps, 1):
+        if options.only and step.kind not in options.only and step.expect is None and step.kind != "remove":
+            loop.event("step-left-out", step=number, does=step.kind)
+            continue
+        words = _words(step, inputs.procedure.model)
+        watching.says(words)
+        loop.event("step-start", step=number, does=step.kind, words=words)
+        outcome = _do(step, inputs, loop, options)
+        loop.event("step-end", step=number, outcome=outcome)
+        if outcome == "does not charge":
+            return "the charger does not charge a nominal pack; nothing more can be shown of it"
+    return "every step was carried out"
+
+
+def _words(step: Step, procedure: Procedure) -> str:
+    if step.insert is not None:
+        return f"inserting a pack at {step.insert.cell_voltage:g} V per cell, waiting for the charger"
+    if step.charge is not None:
+        faster = (
+            f", up to {step.charge.compression:g} times faster than the pack" if step.charge.compression > 1 else ""
+        )
+        return f"charging until the charger ends it{faster}"
+    return "taking the pack out"
+
+
+def _do(step: Step, inputs: Inputs, loop: Loop, options: Options) -> str:
+    specification = inputs.specification.model
+    if step.insert is not None:
+        charges = methods.insert(loop, step.insert, inputs.pack.model, specification, options.forced_delay)
+        return "charges" if charges else "does not charge"
+    if step.charge is not None:
+        loop.events = Events.of(specification, step.charge.compression)
+        return methods.charge(loop, step.charge, specification)
+    methods.remove(loop, specification)
+    return "removed"
+
+
+def _to_safety(bench: OpenBench, loop: Loop, watching: Watching) -> SafeState:
+    watching.says("going to the safe state")
+    try:
+        safe = to_safe_state(bench, watching.alarm)
+    except Exception as fault:  # a bug on the way to safety must be said, not lost
+        safe = SafeState(words=[f"NOT SAFE: {type(fault).__name__}: {fault}"], troubles=[traceback.format_exc()])
+    loop.event("safe-state", verified=safe.verified, words=safe.words, troubles=safe.troubles)
+    return safe
+
+
+def _performance(loop: Loop, bench: OpenBench, wall_s: float) -> dict[str, float]:
+    shares = loop.shares
+    circuit_s = bench.access.circuit_s()
+    scans = max(shares.scans, 1)
+    known_s = shares.exchange_s + shares.waiting_s + shares.record_s
+    return {
+        "wall_s": round(wall_s, 3),
+        "run_s": round(bench.clock.now(), 3),
+        "run_s_per_wall_s": round(bench.clock.now() / wall_s, 1),
+        "scans": float(shares.scans),
+        "exchanges_per_scan": round(bench.exchange.count / scans, 2),
+        "share_io": round((shares.exchange_s + shares.waiting_s - circuit_s) / wall_s, 3),
+        "share_circuit": round(circuit_s / wall_s, 3),
+        "share_record": round(shares.record_s / wall_s, 3),
+        "share_engine": round((wall_s - known_s) / wall_s, 3),
+    }
+
+
+def _seal(
+    record: RecordFolder,
+    inputs: Inputs,
+    bench: OpenBench,
+    options: Options,
+    start_utc: str,
+    ended: str,
+    safe: SafeState,
+    performance: dict[str, float],
+) -> bool:
+    from sequencer.engine.durable import RecordError
+    from sequencer.engine.sealing import seal
+
+    manifest = manifest_of(inputs, bench, start_utc, ended, safe, performance)
+    manifest["seed"] = options.seed
+    try:
+        seal(record.path, manifest)
+    except (OSError, RecordError):
+        return False  # a full disk: what was written stays readable, and `judge` seals it once there is room
+    return True
