@@ -21,7 +21,7 @@ from sequencer.engine.journal_reader import JournalReader, chunks
 from sequencer.engine.series import Rows, Series, joined
 
 NAME = "samples.parquet"
-STRETCH_ROWS = 1_000_000
+STRETCH_ROWS = 250_000
 _CHANNEL = pa.dictionary(pa.int32(), pa.string())
 
 
