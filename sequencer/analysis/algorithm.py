@@ -10,7 +10,7 @@ import numpy as np
 from sequencer.analysis.phases import Phase
 from sequencer.analysis.regulation import LADDER_LEVELS
 from sequencer.analysis.sanitise import Log
-from sequencer.analysis.smoothing import moving_mean
+from sequencer.analysis.smoothing import despiked, moving_mean
 from sequencer.analysis.stages import Course, plateaus
 from sequencer.analysis.trace import Trace
 from sequencer.analysis.wording import quantity
@@ -50,7 +50,7 @@ def find_algorithm(trace: Trace, course: Course, log: Log) -> Finding:
     doubt = _Doubt()
     _doubt_log(doubt, trace, log)
     _flag_course(doubt, trace, course)
-    name, why = _named(trace, course)
+    name, why = ("inconclusive", _OFFSET_WHY) if _looks_like_offset(trace, course) else _named(trace, course)
     if name in ("cc-cv", "stepped-cc-cv", "cv-only"):
         _doubt_held(doubt, course)
     if course.ends_in_charge:
@@ -63,6 +63,17 @@ def find_algorithm(trace: Trace, course: Course, log: Log) -> Finding:
     return Finding(
         name, round(doubt.confidence, 3), tuple(doubt.flags), why, last is not None and last.fall >= FULL_FALL
     )
+
+
+_OFFSET_WHY = "one constant current from first row to last, and a voltage that does not move: it may be an offset"
+
+
+def _looks_like_offset(trace: Trace, course: Course) -> bool:
+    """One plateau over the whole log with no voltage rise: a zero error of the meter would look the same."""
+    if len(course.phases) != 1 or course.phases[0].kind != "cc":
+        return False
+    voltage = despiked(trace.voltage_V)
+    return float(np.ptp(voltage)) <= 8.0 * trace.noise_V + 2.0 * trace.u_V
 
 
 def _named(trace: Trace, course: Course) -> tuple[str, str]:

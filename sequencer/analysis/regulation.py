@@ -12,7 +12,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from sequencer.analysis.segments import Segment
-from sequencer.analysis.smoothing import moving_mean, width_for
+from sequencer.analysis.smoothing import despiked, moving_mean, width_for
 from sequencer.analysis.trace import Trace
 
 VOLTAGE_SHARE = 0.003
@@ -20,6 +20,8 @@ POWER_SHARE = 0.015
 LEAST_FALL = 0.05  # of the current before: less shows a knee, not what is held after it
 LADDER_LEVELS = 6  # so many levels in small steps at a held voltage are one regulation in digital steps
 LADDER_STEP = 0.12  # of the first level
+STIFF_LEVELS = 3  # so many levels make one regulation when the voltage shows no sawtooth at all, that is
+STILL_SHARE = 0.0005  # of the voltage
 
 
 @dataclass(frozen=True)
@@ -43,14 +45,16 @@ def held_voltage(trace: Trace, segments: list[Segment], last: int) -> tuple[int,
     first, start = _reach_back(trace, segments, last)
     if start >= segments[last].stop:
         return None
-    if first < last and segments[first].kind == "flat" and _opens(segments, first):
+    if first < last and segments[first].kind == "flat" and _opens(trace, segments, first, last):
         first += 1
         start = segments[first].start
     group = segments[first : last + 1]
     before = _current_before(trace, segments, first, start)
     stop = segments[last].stop
     fall = 1.0 - _smooth_end(trace, start, stop) / before if before > 0.0 else 0.0
-    if fall < LEAST_FALL or not _one_regulation(trace, group, before) or _folds_back(trace, start, stop, fall):
+    if fall < LEAST_FALL or _passed_later(trace, segments, stop) or _folds_back(trace, start, stop, fall):
+        return None
+    if not _one_regulation(trace, group, before):
         return None
     flats = sum(segment.kind == "flat" for segment in group)
     voltage = float(np.median(trace.voltage_V[start:stop]))
@@ -72,7 +76,7 @@ def holds_power(trace: Trace, start: int, stop: int) -> bool:
 def _reach_back(trace: Trace, segments: list[Segment], last: int) -> tuple[int, int]:
     """First segment and sample from which the voltage stays where it is in segment `last`."""
     tail = segments[last]
-    voltage = float(np.median(trace.voltage_V[tail.start + int(0.6 * tail.size) : tail.stop]))
+    voltage = float(np.median(trace.voltage_V[max(tail.start, tail.stop - max(3, tail.size // 10)) : tail.stop]))
     allowed = tolerance_V(trace, voltage)
     first, start = last, _held_from(trace, tail, voltage, allowed)
     while start == segments[first].start and first > 0 and _continues(segments[first - 1], segments[first]):
@@ -99,17 +103,31 @@ def _held_from(trace: Trace, segment: Segment, voltage_V: float, allowed_V: floa
     return segment.start + (int(outside[-1]) + 1 if outside.size else 0)
 
 
-def _opens(segments: list[Segment], first: int) -> bool:
+def _opens(trace: Trace, segments: list[Segment], first: int, last: int) -> bool:
     """Whether a plateau is the one the charge began with (or rose to), not a digital step on the way down."""
     flats = [segment for segment in segments[:first] if segment.kind == "flat"]
-    return not flats or flats[-1].level_A < segments[first].level_A
+    if flats:
+        return flats[-1].level_A < segments[first].level_A
+    steps_s = [trace.duration(s.start, s.stop) for s in segments[first + 1 : last + 1] if s.kind == "flat"]
+    return len(steps_s) < 2 or trace.duration(segments[first].start, segments[first].stop) > 2.0 * max(steps_s[:3])
+
+
+def _passed_later(trace: Trace, segments: list[Segment], stop: int) -> bool:
+    """Whether the same run later reaches a clearly higher voltage: then this one was no limit of the charger."""
+    if stop + 3 > segments[-1].stop:
+        return False
+    later = despiked(trace.voltage_V[stop : segments[-1].stop])
+    held = float(np.median(trace.voltage_V[max(segments[0].start, stop - 5) : stop]))
+    return float(np.max(later)) > held + 0.5 * VOLTAGE_SHARE * held + 4.0 * trace.noise_V
 
 
 def _current_before(trace: Trace, segments: list[Segment], first: int, start: int) -> float:
     if start > segments[first].start:
         return float(trace.current_A[start])
-    earlier = [segment for segment in segments[:first] if segment.kind == "flat"]
-    return earlier[-1].level_A if earlier else segments[first].level_A
+    if first == 0:
+        return segments[0].level_A
+    before = segments[first - 1]
+    return before.level_A if before.kind == "flat" else float(trace.current_A[before.stop - 1])
 
 
 def _one_regulation(trace: Trace, group: list[Segment], before_A: float) -> bool:
@@ -119,9 +137,19 @@ def _one_regulation(trace: Trace, group: list[Segment], before_A: float) -> bool
     flat_s = sum(trace.duration(s.start, s.stop) for s in flats)
     if not flats or smooth_s > flat_s:
         return True
-    levels = [before_A, *(segment.level_A for segment in flats)]
+    if len(flats) >= STIFF_LEVELS and _stands_still(trace, group):
+        return True
+    levels = [before_A, *(segment.level_A for segment in group)]
     steps = [a - b for a, b in itertools.pairwise(levels)]
     return len(flats) >= LADDER_LEVELS and max(steps) <= LADDER_STEP * before_A
+
+
+def _stands_still(trace: Trace, group: list[Segment]) -> bool:
+    """No sawtooth at all: what steps is the pack (or what stands in for it), not the charger."""
+    voltage = despiked(trace.voltage_V[group[0].start : group[-1].stop])
+    width = width_for(trace.noise_V, 0.0001 * float(voltage[0]), max(1, voltage.size // 20))
+    low, high = np.quantile(moving_mean(voltage, width), (0.02, 0.98))
+    return float(high - low) <= max(STILL_SHARE * float(high), 4.0 * trace.noise_V / float(np.sqrt(width)))
 
 
 def _folds_back(trace: Trace, start: int, stop: int, fall: float) -> bool:

@@ -58,27 +58,45 @@ def cut(time_s: Array, current_A: Array, start: int, stop: int, *, scale_A: floa
 
     scale_A : largest current of the log.    noise_A : standard deviation of its noise.
     """
+    needed = min(50, math.ceil(2.0 * (STEP_SIGMAS * noise_A / (STEP_SHARE * scale_A)) ** 2))
+    found: list[Segment] = []
+    for rough in _between_steps(current_A, start, stop, scale_A, noise_A, 1):
+        width = max(1, min(needed, rough.size // 20))
+        if rough.kind == "slope":
+            found.append(rough)
+        elif width == 1:
+            found += _pieces(time_s, current_A, rough.start, rough.stop, noise_A)
+        else:  # steps that the noise hides from single samples
+            for fine in _between_steps(current_A, rough.start, rough.stop, scale_A, noise_A, width):
+                is_slope = fine.kind == "slope"
+                found += [fine] if is_slope else _pieces(time_s, current_A, fine.start, fine.stop, noise_A)
+    return found
+
+
+def _between_steps(
+    current_A: Array, start: int, stop: int, scale_A: float, noise_A: float, width: int
+) -> list[Segment]:
+    """The range cut at its steps: stretches without one ("flat", for now), and stretches that are nothing but steps."""
     found: list[Segment] = []
     position = start
-    for a, b, is_slope in _transitions(despiked(current_A[start:stop]), scale_A, noise_A):
-        found += _pieces(time_s, current_A, position, start + a, noise_A)
+    limit = max(STEP_SHARE * scale_A, STEP_SIGMAS * noise_A * math.sqrt(2.0 / width))
+    for a, b, is_slope in _transitions(despiked(current_A[start:stop]), limit, width):
+        if start + a > position:
+            found.append(Segment("flat", position, start + a, float(current_A[position])))
         if is_slope:
             found.append(Segment("slope", start + a, start + b, float(current_A[start + a])))
-            position = start + b
-        else:
-            position = start + b
-    return found + _pieces(time_s, current_A, position, stop, noise_A)
+        position = start + b
+    if stop > position:
+        found.append(Segment("flat", position, stop, float(current_A[position])))
+    return found
 
 
-def _transitions(current_A: Array, scale_A: float, noise_A: float) -> list[tuple[int, int, bool]]:
+def _transitions(current_A: Array, limit_A: float, width: int) -> list[tuple[int, int, bool]]:
     """(first, stop, is_slope) of every stretch of steps in one direction; a step has no sample or few between."""
-    needed = math.ceil(2.0 * (STEP_SIGMAS * noise_A / (STEP_SHARE * scale_A)) ** 2)
-    width = max(1, min(50, current_A.size // 20, needed))
-    limit = max(STEP_SHARE * scale_A, STEP_SIGMAS * noise_A * math.sqrt(2.0 / width))
     change = _change(current_A, width)
     found = []
     for sign in (-1.0, 1.0):
-        for a, b in ranges(sign * change > limit):
+        for a, b in ranges(sign * change > limit_A):
             if b - a <= 2 * width and width > 1:
                 peak = a + int(np.argmax(sign * change[a:b]))
                 found.append((peak, peak, False))
