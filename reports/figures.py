@@ -214,9 +214,10 @@ def svg_for_page(figure: Figure, *, salt: str, label: str) -> str:
     svg = svg[svg.index("<svg") :]
     svg = re.sub(r"<metadata>.*?</metadata>", "", svg, flags=re.DOTALL)
     svg = re.sub(r"<defs>\s*<style.*?</style>\s*</defs>", "", svg, flags=re.DOTALL)
-    svg = re.sub(r' id="[a-zA-Z]+(?:\.axis)?_\d+"', "", svg)
+    svg = re.sub(r' id="[a-zA-Z0-9.]+_\d+"', "", svg)
     svg = re.sub(r'font: ([\d.]+px) [^;"]*', r"font-size: \1", svg)
     svg = re.sub(r"<!--.*?-->", "", svg, flags=re.DOTALL)
+    svg = svg.replace(" xlink:href=", " href=")  # SVG 2; needs no namespace inside HTML
     for colour, name in _PAGE.items():
         svg = svg.replace(colour, f"var(--{name})")
     head = re.match(r'<svg [^>]*viewBox="([^"]*)"[^>]*>', svg)

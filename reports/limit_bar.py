@@ -9,6 +9,8 @@ WIDTH = 200.0
 _HEIGHT = 30
 _FURTHEST = 1.6  # spans of the limits by which the view is widened to reach a value; further out stands an arrow
 
+_SMALLEST = 1e-12  # of any unit here: far below what is measured
+
 
 @dataclass(frozen=True)
 class Bar:
@@ -30,10 +32,15 @@ class Bar:
 
 
 def limit_bar(value: float, U: float, low: float | None, high: float | None, guard: float) -> Bar | None:
-    """The bar of a value; None where there is no limit or no finite value. All in one unit."""
+    """The bar of a value; all in one unit.
+
+    None where there is no limit, no finite value, or no room between them that arithmetic could show.
+    """
     if (low is None and high is None) or not math.isfinite(value):
         return None
     start, stop = _window(value, U, low, high, guard)
+    if not stop - start > max(_SMALLEST, 1e-9 * max(abs(start), abs(stop))):
+        return None
     scale = WIDTH / (stop - start)
 
     def place(level: float) -> float:

@@ -14,7 +14,7 @@ Json = dict[str, Any]
 CELLS = 5
 START_S, PRECHARGE_END_S, KNEE_S, END_S, LAST_S = 17.0, 47.0, 1600.0, 2590.0, 2680.0
 # The sentence for which a page must show text and nothing else: markup, quotes, script, Cyrillic, Arabic with an
-# override, emoji, half a surrogate pair, a control character, a template's braces.
+# override, emoji, a control character, a template's braces.
 HOSTILE = (
     "<b>bold</b> \"quoted\" 'single' </style></script><script>document.title='ran'</script>"
     "<img src=x onerror=\"document.title='ran'\">"
@@ -312,7 +312,7 @@ def parts() -> Json:
     }
 
 
-def everywhere(value: Any, text: str) -> Any:
+def added_everywhere(value: Any, text: str) -> Any:
     """The same document with a text added to each free field; words of closed lists, hashes and times stay."""
     closed = {
         "verdict",
@@ -329,11 +329,11 @@ def everywhere(value: Any, text: str) -> Any:
     }
     if isinstance(value, dict):
         return {
-            key: item if key in closed and isinstance(item, str) else everywhere(item, text)
+            key: item if key in closed and isinstance(item, str) else added_everywhere(item, text)
             for key, item in value.items()
         }
     if isinstance(value, list):
-        return [everywhere(item, text) for item in value]
+        return [added_everywhere(item, text) for item in value]
     return f"{value} {text}" if isinstance(value, str) else value
 
 
@@ -348,7 +348,7 @@ def write_record(folder: Path, content: Json, traces: tuple[np.ndarray, np.ndarr
         record.add_input("pack.yaml", PACK.encode())
         for event in content["events"]:
             record.event(event["t"], event["event"], **{k: v for k, v in event.items() if k not in ("t", "event")})
-        journal = record.start_journal(start_utc="2026-12-01T08:00:00Z")
+        journal = record.start_journal(start_utc="2026-12-01T08:00:00Z", wall_s=lambda: 0.0)
         for moment, level_V, level_A in zip(*(trace.tolist() for trace in traces), strict=True):
             journal.append("charger.voltage", moment, level_V)
             journal.append("charger.current", moment, level_A)
@@ -366,6 +366,21 @@ def content() -> Json:
     return parts()
 
 
+@pytest.fixture(scope="session")
+def traces() -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    return synthetic()
+
+
+@pytest.fixture
+def everywhere() -> Callable[[Any, str], Any]:
+    return added_everywhere
+
+
+@pytest.fixture
+def hostile_text() -> str:
+    return f"{HOSTILE} {LONG}"
+
+
 @pytest.fixture
 def write(tmp_path: Path) -> Callable[..., Path]:
     """Write a record with a judgement; give it changed parts, or another name."""
@@ -378,7 +393,7 @@ def write(tmp_path: Path) -> Callable[..., Path]:
 
 @pytest.fixture(scope="session")
 def reported(tmp_path_factory: pytest.TempPathFactory) -> Path:
-    """One judgement with all seven words, its report written, in a folder with a user's own disturbing files."""
+    """One judgement with all seven words, its report written."""
     from reports.runner import write_report
 
     judged = write_record(tmp_path_factory.mktemp("reported") / "record", parts(), synthetic())

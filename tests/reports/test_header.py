@@ -1,0 +1,57 @@
+"""What is said of the run as a whole."""
+
+import pytest
+
+from reports import header
+
+
+@pytest.mark.parametrize(
+    ("declared", "text"),
+    [
+        (None, "no certificate declared"),
+        ({}, "no certificate declared"),
+        ({"number": "C-77", "due": "2027-03-01"}, "C-77, due 2027-03-01"),
+        ({"number": "C-77"}, "C-77"),
+    ],
+)
+def test_certificates(declared: object, text: str) -> None:
+    assert header.certificate(declared) == text
+
+
+@pytest.mark.parametrize(
+    ("safe", "text"), [(True, "verified (node at"), (False, "NOT VERIFIED (node at"), (None, "not recorded.")]
+)
+def test_the_safe_state_is_never_claimed_without_proof(content: dict, safe: bool | None, text: str) -> None:
+    assert f"Safe state: {text}" in header.ending(content["manifest"] | {"safe": safe}, content["events"])
+
+
+def test_ending_says_why() -> None:
+    events = [{"t": 9.0, "event": "run-end", "ended": "stopped", "why": "Ctrl-C"}]
+    assert header.ending({"ended": "stopped"}, events).startswith(
+        "Run ended: stopped (Ctrl-C). Safe state: not recorded"
+    )
+
+
+def test_trips_name_cause_value_and_bound() -> None:
+    trip = {"t": 5.0, "event": "trip", "cause": "bench", "quantity": "node voltage", "value": 21.9, "unit": "V"}
+    lines = header.trip_lines([trip | {"bound": 21.5, "why": "The meters disagree."}])
+    assert lines == ("bench trip: node voltage 21.9 V against 21.5 V; The meters disagree.",)
+
+
+def test_files_with_the_head_of_their_hash(content: dict) -> None:
+    rows = header.inputs(content["manifest"])
+    assert [row[0] for row in rows] == ["procedure", "specification", "pack", "bench", "virtual charger"]
+    assert rows[0][3] == content["manifest"]["procedure"]["sha256"][:12]
+
+
+def test_a_manifest_of_a_run_that_crashed_is_no_reason_to_fail() -> None:
+    bare = {"run": None, "rehearsal": None, "started_utc": None, "ended_utc": None, "ended": "abandoned", "safe": None}
+    assert header.ending(bare, []) == "Run ended: abandoned. Safe state: not recorded."
+    assert header.inputs(bare)[0] == ("procedure", "–", "–", "–")
+    assert header.instruments(bare) == ()
+    assert header.dated(bare) == "– to –"
+    assert [pair.name for pair in header.surroundings(bare)] == ["packmime", "Python", "packages"]
+
+
+def test_deviations_are_listed_once() -> None:
+    assert header.unique(["a", "b"], None, ["b", "c"]) == ("a", "b", "c")

@@ -1,0 +1,49 @@
+"""Rows of the tables: what is chosen, and how it is rounded."""
+
+import pytest
+
+from reports import rows
+from reports.inputs import Measurand
+
+PER_CELL = {"charge.voltage": Measurand("what", "when", "mean", per_cell=True)}
+
+
+def test_a_quantity_states_value_uncertainty_limits_and_basis(content: dict) -> None:
+    verdict = next(one for one in content["verdicts"]["verdicts"] if one["limit"] == "charge.voltage")
+    row = rows.verdict_row(3, verdict, PER_CELL)
+    assert (row.node, row.limit, row.verdict.text) == ("v003", "charge.voltage", "conditional pass")
+    assert (row.result, row.per, row.coverage) == ("4.2211 V ± 6.0 mV", "per cell", "k = 2.00")
+    assert row.demanded == "4.175 V to 4.225 V"
+    assert row.basis == ("guarded", "w = 6 mV", "n = 120", "p = 90.3 %")
+    assert row.evidence == "26:40.0 to 43:10.0"
+    assert row.bar is not None
+
+
+def test_what_was_not_judged_has_no_value_no_bar_and_no_basis(content: dict) -> None:
+    row = rows.verdict_row(8, content["verdicts"]["verdicts"][7], {})
+    assert (row.verdict.text, row.result, row.bar, row.basis, row.evidence) == ("not run", "–", None, (), "")
+
+
+def test_an_unknown_verdict_is_refused(content: dict) -> None:
+    with pytest.raises(ValueError, match="'maybe' is no verdict"):
+        rows.verdict_row(1, content["verdicts"]["verdicts"][0] | {"verdict": "maybe"}, {})
+
+
+def test_stages_are_numbered_named_and_carry_standard_uncertainties(content: dict) -> None:
+    stages = rows.stage_rows(content["findings"]["classification"])
+    assert [stage.words for stage in stages] == ["precharge", "constant current", "constant voltage", "rest"]
+    assert (stages[1].number, stages[1].current, stages[1].charge) == (2, "2.0004 A, u = 2.1 mA", "862.8 mAh")
+    assert stages[1].duration == "25 min 53 s"
+
+
+def test_budget_shares_are_shares_of_variance(content: dict) -> None:
+    budget = rows.budget_table("charge.voltage", content["budgets"]["charge.voltage"])
+    assert budget.result == "4.2211 V ± 6.0 mV"
+    # Computed: (2.78 mV / 3 mV)^2 = 0.859; degrees of freedom None are those of an exactly known input.
+    assert budget.contributions[0].share == "2.78 mV (86 %)"
+    assert (budget.contributions[0].dof, budget.contributions[2].dof) == ("∞", "119")
+
+
+def test_a_finding_is_defined_once(content: dict) -> None:
+    verdicts = content["verdicts"]["verdicts"]
+    assert [row.name for row in rows.measurand_rows(verdicts * 2, PER_CELL)] == ["charge.voltage"]

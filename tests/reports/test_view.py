@@ -1,0 +1,101 @@
+"""The view: what a report says, before it is a page."""
+
+from collections.abc import Callable
+from types import SimpleNamespace
+
+import numpy as np
+import pytest
+
+from reports.inputs import Measurand
+from reports.source import Source
+from reports.view import build
+
+
+@pytest.fixture
+def source(content: dict, traces: tuple[np.ndarray, np.ndarray, np.ndarray]) -> Callable[..., Source]:
+    def _source(**changed: object) -> Source:
+        time_s, voltage_V, current_A = traces
+        held = {
+            "charger.voltage": voltage_V,
+            "charger.current": current_A,
+            "pack.compression": np.full(time_s.size, 4.0),
+        }
+
+        def series(name: str) -> SimpleNamespace | None:
+            flag = np.zeros(time_s.size, np.uint8)
+            return SimpleNamespace(time_s=time_s, value=held[name], flag=flag) if name in held else None
+
+        return Source(**({"name": "001", "notes": [], "series": series} | content | changed))
+
+    return _source
+
+
+def test_first_screen(source: Callable[..., Source]) -> None:
+    view = build(source())
+    assert (view.overall.text, view.model, view.procedure) == (
+        "fail", "greenhouse sprayer charger, 5 cells", "charge-profile",
+    )  # fmt: skip
+    assert view.tally.startswith("1 fail, 1 conditional fail, 1 inconclusive, 1 not run, 1 conditional pass, 3 pass")
+    assert view.rehearsal
+    assert len(view.deviations) == 1
+
+
+def test_one_row_a_verdict_in_their_order(source: Callable[..., Source], content: dict) -> None:
+    assert [row.limit for row in build(source()).verdicts] == [v["limit"] for v in content["verdicts"]["verdicts"]]
+
+
+def test_budgets_follow_the_verdicts(source: Callable[..., Source], content: dict) -> None:
+    one = content["budgets"]["charge.voltage"]
+    budgets = {"other": one, "charge.cutoff": one, "charge.voltage": one}
+    names = [budget.limit for budget in build(source(budgets=budgets)).budgets]
+    assert names == ["charge.voltage", "charge.cutoff", "other"]
+
+
+def test_rules_in_use_are_explained_with_their_source(source: Callable[..., Source]) -> None:
+    simple, guarded = build(source()).rules
+    # ILAC-G8:09/2019: simple acceptance is clause 4.2.1, non-binary with guard band 4.2.3 (check-values 2.3).
+    assert "4.2.1" in simple
+    assert "4.2.3" in guarded
+    assert all("JCGM 106" in rule for rule in (simple, guarded))
+
+
+def test_a_scaled_pack_is_said_to_be_one(source: Callable[..., Source]) -> None:
+    assert "up to 4 times faster" in build(source()).profile_note
+
+
+def test_a_rehearsal_is_one_if_either_file_says_so(source: Callable[..., Source], content: dict) -> None:
+    real = content["verdicts"] | {"rehearsal": False}
+    assert build(source(verdicts=real)).rehearsal
+    assert not build(source(verdicts=real, manifest=content["manifest"] | {"rehearsal": False})).rehearsal
+
+
+def test_limits_per_cell_are_drawn_for_the_pack(source: Callable[..., Source]) -> None:
+    drawn = build(source(cells=5)).profile
+    assert drawn is not None
+    assert drawn.limits_V == pytest.approx((5 * 4.175, 5 * 4.225))  # computed
+    undrawn = build(source()).profile
+    assert undrawn is not None
+    assert undrawn.limits_V == ()
+
+
+def test_a_record_without_a_charge_has_a_report(source: Callable[..., Source]) -> None:
+    bare = {"overall": "not run", "rehearsal": True, "verdicts": []}
+    empty = {"classification": None, "findings": []}
+    view = build(source(series=lambda name: None, findings=empty, verdicts=bare, budgets={}, events=[]))
+    assert (view.profile, view.stages, view.verdicts, view.tally) == (None, (), (), "nothing was judged")
+    assert view.profile_note == "The record holds no voltage and current of a charge."
+
+
+def test_what_the_reading_found_wrong_stands_apart_from_notes_of_the_run(source: Callable[..., Source]) -> None:
+    events = [{"t": 1.0, "event": "note", "text": "fan noisy"}]
+    view = build(source(notes=["data/events.jsonl: was changed since sealing"], events=events))
+    assert view.integrity == ("data/events.jsonl: was changed since sealing",)
+    assert view.notes == ("fan noisy",)
+
+
+def test_definitions_are_those_of_the_record(source: Callable[..., Source]) -> None:
+    one = Measurand("voltage held", "the end", "mean", per_cell=True)
+    view = build(source(measurands={"charge.voltage": one}))
+    assert [(pair.name, pair.text) for pair in view.measurands] == [
+        ("charge.voltage", "voltage held. When: the end. Statistic: mean.")
+    ]
