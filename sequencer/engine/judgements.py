@@ -117,9 +117,9 @@ def _differences(old: Mapping[str, Any], new: Mapping[str, Any]) -> list[str]:
 
 
 def _pair(key: str, old: Mapping[str, Any], new: Mapping[str, Any]) -> str:
-    now, was = _said(new.get(key), digits=6), _said(old.get(key), digits=6)
+    now, was = _said(new.get(key)), _said(old.get(key))
     if now == was:  # they differ beyond six digits
-        now, was = _said(new.get(key), digits=17), _said(old.get(key), digits=17)
+        now, was = repr(new.get(key)), repr(old.get(key))
     return f"{now}{_unit(key, new)}, was {was}{_unit(key, old)}"
 
 
@@ -129,9 +129,9 @@ def _unit(key: str, verdict: Mapping[str, Any]) -> str:
     return "" if bare else f" {unit}"
 
 
-def _said(value: Any, *, digits: int) -> str:
+def _said(value: Any) -> str:
     if value is None:
         return "none"
     if isinstance(value, bool):
         return "yes" if value else "no"
-    return f"{value:.{digits}g}" if isinstance(value, float) else str(value)
+    return f"{value:.6g}" if isinstance(value, float) else str(value)

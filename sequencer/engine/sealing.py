@@ -6,12 +6,11 @@ A record is sealed from the moment its manifest stands; until then whatever fail
 import hashlib
 import json
 from collections.abc import Callable, Mapping, Sequence
-from contextlib import suppress
-from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import Any
 
-from sequencer.engine import events, heartbeat, sealed_samples
+from sequencer.engine import heartbeat, sealed_samples
+from sequencer.engine.abandoned import abandoned_manifest
 from sequencer.engine.documents import to_json
 from sequencer.engine.durable import RecordError, make_read_only, partial_of, sha256_of, write_new
 from sequencer.engine.heartbeat import Heartbeat
@@ -44,7 +43,8 @@ def seal_abandoned(record: Path) -> dict[str, Any]:
 
     What the run-start event carries beyond its time goes into the manifest as it is. Raises RecordError as `seal`.
     """
-    return _seal(record, lambda readers: _abandoned(record, readers))
+    data = record / "data"
+    return _seal(record, lambda readers: abandoned_manifest(data, max([0.0, *(r.last_time_s for r in readers)])))
 
 
 def verify(record: Path) -> list[str]:
@@ -133,19 +133,3 @@ def _write_sealed(record: Path, describe: Callable[[Sequence[JournalReader]], di
 def _told(reader: JournalReader) -> dict[str, Any]:
     torn = str(reader.torn) if reader.torn else None
     return {"file": reader.path.name, "batches": reader.batches, "rows": reader.rows, "torn": torn}
-
-
-def _abandoned(record: Path, readers: Sequence[JournalReader]) -> dict[str, Any]:
-    found, _ = events.read_events(record / "data" / events.NAME)
-    start = next((event for event in found if event["event"] == "run-start"), {})
-    last_s = max([0.0, *(event["t"] for event in found), *(reader.last_time_s for reader in readers)])
-    safe = next((event.get("verified") for event in reversed(found) if event["event"] == "safe-state"), None)
-    end = {"ended_utc": None, "duration_s": last_s, "ended": "abandoned", "safe": safe}
-    return {**_blank(), **{key: value for key, value in start.items() if key not in ("t", "event")}, **end}
-
-
-def _blank() -> dict[str, Any]:
-    program = "unknown"
-    with suppress(PackageNotFoundError):
-        program = version("packmime")
-    return {"packmime": program, "format": FORMAT, "run": None, "rehearsal": None, "seed": None, "started_utc": None}
