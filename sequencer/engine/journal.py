@@ -12,12 +12,13 @@ from collections.abc import Callable, Sequence
 from pathlib import Path
 from queue import Empty, Queue
 from threading import Thread
+from typing import Any
 
 import pyarrow as pa
 
 from sequencer.engine.channels import Channel
 from sequencer.engine.durable import RecordError, sync_folder, write_all
-from sequencer.engine.journal_format import COLUMNS, FIELDS, Header, checksum, schema_of
+from sequencer.engine.journal_format import COLUMNS, END_OF_STREAM, FIELDS, Header, checksum, schema_of
 
 QUEUE_BATCHES = 64
 LARGEST_BATCH_ROWS = 16_384  # a clock that stands still or runs back must not grow the batch without end
@@ -111,6 +112,13 @@ class Journal:
         self._writer.join()
 
 
+def _head_of(schema: Any) -> bytes:
+    """The bytes before the first batch. Arrow writes them with that batch, a second too late for a reader of ours."""
+    buffer = io.BytesIO()
+    pa.ipc.new_stream(buffer, schema).close()
+    return buffer.getvalue().removesuffix(END_OF_STREAM)
+
+
 class _Writer(Thread):
     """Takes batches from the queue to the disk. After a failure it goes on taking, so that the loop never hangs."""
 
@@ -130,13 +138,14 @@ class _Writer(Thread):
         self._beat = beat
         self._file = path.open("xb", buffering=0)
         schema, self._crc = schema_of(header)
+        self._head = _head_of(schema)
         self._buffer = io.BytesIO()
         self._stream = pa.ipc.new_stream(self._buffer, schema)
         self._number = 0
         self._synced_at_s = -math.inf
         self._unsynced = True
         try:
-            self._write_buffer()
+            write_all(self._file, self._head)
         except OSError:
             self._file.close()
             raise
@@ -195,7 +204,7 @@ class _Writer(Thread):
         self._write_buffer()
 
     def _write_buffer(self) -> None:
-        write_all(self._file, self._buffer.getvalue())
+        write_all(self._file, self._buffer.getvalue().removeprefix(self._head))
         self._buffer.seek(0)
         self._buffer.truncate()
         self._unsynced = True

@@ -69,6 +69,15 @@ def test_values_that_are_no_numbers_are_kept_bit_for_bit(tmp_path):
     assert np.array([row[2] for row in rows]).tobytes() == np.array(values).tobytes()
 
 
+def test_the_channels_are_known_before_the_first_batch(tmp_path):
+    journal = Journal(tmp_path / "j", CHANNELS, start_utc=START)
+    rows, reader = read(tmp_path / "j")
+    assert (rows, reader.table) == ([], CHANNELS)
+    assert reader.torn.why == "it ends without a clean end"
+    journal.close()
+    assert read(tmp_path / "j")[1].torn is None
+
+
 def test_any_arrow_reader_reads_it(tmp_path):
     write(tmp_path / "j", scans(25))
     table = pa.ipc.open_stream(tmp_path.joinpath("j").read_bytes()).read_all()
