@@ -54,29 +54,31 @@ def charge_figure(
 
 def save_figure(figure: Figure, path: str, kind: str) -> None:
     """Write a figure as "png", "svg" or "pdf", the same bytes each time."""
-    from matplotlib import rc_context
-
     nothing = {"svg": {"Date": None, "Creator": None}, "pdf": {"CreationDate": None}, "png": {"Software": None}}
-    with _quiet(), rc_context({"svg.hashsalt": "packmime", "svg.fonttype": "none"}):
+    with _settings({"svg.hashsalt": "packmime", "svg.fonttype": "none"}):
         figure.savefig(path, format=kind, dpi=160, metadata=nothing[kind])
 
 
 @contextmanager
-def _quiet() -> Iterator[None]:
-    """A letter that the figure's own face lacks is drawn as a box or by the page's faces; no one needs a warning."""
-    with warnings.catch_warnings():
+def _settings(settings: Mapping[str, Any]) -> Iterator[None]:
+    """matplotlib's defaults and ours: a person's own matplotlibrc shall not reach a report.
+
+    A letter that the face lacks is drawn as a box, or by the page's faces; no one needs a warning of it.
+    """
+    import matplotlib
+
+    with warnings.catch_warnings(), matplotlib.rc_context():
         warnings.filterwarnings("ignore", message="Glyph", category=UserWarning)
+        matplotlib.rcdefaults()
+        matplotlib.rcParams.update(settings)
         yield
 
 
 def draw(profile: Profile, *, title: str = "", width_in: float = 8.6, height_in: float = 4.7) -> Figure:
     """Voltage at the charger's contacts above, current into the pack below, one axis of time."""
-    import matplotlib
     from matplotlib.figure import Figure
 
-    with matplotlib.rc_context():
-        matplotlib.rcdefaults()  # a person's own matplotlibrc shall not reach a report
-        matplotlib.rcParams.update({"font.size": 9, "axes.unicode_minus": True, "path.simplify_threshold": 0.2})
+    with _settings({"font.size": 9}):
         figure = Figure(figsize=(width_in, height_in), facecolor=PAPER)
         left, right, top = 0.62 / width_in, 1 - 0.12 / width_in, 1 - (0.62 if title else 0.32) / height_in
         upper, lower = figure.subplots(
@@ -102,7 +104,7 @@ def draw(profile: Profile, *, title: str = "", width_in: float = 8.6, height_in:
         _levels(upper, profile.voltage_levels, factor_s, span, VOLTAGE, below=True)
         _levels(lower, profile.current_levels, factor_s, span, CURRENT, below=False)
         _trips(upper, lower, profile, factor_s)
-        lower.set_xlabel(f"time since the start of the run / {unit}", color=INK)
+        lower.set_xlabel(f"time since the start / {unit}", color=INK)
         lower.set_xlim(profile.window[0] / factor_s, profile.window[1] / factor_s)
         return figure
 
@@ -205,10 +207,8 @@ def svg_for_page(figure: Figure, *, salt: str, label: str) -> str:
     salt : tells the ids of two figures on one page apart. label : what the figure shows, for those who do not see it;
     fixed text of ours, without markup.
     """
-    from matplotlib import rc_context
-
     text = io.StringIO()
-    with _quiet(), rc_context({"svg.hashsalt": salt, "svg.fonttype": "none"}):
+    with _settings({"svg.hashsalt": salt, "svg.fonttype": "none"}):
         figure.savefig(text, format="svg", metadata={"Date": None, "Creator": None})
     svg = text.getvalue()
     svg = svg[svg.index("<svg") :]

@@ -63,7 +63,7 @@ def test_a_log_too_short_is_refused_with_its_length() -> None:
 
 
 def test_drawing_needs_no_display_and_obeys_no_settings_of_the_user(tmp_path: Path) -> None:
-    (tmp_path / "matplotlibrc").write_text("lines.linewidth: 40\nbackend: nothing\n", encoding="utf-8")
+    (tmp_path / "matplotlibrc").write_text("axes.labelsize: 40\nsavefig.bbox: tight\n", encoding="utf-8")
     code = (
         "import sys, warnings; warnings.simplefilter('ignore')\n"
         "import numpy as np\nfrom reports.figures import charge_figure, save_figure\n"

@@ -15,7 +15,7 @@ DISTURBING = {
     "pytest.ini": "[pytest]\naddopts = --no-such-option\njunit_suite_name = theirs\n",
     "sitecustomize.py": "raise SystemExit('theirs')",
     "pytest.py": "raise SystemExit('theirs')",
-    "matplotlibrc": "lines.linewidth: 40\n",
+    "matplotlibrc": "axes.labelsize: 40\nsavefig.bbox: tight\n",
     "reports/__init__.py": "raise SystemExit('the user's own reports ran')",
     "procedures/__init__.py": "raise SystemExit('the user's own procedures ran')",
     "drivers/__init__.py": "raise SystemExit('the user's own drivers ran')",
