@@ -62,6 +62,7 @@ UNIT_IN_CODE = {
     "ratio": "1",
     "frequency": "Hz",
     "capacitance": "F",
+    "voltage rate": "V/s",
 }
 _NUMBER = r"[+\-−]?(?:\d+\.?\d*|\.\d+)(?:[eE][+\-]?\d+)?"
 _QUANTITY = re.compile(rf"\s*({_NUMBER})\s*(\S*)\s*")
