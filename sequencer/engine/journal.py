@@ -9,6 +9,7 @@ import math
 import os
 from array import array
 from collections.abc import Callable, Sequence
+from contextlib import suppress
 from pathlib import Path
 from queue import Empty, Queue
 from threading import Thread
@@ -146,6 +147,7 @@ class _Writer(Thread):
         self._unsynced = True
         try:
             write_all(self._file, self._head)
+            self._good_end = len(self._head)
         except OSError:
             self._file.close()
             raise
@@ -204,7 +206,14 @@ class _Writer(Thread):
         self._write_buffer()
 
     def _write_buffer(self) -> None:
-        write_all(self._file, self._buffer.getvalue().removeprefix(self._head))
+        data = self._buffer.getvalue().removeprefix(self._head)
+        try:
+            write_all(self._file, data)
+        except OSError:
+            with suppress(OSError):  # half a batch serves nobody; its room may take the last events of the run
+                self._file.truncate(self._good_end)
+            raise
+        self._good_end += len(data)
         self._buffer.seek(0)
         self._buffer.truncate()
         self._unsynced = True

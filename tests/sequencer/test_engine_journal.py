@@ -193,7 +193,7 @@ def test_a_full_disk_is_reported_and_what_was_written_stays(tmp_path, monkeypatc
     rows, reader = read(tmp_path / "j")
     assert [row[:3] for row in rows] == scans(400)[: len(rows)]
     assert reader.batches >= 1
-    assert "cut or damaged" in reader.torn.why
+    assert reader.torn.why == "it ends without a clean end"  # half a batch was taken back
 
 
 def test_a_fault_of_the_writer_itself_is_reported_too(tmp_path, monkeypatch):
@@ -228,7 +228,7 @@ def test_the_system_refusing_more_bytes_ends_no_process(tmp_path):
     rows, reader = read(tmp_path / "j")
     assert reader.batches >= 2
     assert [row[:3] for row in rows] == scans(scan)[: len(rows)]
-    assert (tmp_path / "j").stat().st_size == 20000
+    assert 15000 < (tmp_path / "j").stat().st_size <= 20000
 
 
 BUSY = """
