@@ -54,7 +54,9 @@ def stamp(utc: object) -> str:
 
 
 def _length_s(evidence: Sequence[float] | None) -> float:
-    return max(0.0, float(evidence[1]) - float(evidence[0])) if evidence else 0.0
+    if not evidence or None in evidence:
+        return 0.0
+    return max(0.0, float(evidence[1]) - float(evidence[0]))
 
 
 def _outcome(case: ET.Element, verdict: Json) -> None:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
+from itertools import pairwise
 from typing import Any
 
 import numpy as np
@@ -31,6 +32,7 @@ class Stage:
     """A stage of the charge, number from 1, in words; times in s since the run's start."""
 
     number: int
+    kind: str
     words: str
     start_s: float
     end_s: float
@@ -71,10 +73,11 @@ class Profile:
 
 
 def stages_of(classification: Mapping[str, Any]) -> tuple[Stage, ...]:
-    """The stages of a classification (design 5), numbered, in words."""
+    """The stages of a classification (design 5) whose times are known, numbered, in words."""
     return tuple(
-        Stage(number, stage_words(stage["kind"]), float(stage["start_s"]), float(stage["end_s"]))
+        Stage(number, str(stage["kind"]), stage_words(stage["kind"]), float(stage["start_s"]), float(stage["end_s"]))
         for number, stage in enumerate(classification.get("stages") or (), 1)
+        if stage.get("start_s") is not None and stage.get("end_s") is not None
     )
 
 
@@ -116,11 +119,15 @@ def charge_profile(
 def _body(stages: Sequence[Stage], events: Sequence[Mapping[str, Any]], time_s: Floats) -> tuple[float, float]:
     """The time in which the charge was watched: the finding's window, else the stages, else all."""
     for event in events:
-        if event.get("event") == "finding-window" and event.get("finding") == "charge":
+        if event.get("event") == "finding-window" and event.get("finding") == "charge" and _spans(event):
             return float(event["start_s"]), float(event["end_s"])
     if stages:
         return stages[0].start_s, stages[-1].end_s
     return float(time_s[0]), float(time_s[-1])
+
+
+def _spans(event: Mapping[str, Any]) -> bool:
+    return event.get("start_s") is not None and event.get("end_s") is not None
 
 
 def _window(body: tuple[float, float], time_s: Floats) -> tuple[float, float]:
@@ -143,27 +150,29 @@ def _voltage_levels(
 ) -> tuple[Level, ...]:
     """The regulation voltage over its stages, and the voltage at which each step in current came."""
     levels = []
-    kinds = [stage["kind"] for stage in classification.get("stages") or ()]
-    limit = classification.get("voltage_limit_V")
-    held = [stage for stage, kind in zip(stages, kinds, strict=True) if kind in ("cv", "taper", "float")]
-    if limit and held:
-        words = f"voltage limit {si(limit['value'], 'V', 5)}"
-        levels.append(Level(words, float(limit["value"]), stages[0].start_s, held[-1].end_s))
-    for stage, kind, after in zip(stages, kinds, kinds[1:], strict=False):
+    limit_V = _known(classification.get("voltage_limit_V"))
+    held = [stage for stage in stages if stage.kind in ("cv", "taper", "float")]
+    if limit_V is not None and held:
+        levels.append(Level(f"voltage limit {si(limit_V, 'V', 5)}", limit_V, stages[0].start_s, held[-1].end_s))
+    for stage, after in pairwise(stages):
         during = level_V[(time_s >= stage.start_s) & (time_s <= stage.end_s)]
-        if kind == after == "cc" and np.isfinite(during).any():
-            top = float(np.nanmax(during))
-            levels.append(Level(f"step at {si(top, 'V')}", top, stages[0].start_s, stage.end_s))
+        if stage.kind == after.kind == "cc" and np.isfinite(during).any():
+            top_V = float(np.nanmax(during))
+            levels.append(Level(f"step at {si(top_V, 'V')}", top_V, stages[0].start_s, stage.end_s))
     return tuple(levels)
+
+
+def _known(estimate: Mapping[str, Any] | None) -> float | None:
+    """The value of an estimate, None where there is none."""
+    return None if not estimate or estimate.get("value") is None else float(estimate["value"])
 
 
 def _current_levels(classification: Mapping[str, Any], stages: Sequence[Stage]) -> tuple[Level, ...]:
     """The current at which the charge was ended."""
-    cutoff = classification.get("cutoff_current_A")
-    if not cutoff or not stages:
+    cutoff_A = _known(classification.get("cutoff_current_A"))
+    if cutoff_A is None or not stages:
         return ()
-    words = f"ended at {si(cutoff['value'], 'A', 3)}"
-    return (Level(words, float(cutoff["value"]), stages[0].start_s, stages[-1].end_s),)
+    return (Level(f"ended at {si(cutoff_A, 'A', 3)}", cutoff_A, stages[0].start_s, stages[-1].end_s),)
 
 
 def _trip_words(event: Mapping[str, Any]) -> str:

@@ -95,7 +95,7 @@ def verdict_row(number: int, verdict: Json, measurands: Mapping[str, Measurand])
         demanded=wording.limits(low, high, verdict.get("expected"), unit),
         bar=limit_bar(float(value), U or 0.0, low, high, guard) if number_like and value is not None else None,
         basis=_basis(verdict, unit),
-        evidence=" to ".join(wording.since_start(float(moment)) for moment in evidence) if evidence else "",
+        evidence=_span(*evidence) if evidence else "",
     )
 
 
@@ -141,14 +141,25 @@ def stage_rows(classification: Json) -> tuple[StageRow, ...]:
         StageRow(
             number=number,
             words=wording.stage_words(stage["kind"]),
-            span=f"{wording.since_start(float(stage['start_s']))} to {wording.since_start(float(stage['end_s']))}",
-            duration=wording.clock_time(float(stage["end_s"]) - float(stage["start_s"])),
+            span=_span(stage.get("start_s"), stage.get("end_s")) or wording.NOTHING,
+            duration=_duration(stage.get("start_s"), stage.get("end_s")),
             current=_estimate(stage.get("current_A"), "A"),
             voltage=_estimate(stage.get("voltage_V"), "V"),
             charge=si(float(stage["charge_Ah"]), "Ah", 4) if stage.get("charge_Ah") is not None else wording.NOTHING,
         )
         for number, stage in enumerate(classification.get("stages") or (), 1)
     )
+
+
+def _span(start_s: float | None, end_s: float | None) -> str:
+    """Two moments on the clock of the run, empty where one is not known."""
+    if start_s is None or end_s is None:
+        return ""
+    return f"{wording.since_start(float(start_s))} to {wording.since_start(float(end_s))}"
+
+
+def _duration(start_s: float | None, end_s: float | None) -> str:
+    return wording.NOTHING if start_s is None or end_s is None else wording.clock_time(float(end_s) - float(start_s))
 
 
 def _estimate(estimate: Json | None, unit: str) -> str:

@@ -120,7 +120,9 @@ def _pack_limits(source: Source) -> tuple[float, ...]:
     """The limits of the voltage that the charger holds, for the whole pack, V; empty where the cells are unknown."""
     for verdict in source.verdicts["verdicts"]:
         if verdict["limit"] == "charge.voltage" and source.cells is not None:
-            return tuple(source.cells * float(verdict[side]) for side in ("low", "high") if verdict[side] is not None)
+            return tuple(
+                source.cells * float(verdict[side]) for side in ("low", "high") if verdict.get(side) is not None
+            )
     return ()
 
 
@@ -159,8 +161,8 @@ def _algorithm(classification: Mapping[str, Any]) -> str:
 def _budgets(source: Source) -> tuple[Budget, ...]:
     """In the order of the verdicts, then any other."""
     judged = [str(verdict["limit"]) for verdict in source.verdicts["verdicts"]]
-    order = [limit for limit in dict.fromkeys(judged) if limit in source.budgets]
-    order += [limit for limit in source.budgets if limit not in order]
+    order = [limit for limit in dict.fromkeys(judged) if source.budgets.get(limit)]
+    order += [limit for limit, budget in source.budgets.items() if budget and limit not in order]
     return tuple(rows.budget_table(limit, source.budgets[limit]) for limit in order)
 
 

@@ -1,6 +1,6 @@
 """The view: what a report says, before it is a page."""
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from types import SimpleNamespace
 
 import numpy as np
@@ -13,8 +13,8 @@ from reports.view import build
 
 @pytest.fixture
 def source(content: dict, traces: tuple[np.ndarray, np.ndarray, np.ndarray]) -> Callable[..., Source]:
-    def _source(**changed: object) -> Source:
-        time_s, voltage_V, current_A = traces
+    def _source(drawn: tuple[np.ndarray, ...] = traces, **changed: object) -> Source:
+        time_s, voltage_V, current_A = drawn
         held = {
             "charger.voltage": voltage_V,
             "charger.current": current_A,
@@ -99,3 +99,36 @@ def test_definitions_are_those_of_the_record(source: Callable[..., Source]) -> N
     assert [(pair.name, pair.text) for pair in view.measurands] == [
         ("charge.voltage", "voltage held. When: the end. Statistic: mean.")
     ]
+
+
+REQUIRED = {"overall", "rehearsal", "verdicts", "limit", "verdict", "t", "event"}
+
+
+def with_one_null(value: object, path: tuple[object, ...] = ()) -> Iterator[tuple[tuple[object, ...], object]]:
+    """Each document that arises when one value, at any depth, is null; null is what JSON has for "not a number"."""
+    items = value.items() if isinstance(value, dict) else enumerate(value) if isinstance(value, list) else ()
+    for key, item in items:
+        copied = dict(value) if isinstance(value, dict) else list(value)  # type: ignore[call-overload]
+        if key not in REQUIRED and not isinstance(value, list):
+            copied[key] = None
+            yield (*path, key), copied
+        for deeper, changed in with_one_null(item, (*path, key)):
+            again = dict(value) if isinstance(value, dict) else list(value)  # type: ignore[call-overload]
+            again[key] = changed
+            yield deeper, again
+
+
+def test_no_null_anywhere_stops_a_report(
+    source: Callable[..., Source], content: dict, traces: tuple[np.ndarray, ...]
+) -> None:
+    tried = 0
+    few = tuple(trace[::40] for trace in traces)
+    for path, changed in with_one_null(content):
+        if len(path) == 1:
+            continue  # a whole file that is null is no judgement
+        try:
+            build(source(few, **changed, cells=5))  # type: ignore[arg-type]
+        except (TypeError, ValueError, KeyError) as fault:
+            pytest.fail(f"null at {path}: {fault!r}")
+        tried += 1
+    assert tried > 250
