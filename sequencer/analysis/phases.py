@@ -85,8 +85,9 @@ def _alone(trace: Trace, segments: list[Segment], index: int) -> list[Phase]:
     if segment.kind == "short":
         return []
     phase = _slope(trace, segment.start, segment.stop, segment.level_A)
+    ends_run = index == len(segments) - 1 and segment.level_A > FLOAT_SHARE * trace.scale_A
     knee = phase.fall < 3.0 * SAME_LEVEL and index > 0 and segments[index - 1].kind == "flat"
-    if knee and _steady_voltage(trace, segment):
+    if ends_run and knee and _steady_voltage(trace, segment):
         return [replace(phase, kind="cv")]
     return [phase]
 

@@ -139,7 +139,9 @@ def _one_regulation(trace: Trace, group: list[Segment], before_A: float) -> bool
         return True
     if len(flats) >= STIFF_LEVELS and _stands_still(trace, group):
         return True
-    levels = [before_A, *(segment.level_A for segment in group)]
+    levels = [before_A]
+    for segment in group:
+        levels += [segment.level_A, float(trace.current_A[segment.stop - 1])][: 2 if segment.kind == "slope" else 1]
     steps = [a - b for a, b in itertools.pairwise(levels)]
     return len(flats) >= LADDER_LEVELS and max(steps) <= LADDER_STEP * before_A
 
@@ -158,7 +160,10 @@ def _folds_back(trace: Trace, start: int, stop: int, fall: float) -> bool:
         return False
     current, voltage = trace.current_A[start:stop], trace.voltage_V[start:stop]
     deviation = current - float(np.mean(current))
-    slope = float(deviation @ (voltage - float(np.mean(voltage)))) / float(deviation @ deviation)
+    spread = float(deviation @ deviation)
+    if spread == 0.0:
+        return False
+    slope = float(deviation @ (voltage - float(np.mean(voltage)))) / spread
     drop = slope * float(current[0] - current[-1])
     return drop > float(max(0.0005 * float(np.mean(voltage)), 3.0 * trace.noise_V / np.sqrt((stop - start) / 4.0)))
 

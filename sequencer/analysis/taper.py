@@ -1,0 +1,112 @@
+"""How a charge ended: the moment, and the trend of the current just before it."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+
+from sequencer.analysis.estimates import Estimate, effective_number
+from sequencer.analysis.smoothing import despiked, noise_of
+
+Array = npt.NDArray[np.float64]
+
+ENDED_SHARE = 0.05  # of the first plateau: below, and for good, the charge has ended
+AT_ONCE = 0.5  # of the current before: a fall by more within two samples is an end, not a taper
+LEAST_SHARE = 0.005  # of the first plateau: below, a current is not told from none
+FIT_SPAN = 1.35  # the trend is read from samples up to this many times the last current
+FIT_LEAST, FIT_MOST = 8, 400
+
+
+@dataclass(frozen=True)
+class Trend:
+    """Current at one moment by the trend of the samples up to it.
+
+    current_A : Estimate whose u is that of the fit at that moment (n_eff is s²/u²); window as fitted.
+    fall_per_s : A/s, how fast the trend falls there, negative for a rise.
+    """
+
+    current_A: Estimate
+    fall_per_s: float
+
+
+def end_of_charge(current_A: Array, plateau_A: float) -> int | None:
+    """Index of the last sample before the charge ended by itself; None where it did not.
+
+    The current falls to less than half of itself within two samples, is then below 5 % of the first plateau and stays
+    there up to the last sample given (single glitches aside).
+    plateau_A : > 0, first plateau.
+    """
+    if current_A.size < 4:
+        return None
+    smooth = despiked(current_A)
+    highest_later = np.maximum.accumulate(smooth[::-1])[::-1]
+    low = (highest_later[2:] < ENDED_SHARE * plateau_A) & (current_A[2:] < AT_ONCE * current_A[:-2])
+    found = np.flatnonzero(low & (current_A[:-2] > max(LEAST_SHARE * plateau_A, 6.0 * _background(current_A))))
+    if found.size == 0:
+        return None
+    return _last_full(current_A, int(found[0]), plateau_A)
+
+
+def _background(current_A: Array) -> float:
+    """Noise of the last samples, where the charge would be over."""
+    return noise_of(current_A[-50:])
+
+
+def _last_full(current_A: Array, first: int, plateau_A: float) -> int:
+    """The drop begins after sample first or first + 1; a sample that spans the drop is not counted."""
+    before = float(current_A[first])
+    usual = max(0.1 * before, 0.002 * plateau_A)
+    return first + 1 if float(current_A[first + 1]) > before - usual else first
+
+
+def trend_at(time_s: Array, current_A: Array, last: int, *, earliest: int = 0) -> Trend:
+    """Trend of the current at sample `last`, from the samples before it.
+
+    time_s, current_A : (n,).    earliest : first sample that may be used.
+    A falling current is fitted as an exponential (a straight line through its logarithm: exact for a constant voltage
+    behind a resistance and a capacity, over the 30 % that are used close to it for others), one that may be
+    zero as a straight line. Raises ValueError for fewer than 3 samples.
+    """
+    first = _fit_start(current_A, last, earliest)
+    times, currents = time_s[first : last + 1] - time_s[last], current_A[first : last + 1]
+    if times.size < 3 or float(times[0]) == float(times[-1]):
+        raise ValueError(f"last, earliest: {times.size} samples up to sample {last} show no trend, 3 are needed")
+    window = (float(time_s[first]), float(time_s[last]))
+    if float(np.min(currents)) > 0.3 * float(np.max(currents)):
+        value, slope, s, u = _line(times, np.log(currents))
+        level = math.exp(value)
+        return Trend(_estimate(level, level * s, level * u, times.size, window), -level * slope)
+    value, slope, s, u = _line(times, currents)
+    return Trend(_estimate(value, s, u, times.size, window), -slope)
+
+
+def _fit_start(current_A: Array, last: int, earliest: int) -> int:
+    """Where the current was 1.35 times what it is in the end, but at least 8 and at most 400 samples back."""
+    smooth = despiked(current_A[earliest : last + 1])
+    end = float(np.median(smooth[-3:]))
+    higher = np.flatnonzero(smooth > FIT_SPAN * max(end, 0.0))
+    start = earliest + (int(higher[-1]) + 1 if higher.size else 0)
+    start = max(start, last + 1 - FIT_MOST)
+    return max(earliest, min(start, last + 1 - FIT_LEAST))
+
+
+def _line(x: Array, y: Array) -> tuple[float, float, float, float]:
+    """Least squares: value at x = 0, slope, scatter s, u of the value; correlated residuals count for fewer."""
+    centre = float(np.mean(x))
+    offset = x - centre
+    spread = float(offset @ offset)
+    slope = float(offset @ y) / spread
+    residuals = y - float(np.mean(y)) - slope * offset
+    s = math.sqrt(float(residuals @ residuals) / (x.size - 2))
+    worth = effective_number(residuals) / x.size
+    u = s * math.sqrt((1.0 / x.size + centre * centre / spread) / worth)
+    return float(np.mean(y)) - slope * centre, slope, s, u
+
+
+def _estimate(value: float, s: float, u: float, n: int, window: tuple[float, float]) -> Estimate:
+    # an end point of a line is worth a quarter of its samples (closed form); also when there is no scatter at all
+    n_eff = (s / u) ** 2 if u > 0.0 else n / 4.0
+    return Estimate(value, s, n, max(2.0, n_eff), *window)
