@@ -139,11 +139,14 @@ def _one_regulation(trace: Trace, group: list[Segment], before_A: float) -> bool
         return True
     if len(flats) >= STIFF_LEVELS and _stands_still(trace, group):
         return True
-    levels = [before_A]
-    for segment in group:
-        levels += [segment.level_A, float(trace.current_A[segment.stop - 1])][: 2 if segment.kind == "slope" else 1]
-    steps = [a - b for a, b in itertools.pairwise(levels)]
+    steps = [_end_level(trace, a) - b.level_A for a, b in itertools.pairwise(group)]
+    if group[0].kind != "slope":
+        steps.append(before_A - group[0].level_A)
     return len(flats) >= LADDER_LEVELS and max(steps) <= LADDER_STEP * before_A
+
+
+def _end_level(trace: Trace, segment: Segment) -> float:
+    return float(trace.current_A[segment.stop - 1]) if segment.kind == "slope" else segment.level_A
 
 
 def _stands_still(trace: Trace, group: list[Segment]) -> bool:

@@ -67,6 +67,7 @@ class Loop:
     follow: dict[float, Follow] = field(default_factory=dict)
     shares: Shares = field(default_factory=Shares)
     last: Scan | None = None
+    stand_in_words: dict[str, object] | None = None
     _set_V: float | None = None
     _load_A: float = 0.0
     _mains: int = 0

@@ -27,23 +27,16 @@ def sha256(content: bytes) -> str:
     return hashlib.sha256(content).hexdigest()
 
 
-def manifest_of(
-    inputs: Inputs, bench: OpenBench, start_utc: str, ended: str, safe: SafeState, performance: dict[str, float]
-) -> dict[str, Any]:
-    """Everything but the hashes of the record's own files, which sealing adds."""
+def description_of(inputs: Inputs, bench: OpenBench, start_utc: str, seed: int | None) -> dict[str, Any]:
+    """What is known when a run starts; stands in its first event, so that a record left by a crash can be judged."""
     procedure, specification, pack = inputs.procedure.model, inputs.specification.model, inputs.pack.model
     hardware = bench.file.bench.hardware
     return {
         "packmime": program_version(),
-        "format": 1,
         "run": sha256(f"{start_utc}{procedure.name}{specification.model}".encode())[:12],
         "rehearsal": bench.file.bench.virtual is not None,
-        "seed": None,
+        "seed": seed,
         "started_utc": start_utc,
-        "ended_utc": bench.clock.utc(),
-        "duration_s": round(bench.clock.now(), 3),
-        "ended": ended,
-        "safe": safe.verified,
         "procedure": {"name": procedure.name, "purpose": procedure.purpose, **_file(inputs.procedure.document)},
         "specification": {"model": specification.model, **_file(inputs.specification.document)},
         "pack": {"name": pack.name, **_file(inputs.pack.document)},
@@ -55,9 +48,27 @@ def manifest_of(
         "deviations": inputs.deviations,
         "changes": inputs.changes,
         "environment": _environment(),
-        "standin": None,
-        "performance": performance,
         "person": None,
+    }
+
+
+def outcome_of(
+    bench: OpenBench,
+    ended: str,
+    why: str,
+    safe: SafeState,
+    stand_in: dict[str, Any] | None,
+    performance: dict[str, float],
+) -> dict[str, Any]:
+    """What is known when it has ended."""
+    return {
+        "ended_utc": bench.clock.utc(),
+        "duration_s": round(bench.clock.now(), 3),
+        "ended": ended,
+        "why": why,
+        "safe": safe.verified,
+        "standin": stand_in,
+        "performance": performance,
     }
 
 

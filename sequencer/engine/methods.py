@@ -165,16 +165,16 @@ def measure_fixture(loop: Loop, zero_V: float, settling_s: float, pack: Pack, fo
         raise InstrumentFault(loop.bench.charger_meter.name, told)
     loop.follow_at(settling_s, fixture_ohm, pack.resistance, forced_delay)
     fast, quiet = loop.follow[FAST_s], loop.follow[QUIET_s]
-    loop.event(
-        "standin",
-        Rp_ohm=round(fixture_ohm, 6),
-        Rv_ohm=round(fast.Rv_ohm, 6),
-        settling_s=round(settling_s, 3),
-        delay_scans=fast.delay_scans,
-        gain=round(fast.gain, 5),
-        lag_s=round(fast.lag_s, 3),
-        quiet={"delay_scans": quiet.delay_scans, "gain": round(quiet.gain, 5), "lag_s": round(quiet.lag_s, 3)},
-    )
+    loop.stand_in_words = {
+        "Rp_ohm": round(fixture_ohm, 6),
+        "Rv_ohm": round(fast.Rv_ohm, 6),
+        "settling_s": round(settling_s, 3),
+        "delay_scans": fast.delay_scans,
+        "gain": round(fast.gain, 5),
+        "lag_s": round(fast.lag_s, 3),
+        "quiet": {"delay_scans": quiet.delay_scans, "gain": round(quiet.gain, 5), "lag_s": round(quiet.lag_s, 3)},
+    }
+    loop.event("standin", **loop.stand_in_words)
     return fixture_ohm
 
 

@@ -17,7 +17,7 @@ from sequencer.engine.heartbeat import Heartbeat
 if TYPE_CHECKING:
     from sequencer.engine.journal import Journal
 
-__all__ = ["RecordError", "RecordFolder", "is_record", "journal_segments"]
+__all__ = ["RecordError", "RecordFolder", "is_record", "journal_segments", "refuse_unless_free"]
 
 
 def is_record(folder: Path) -> bool:
@@ -55,7 +55,7 @@ class RecordFolder:
 
         Raises RecordError if the folder holds a record or anything else, or cannot be made.
         """
-        _refuse_unless_free(out)
+        refuse_unless_free(out)
         try:
             (out / "data" / "inputs").mkdir(parents=True)
             sync_folder(out.parent)
@@ -139,7 +139,8 @@ class RecordFolder:
         self.close()
 
 
-def _refuse_unless_free(out: Path) -> None:
+def refuse_unless_free(out: Path) -> None:
+    """Raise RecordError unless a record can begin in this folder: it is new or empty."""
     if not out.exists():
         return
     if not out.is_dir():

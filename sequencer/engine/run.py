@@ -16,7 +16,7 @@ from sequencer.engine import methods, startup
 from sequencer.engine.guard import Bounds, Guard, Trip
 from sequencer.engine.inputs import Inputs
 from sequencer.engine.loop import Interrupted, Loop, RecordLost, StopFlag
-from sequencer.engine.manifest import manifest_of
+from sequencer.engine.manifest import description_of, outcome_of
 from sequencer.engine.pace import Pace
 from sequencer.engine.record import RecordFolder
 from sequencer.engine.scan import Scan
@@ -70,12 +70,14 @@ def run(inputs: Inputs, bench: OpenBench, options: Options, stop: StopFlag, watc
         start_utc = bench.clock.utc()
         journal = record.start_journal(start_utc=start_utc, wall_s=wall_seconds)
         loop = _loop(inputs, bench, options, stop, record, journal, watching)
-        record.event(0.0, "run-start", start_utc=start_utc, seed=options.seed, procedure=inputs.procedure.model.name)
+        described = description_of(inputs, bench, start_utc, options.seed)
+        record.event(0.0, "run-start", **described)
         ended, why, fault = _guarded(inputs, loop, options, watching)
         safe = _to_safety(bench, loop, watching)
         loop.event("run-end", ended=ended, why=why)
     performance = _performance(loop, bench, wall_seconds() - begun)
-    sealed = _seal(record, inputs, bench, options, start_utc, ended, safe, performance)
+    outcome = outcome_of(bench, ended, why, safe, loop.stand_in_words, performance)
+    sealed = _seal(record, {**described, **outcome})
     return Ended(options.out, ended, why, safe, sealed, performance, fault)
 
 
@@ -201,23 +203,12 @@ def _performance(loop: Loop, bench: OpenBench, wall_s: float) -> dict[str, float
     }
 
 
-def _seal(
-    record: RecordFolder,
-    inputs: Inputs,
-    bench: OpenBench,
-    options: Options,
-    start_utc: str,
-    ended: str,
-    safe: SafeState,
-    performance: dict[str, float],
-) -> bool:
+def _seal(record: RecordFolder, manifest: dict[str, Any]) -> bool:
     from sequencer.engine.durable import RecordError
     from sequencer.engine.sealing import seal
 
-    manifest = manifest_of(inputs, bench, start_utc, ended, safe, performance)
-    manifest["seed"] = options.seed
     try:
-        seal(record.path, manifest)
+        seal(record, manifest)
     except (OSError, RecordError):
         return False  # a full disk: what was written stays readable, and `judge` seals it once there is room
     return True

@@ -1,0 +1,58 @@
+"""Exit statuses: what went wrong, in one sentence, and the number that says whose fault it was."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable
+from functools import wraps
+from typing import ParamSpec
+
+import typer
+
+BAD_INPUT = 2
+BENCH_FAULT = 3
+OUR_FAULT = 70
+P = ParamSpec("P")
+
+
+def answers(command: Callable[P, None]) -> Callable[P, None]:
+    """Turn what a command raises into a sentence on standard error and an exit status; never a bare traceback."""
+
+    @wraps(command)
+    def answering(*args: P.args, **kwargs: P.kwargs) -> None:
+        try:
+            command(*args, **kwargs)
+        except (typer.Exit, typer.Abort):
+            raise
+        except KeyboardInterrupt:
+            _say("stopped by Ctrl-C before anything was energised")
+            raise typer.Exit(BENCH_FAULT) from None
+        except Exception as reason:
+            raise typer.Exit(_answer(reason)) from None
+
+    return answering
+
+
+def _answer(reason: Exception) -> int:
+    from drivers.text.faults import BadInput
+    from drivers.trouble import BenchFault
+    from sequencer.engine.durable import RecordError
+
+    if isinstance(reason, BadInput):
+        count = len(reason.faults)
+        _say(f"{count} fault{'s' if count > 1 else ''} in what was given; nothing was touched:")
+        for fault in reason.faults:
+            _say(f"  {fault}")
+        return BAD_INPUT
+    if isinstance(reason, RecordError):
+        _say(str(reason))
+        return BAD_INPUT
+    if isinstance(reason, BenchFault):
+        _say(f"bench fault: {reason}")
+        return BENCH_FAULT
+    _say(f"a fault of packmime itself: {type(reason).__name__}: {reason}")
+    return OUR_FAULT
+
+
+def _say(words: str) -> None:
+    print(words, file=sys.stderr)  # noqa: T201 - the terminal is what this module is for

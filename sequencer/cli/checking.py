@@ -1,0 +1,120 @@
+"""`packmime check`: every fault of every file, the plan of a procedure, JSON Schemas."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+from typing import TYPE_CHECKING
+
+import typer
+
+from drivers.shipped import is_bare
+from drivers.text.document import Mapped, Scalar, read
+from drivers.text.faults import BadInput, Faults, Place
+from drivers.text.nearest import unknown
+from drivers.text.si import clock_time
+
+if TYPE_CHECKING:
+    from drivers.text.binding import Written
+    from sequencer.engine.plan import Plan
+
+
+def _models() -> dict[str, type[Written]]:
+    from drivers.bench import Bench
+    from drivers.dialect import Dialect
+    from drivers.virtual.charger_file import ChargerFile
+    from sequencer.model.findings import Findings
+    from sequencer.model.pack import Pack
+    from sequencer.model.procedure import Procedure
+    from sequencer.model.specification import Specification
+
+    return {
+        "procedure": Procedure,
+        "specification": Specification,
+        "pack": Pack,
+        "bench": Bench,
+        "dialect": Dialect,
+        "charger": ChargerFile,
+        "findings": Findings,
+    }
+
+
+def check_command(
+    files: list[str], bench: str, spec: str, pack: str | None, changes: list[str], schema: str | None
+) -> None:
+    """See `packmime check --help`. Raises BadInput with all faults of all files."""
+    if schema is not None:
+        print_schema(schema)
+        return
+    faults = Faults()
+    if not files:
+        faults.add(Place("FILE"), "a file to check was expected, or --schema KIND")
+    for text in files:
+        try:
+            _check_one(text, bench, spec, pack, changes, faults)
+        except BadInput as bad:
+            faults.found.extend(bad.faults)
+    faults.raise_if_any()
+
+
+def _check_one(text: str, bench: str, spec: str, pack: str | None, changes: list[str], faults: Faults) -> None:
+    kind = "procedure" if is_bare(text) else _kind_of(Path(text))
+    if kind == "procedure":
+        from sequencer.engine.inputs import Asked, changes_of, gather
+        from sequencer.engine.plan import plan_of
+
+        _print_plan(text, plan_of(gather(Asked(text, spec, pack, bench, changes_of(changes)))))
+        return
+    _check_alone(Path(text), kind, faults)
+
+
+def _check_alone(path: Path, kind: str, faults: Faults) -> None:
+    from drivers.bench_file import load_bench
+    from drivers.text.binding import bind
+
+    if kind == "bench":
+        found = load_bench(path, faults) is not None
+    else:
+        found = bind(_models()[kind], read(path), kind, faults) is not None
+    if found and not faults.found:
+        typer.echo(f"{path}: a sound {kind} file")
+
+
+def _kind_of(path: Path) -> str:
+    document = read(path)
+    head = document.root.entries.get("packmime") if isinstance(document.root, Mapped) else None
+    kind = (head.text or "").split(" ")[0] if isinstance(head, Scalar) else ""
+    models = _models()
+    if kind not in models:
+        place = head.place if head is not None else document.root.place
+        faults = Faults()
+        faults.add(place, f"must open with 'packmime: KIND 1', KIND one of {', '.join(models)}")
+        faults.raise_if_any()
+    return kind
+
+
+def _print_plan(text: str, plan: Plan) -> None:
+    insertions = f"{plan.insertions} insertion{'' if plan.insertions == 1 else 's'}"
+    typer.echo(f"{text}: sound. {insertions}, {clock_time(plan.bench_s)} of bench time, no prompts.")
+    for kind, seconds in plan.steps:
+        typer.echo(f"  {kind:<8} {clock_time(seconds)}")
+    typer.echo("Roles:")
+    for where, name, dialect in plan.roles:
+        typer.echo(f"  {where:<22} {name} ({dialect})")
+    for note in plan.notes:
+        typer.echo(f"Note: {note}.")
+
+
+def print_schema(kind: str) -> None:
+    """The JSON Schema of a kind of file, on standard output. Raises BadInput for an unknown kind."""
+    models = _models()
+    if kind not in models:
+        faults = Faults()
+        faults.add(Place(f"--schema {kind}"), unknown(kind, models, "kind"))
+        faults.raise_if_any()
+    schema = models[kind].model_json_schema()
+    schema["properties"] = {"packmime": {"const": f"{kind} 1"}, **schema.get("properties", {})}
+    schema["required"] = ["packmime", *schema.get("required", [])]
+    typer.echo(
+        json.dumps({"$schema": "https://json-schema.org/draft/2020-12/schema", **schema}, indent=2, ensure_ascii=False)
+    )

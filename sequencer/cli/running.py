@@ -1,0 +1,88 @@
+"""`packmime run`: files checked, bench opened, procedure carried out, record judged, report written."""
+
+from __future__ import annotations
+
+import signal
+from collections.abc import Iterator
+from contextlib import contextmanager
+from pathlib import Path
+from types import FrameType
+
+import typer
+
+from drivers.clock import utc_now
+from drivers.open_bench import open_bench
+from sequencer.cli.access import access_to, charger_for
+from sequencer.cli.answers import BENCH_FAULT, OUR_FAULT
+from sequencer.cli.judging import judge_and_report
+from sequencer.cli.terminal import Terminal
+from sequencer.engine.inputs import Asked, changes_of, gather
+from sequencer.engine.loop import StopFlag
+from sequencer.engine.plan import plan_of
+from sequencer.engine.record import refuse_unless_free
+from sequencer.engine.run import Ended, Options, run
+
+
+def run_command(
+    procedure: str,
+    bench: str,
+    spec: str,
+    pack: str | None,
+    charger: str | None,
+    out: Path | None,
+    changes: list[str],
+    only: list[str],
+    seed: int,
+) -> None:
+    """See `packmime run --help`. Raises typer.Exit with the status of design section 5."""
+    asked = Asked(procedure, spec, pack, bench, changes_of(changes), seed)
+    inputs = gather(asked)
+    virtual_charger = charger_for(inputs.bench, charger, spec)
+    folder = out or Path("runs") / f"{utc_now():%Y%m%dT%H%M%S}-{inputs.procedure.model.name}"
+    refuse_unless_free(folder)
+    stop = StopFlag()
+    terminal = Terminal(plan_of(inputs).bench_s)
+    with access_to(inputs.bench, virtual_charger, seed) as access, _signals(stop), terminal:
+        terminal.opening(inputs, access, folder)
+        opened = open_bench(inputs.bench, access)
+        try:
+            options = Options(folder, seed if access.clock.virtual else None, tuple(only))
+            ended = run(inputs, opened, options, stop, terminal.watching(opened.clock.now))
+        finally:
+            opened.close()
+    raise typer.Exit(_finish(ended, terminal))
+
+
+def _finish(ended: Ended, terminal: Terminal) -> int:
+    terminal.ended(ended)
+    if not ended.sealed:
+        terminal.say(
+            "the record could not be sealed (disk full?); `packmime judge` seals and judges it once there is room"
+        )
+        return OUR_FAULT if ended.fault is not None else BENCH_FAULT
+    judged = judge_and_report(ended.record, terminal)
+    terminal.verdicts(judged)
+    terminal.figures(ended.performance, judged)
+    if ended.fault is not None:
+        terminal.say(f"a fault of packmime itself: {ended.why}; its traceback is in the record")
+        return OUR_FAULT
+    blamed_on_bench = ended.ended in ("bench fault", "stopped") or judged.bench_trip
+    if blamed_on_bench or not ended.safe.verified:
+        return BENCH_FAULT
+    return judged.exit_status
+
+
+@contextmanager
+def _signals(stop: StopFlag) -> Iterator[None]:
+    """Ctrl-C and SIGTERM set a flag that the scan loop reads: every way out goes through the safe state."""
+    names = {signal.SIGINT: "Ctrl-C", signal.SIGTERM: "SIGTERM"}
+
+    def note(number: int, frame: FrameType | None) -> None:
+        stop.why = f"stopped by {names[signal.Signals(number)]}"
+
+    before = {number: signal.signal(number, note) for number in names}
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)

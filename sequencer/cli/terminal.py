@@ -1,0 +1,126 @@
+"""What a person sees while a run goes on, and at its end."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+from types import TracebackType
+from typing import TYPE_CHECKING, Self
+
+from rich.console import Console
+from rich.live import Live
+from rich.table import Table
+from rich.text import Text
+
+from drivers.clock import wall_seconds
+from drivers.open_bench import Access
+from drivers.text.si import clock_time
+from sequencer.engine.inputs import Inputs
+from sequencer.engine.run import Ended, Watching
+from sequencer.engine.scan import Scan
+
+if TYPE_CHECKING:
+    from sequencer.cli.judging import Judged
+
+REDRAW_s = 0.1
+STYLES = {
+    "pass": "green",
+    "conditional pass": "yellow",
+    "conditional fail": "red",
+    "fail": "bold red",
+    "inconclusive": "magenta",
+    "not run": "bright_black",
+    "not applicable": "bright_black",
+}
+CAUTION = "Safe means de-energised, not isolated: unplug the charger before touching it."
+
+
+class Terminal:
+    """One line that says what is being done and seen; sentences above it; a summary at the end."""
+
+    def __init__(self, planned_s: float, console: Console | None = None) -> None:
+        self._console = console or Console(highlight=False)
+        self._planned_s = planned_s
+        self._words = "starting"
+        self._drawn_s = 0.0
+        self._live = Live(console=self._console, auto_refresh=False, transient=True)
+        self._now: Callable[[], float] = lambda: 0.0
+
+    def __enter__(self) -> Self:
+        if self._console.is_terminal:
+            self._live.start()
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, reason: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        if self._console.is_terminal:
+            self._live.stop()
+
+    def say(self, words: str) -> None:
+        self._console.print(Text(words))
+
+    def opening(self, inputs: Inputs, access: Access, folder: Path) -> None:
+        model, procedure = inputs.specification.model.model, inputs.procedure.model
+        if inputs.bench.bench.virtual is not None:
+            self._console.print(
+                Text(f"REHEARSAL on a virtual bench: {access.charger}, seed {access.seed}", style="bold")
+            )
+        else:
+            self.say("Real instruments. Stay within reach of the emergency stop; a software stop is none.")
+        self.say(f"{procedure.name}: {procedure.purpose}")
+        self.say(f"{model}; about {clock_time(self._planned_s)} of bench time; record in {folder}")
+
+    def watching(self, now: Callable[[], float]) -> Watching:
+        self._now = now
+        return Watching(self._says, self._scan, self._alarm)
+
+    def _says(self, words: str) -> None:
+        self._words = words
+        self.say(f"{self._now():8.1f} s  {words}")
+
+    def _alarm(self, words: str) -> None:
+        self._console.bell()
+        self._console.print(Text(f"ALARM: {words}", style="bold white on red"))
+
+    def _scan(self, scan: Scan) -> None:
+        if not self._console.is_terminal or wall_seconds() - self._drawn_s < REDRAW_s:
+            return
+        self._drawn_s = wall_seconds()
+        rest_s = max(self._planned_s - scan.time_s, 0.0)
+        seen = f"{scan.charger_V.value:7.3f} V  {scan.current_A.value:7.3f} A at the charger"
+        line = f"{scan.time_s:8.1f} s  {self._words}  |  {seen}  |  about {clock_time(rest_s)} to go"
+        self._live.update(Text(line, no_wrap=True, overflow="ellipsis"), refresh=True)
+
+    def ended(self, ended: Ended) -> None:
+        self.say(f"{ended.ended}: {ended.why}")
+        for words in (*ended.safe.words[-1:], *ended.safe.troubles):
+            self.say(words)
+
+    def verdicts(self, judged: Judged) -> None:
+        table = Table(box=None, pad_edge=False, header_style="bold", show_edge=False)
+        for heading in ("limit", "verdict", "why"):
+            table.add_column(heading, overflow="fold")
+        for verdict in judged.document["verdicts"]:
+            word = verdict["verdict"]
+            table.add_row(Text(verdict["limit"]), Text(word, style=STYLES[word]), Text(verdict["why"]))
+        self._console.print(table)
+        overall = judged.document["overall"]
+        self._console.print(Text.assemble("Overall: ", (overall, STYLES[overall])))
+        if judged.document["rehearsal"]:
+            self.say("This was a rehearsal: it says something about the procedure, nothing about a charger.")
+        else:
+            self.say(CAUTION)
+        self.say(f"Report: {judged.folder.parent.parent / 'report.html'}")
+
+    def figures(self, performance: dict[str, float], judged: Judged) -> None:
+        """What the run cost."""
+        shares = {name.removeprefix("share_"): part for name, part in performance.items() if name.startswith("share_")}
+        total_s = performance["wall_s"] + judged.report_s
+        parts = [f"{name} {part * performance['wall_s'] / total_s:.0%}" for name, part in shares.items()]
+        parts.append(f"report {judged.report_s / total_s:.0%}")
+        self.say(
+            f"{performance['run_s']:.0f} s of bench time in {total_s:.1f} s "
+            f"({performance['run_s_per_wall_s']:.0f} virtual seconds per wall second in the run), "
+            f"{performance['exchanges_per_scan']:.1f} exchanges per scan; {', '.join(parts)}"
+        )

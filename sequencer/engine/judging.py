@@ -1,0 +1,268 @@
+"""From a sealed record to verdicts in a numbered folder. Needs no bench; the same record gives the same verdicts."""
+
+from __future__ import annotations
+
+import json
+import math
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from drivers.text.measures import Rule
+from drivers.text.si import si
+from sequencer.analysis.decision import Decision, decide, decide_class, decide_state, exit_status, overall
+from sequencer.analysis.uncertainty import Budget
+from sequencer.engine.accuracy import Accuracy
+from sequencer.engine.evidence import Evidence, Window, open_evidence
+from sequencer.engine.judgements import changes, latest, new_judgement, write_json
+from sequencer.engine.manifest import program_version, sha256
+from sequencer.engine.measured import ChargeStep, Found, last_readings, measure_charges
+from sequencer.model.findings import LimitRow, declared_elsewhere, limit_rows
+
+# What a trip of the charger's own doing says something about.
+TRIP_LIMITS = {
+    "charger voltage": "charge.end_voltage",
+    "node voltage": "charge.end_voltage",
+    "charger current": "charge.stage1.current",
+    "supply current": "charge.stage1.current",
+    "charge": "charge.ends",
+}
+
+
+@dataclass(frozen=True)
+class Rejudging:
+    """What is asked for beside the record: nothing, or a deviation from it."""
+
+    specification: tuple[str, bytes] | None = None
+    rule: Rule | None = None
+    reason: str | None = None
+    person: str | None = None
+
+
+@dataclass(frozen=True)
+class Judgement:
+    """A judgement folder with its verdicts; the report is written into it next."""
+
+    folder: Path
+    document: dict[str, Any]
+    exit_status: int
+    bench_trip: bool
+
+
+def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
+    """Judge a sealed record into a new numbered folder. Raises RecordError, BadInput; the record is not touched."""
+    evidence = open_evidence(record, asked.specification)
+    previous = latest(record)
+    rows = limit_rows(evidence.specification, evidence.procedure.judge, asked.rule)
+    found, classification = _findings(evidence)
+    verdicts = [_verdict(row, found.get(row.name, Found(absent=_why_absent(evidence)))) for row in rows]
+    words = [verdict["verdict"] for verdict in verdicts]
+    document = {"overall": overall(words), "rehearsal": bool(evidence.manifest["rehearsal"]), "verdicts": verdicts}
+    folder = new_judgement(record)
+    (folder / "specification.yaml").write_bytes(evidence.specification_bytes)
+    write_json(folder / "verdicts.json", document)
+    write_json(folder / "findings.json", _findings_document(found, classification))
+    write_json(folder / "budgets.json", {name: one.budget.as_dict() for name, one in found.items() if one.budget})
+    write_json(folder / "judgement.json", _judgement_document(evidence, asked, folder, document, previous, utc))
+    left_out = min(_left_out(evidence), words.count("not run"))
+    trip = evidence.trip
+    return Judgement(folder, document, exit_status(words, left_out=left_out), bool(trip and trip["cause"] == "bench"))
+
+
+def _findings(evidence: Evidence) -> tuple[dict[str, Found], dict[str, Any] | None]:
+    found = {"charges": measure_charges(evidence)}
+    window = evidence.window("charge")
+    if window is not None:
+        step = ChargeStep(evidence, window)
+        return {**found, **step.findings()}, step.classification.as_dict()
+    trip = evidence.trip
+    if trip is not None and trip["cause"] == "charger":
+        name, tripped = _tripped(evidence, trip)
+        found[name] = tripped
+    return found, _unfinished(evidence)
+
+
+def _unfinished(evidence: Evidence) -> dict[str, Any] | None:
+    """The classification of a charge that was cut short: for the figure, not for a verdict."""
+    begun_s = evidence.begun("charge")
+    current = evidence.trace("charger.current")
+    if begun_s is None or current.value.size < 10:
+        return None
+    try:
+        return ChargeStep(evidence, Window(begun_s, float(current.time_s[-1]), {})).classification.as_dict()
+    except ValueError:
+        return None  # too little of it to read anything
+
+
+def _tripped(evidence: Evidence, trip: dict[str, Any]) -> tuple[str, Found]:
+    """The finding behind a trip that was the charger's doing: what was read last before it."""
+    name = TRIP_LIMITS[trip["quantity"]]
+    words = f"the guard ended the run: {trip['quantity']} {si(trip['value'], trip['unit'])}; {trip['why']}"
+    moment_s = float(trip["t"])
+    if name == "charge.ends":
+        return name, Found(seen="does not end", start_s=0.0, end_s=moment_s, words=words)
+    accuracy = Accuracy(
+        evidence.bench, min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
+    )
+    if name == "charge.end_voltage":
+        return name, _tripped_voltage(evidence, accuracy, moment_s, words)
+    estimate = last_readings(evidence.trace("charger.current"), moment_s)
+    if estimate is None:
+        return name, Found(trouble=f"too few readings before the trip; {words}")
+    budget = Budget(estimate.value, "A", tuple(accuracy.current(estimate.value)))
+    return name, Found(budget=budget, n=estimate.n, start_s=estimate.start_s, end_s=estimate.end_s, words=words)
+
+
+def _tripped_voltage(evidence: Evidence, accuracy: Accuracy, moment_s: float, words: str) -> Found:
+    voltage = evidence.trace("charger.voltage").within(moment_s - 2.0, moment_s)
+    if voltage.value.size == 0:
+        return Found(trouble=f"no reading before the trip; {words}")
+    share = 1.0 / evidence.pack.cells
+    largest_V = float(np.max(voltage.value))
+    budget = Budget(largest_V * share, "V", tuple(accuracy.volts("node.charger_voltage", largest_V, share)))
+    return Found(budget=budget, n=voltage.value.size, start_s=float(voltage.time_s[0]), end_s=moment_s, words=words)
+
+
+def _why_absent(evidence: Evidence) -> str:
+    match evidence.ended:
+        case "complete":
+            return str(evidence.manifest.get("why") or "the procedure did not get so far")
+        case "trip":
+            return f"the run was ended by the guard: {evidence.manifest.get('why')}"
+        case "stopped":
+            return f"the run was {evidence.manifest.get('why')}"
+        case ended:
+            return f"the run ended early ({ended}): {evidence.manifest.get('why') or 'no reason was recorded'}"
+
+
+def _left_out(evidence: Evidence) -> int:
+    """How many verdicts a person chose not to have (--only)."""
+    return 10**6 if evidence.events("step-left-out") else 0
+
+
+# verdicts
+
+
+def _verdict(row: LimitRow, found: Found) -> dict[str, Any]:
+    decision = _decision(row, found)
+    budget = found.budget
+    shown = None if budget is None or decision.verdict in ("not run", "not applicable") else budget
+    band = row.band
+    return {
+        "limit": row.name,
+        "kind": row.kind,
+        "finding": row.finding,
+        "verdict": decision.verdict,
+        "why": decision.why,
+        "value": shown.value if shown else found.seen,
+        "unit": row.unit or None,
+        "u": shown.u if shown else None,
+        "k": shown.k if shown else None,
+        "n": found.n,
+        "low": band.low if band else None,
+        "high": band.high if band else None,
+        "expected": row.expected,
+        "rule": row.rule if row.kind == "quantity" else None,
+        "guard_band": decision.guard_band,
+        "p_conform": decision.p_conform,
+        "evidence": None if found.start_s is None else [_number(found.start_s), _number(found.end_s)],
+    }
+
+
+def _number(value: float | None) -> float | None:
+    return None if value is None or not math.isfinite(value) else round(value, 3)
+
+
+def _decision(row: LimitRow, found: Found) -> Decision:
+    if not row.declared:
+        return Decision("not applicable", None, None, "the specification declares nothing for it")
+    if found.absent is not None:
+        return Decision("not run", None, None, found.absent)
+    if found.trouble is not None:
+        return Decision("inconclusive", None, None, found.trouble)
+    if found.none is not None:
+        return _none_seen(row, found.none)
+    return _with_words(_judged(row, found), found.words)
+
+
+def _none_seen(row: LimitRow, none: str) -> Decision:
+    """The charger shows no such thing: a declared stage or phase that is missing is a fail of its limit."""
+    if row.finding == "charge.current_after_end":
+        return Decision("not applicable", None, None, none)
+    assert row.band is not None
+    return Decision("fail", None, None, f"{none}; declared is {row.band.text}")
+
+
+def _judged(row: LimitRow, found: Found) -> Decision:
+    if row.kind == "state":
+        assert row.expected is not None
+        return decide_state(found.seen, row.expected)
+    if row.kind == "class":
+        assert row.expected is not None
+        assert found.seen is not None
+        return decide_class(found.seen, found.probability or 0.0, row.expected)
+    assert found.budget is not None
+    assert row.band is not None
+    budget = found.budget
+    return decide(budget.value, budget.u, budget.k, row.band.low, row.band.high, row.rule, unit=row.unit)
+
+
+def _with_words(decision: Decision, words: str) -> Decision:
+    if not words:
+        return decision
+    return Decision(decision.verdict, decision.guard_band, decision.p_conform, f"{decision.why}; {words}")
+
+
+# documents
+
+
+def _findings_document(found: dict[str, Found], classification: dict[str, Any] | None) -> dict[str, Any]:
+    listed = [
+        {
+            "name": name,
+            "kind": "quantity" if one.budget else "state" if one.probability is None else "class",
+            "value": one.budget.value if one.budget else one.seen,
+            "unit": one.budget.unit if one.budget else None,
+            "u": one.budget.u if one.budget else one.probability,
+            "start_s": _number(one.start_s),
+            "end_s": _number(one.end_s),
+            "words": one.trouble or one.absent or one.none or one.words,
+        }
+        for name, one in found.items()
+    ]
+    return {"classification": classification, "findings": listed}
+
+
+def _judgement_document(
+    evidence: Evidence, asked: Rejudging, folder: Path, document: dict[str, Any], previous: Path | None, utc: str
+) -> dict[str, Any]:
+    before = None if previous is None else json.loads((previous / "verdicts.json").read_text("utf-8"))
+    elsewhere = declared_elsewhere(evidence.specification, evidence.procedure.judge)
+    return {
+        "number": int(folder.name),
+        "utc": utc,
+        "rule": asked.rule or "as specified",
+        "specification_sha256": sha256(evidence.specification_bytes),
+        "packmime": program_version(),
+        "person": asked.person,
+        "reason": asked.reason,
+        "deviations": [*evidence.manifest.get("deviations", []), *_deviations(evidence, asked)],
+        "changed": [] if before is None else changes(before, document),
+        "not_part_of_procedure": elsewhere,
+    }
+
+
+def _deviations(evidence: Evidence, asked: Rejudging) -> list[str]:
+    said = []
+    if asked.rule is not None:
+        said.append(f"every limit was judged by the rule '{asked.rule}', whatever the specification says")
+    if (
+        asked.specification is not None
+        and sha256(asked.specification[1]) != evidence.manifest["specification"]["sha256"]
+    ):
+        said.append("judged against another specification than the one of the run")
+    if evidence.manifest.get("ended") == "abandoned":
+        said.append("the run was cut off by a crash and sealed afterwards")
+    return said + [f"the record: {note}" for note in evidence.record.notes]

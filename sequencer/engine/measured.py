@@ -1,0 +1,267 @@
+"""What a full charge in a record measured, each with its budget; from traces, windows and the bench's accuracy."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from drivers.text.si import si
+from sequencer.analysis.charge import ChargeReading, Plateau, current_agreement, measure_charge
+from sequencer.analysis.classify import Classification, classify
+from sequencer.analysis.estimates import Estimate, mean_between
+from sequencer.analysis.uncertainty import Budget, Contribution
+from sequencer.engine.accuracy import Accuracy
+from sequencer.engine.evidence import Evidence, Trace, Window
+
+FEWEST = 5
+AFTER_END_s = 5.0
+LAG_SHARE = 1.0 / 3.0
+
+
+@dataclass(frozen=True)
+class Found:
+    """One finding: a quantity with its budget, or a state or class; or why there is none.
+
+    `trouble`: it was looked for and cannot be told (inconclusive). `absent`: it was not made (not run).
+    `none`: the charger shows no such thing.
+    """
+
+    budget: Budget | None = None
+    seen: str | None = None
+    probability: float | None = None
+    n: int | None = None
+    start_s: float | None = None
+    end_s: float | None = None
+    trouble: str | None = None
+    absent: str | None = None
+    none: str | None = None
+    words: str = ""
+
+
+@dataclass(frozen=True)
+class Measured:
+    """All findings of one charge by limit name, and the classification that the figure shows."""
+
+    found: dict[str, Found] = field(default_factory=dict)
+    classification: Classification | None = None
+
+
+def measure_charges(evidence: Evidence) -> Found:
+    """Whether the charger charges a nominal pack."""
+    window = evidence.window("charges")
+    if window is None:
+        return Found(absent="the run ended before it was seen")
+    current = evidence.trace("charger.current").within(window.start_s, window.end_s)
+    if current.value.size < FEWEST:
+        return Found(trouble=f"only {current.value.size} readings")
+    stage = evidence.specification.charge.stages[0].current
+    lowest_A = stage.low if stage.low is not None and stage.low > 0 else (stage.high or 0.0)
+    mean_A = float(np.mean(current.value))
+    seen = "charges" if mean_A > 0.5 * lowest_A else "does not charge"
+    words = f"{si(mean_A, 'A')} over {window.end_s - window.start_s:.0f} s"
+    return Found(seen=seen, n=current.value.size, start_s=window.start_s, end_s=window.end_s, words=words)
+
+
+class ChargeStep:
+    """Measures one charge step of a record."""
+
+    def __init__(self, evidence: Evidence, window: Window) -> None:
+        self._evidence = evidence
+        self._window = window
+        self._cells = evidence.pack.cells
+        highest_V = min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
+        self._accuracy = Accuracy(evidence.bench, highest_V)
+        self._voltage = evidence.trace("charger.voltage")
+        self._current = evidence.trace("charger.current")
+        self.classification, self.reading = self._read()
+
+    def _read(self) -> tuple[Classification, ChargeReading]:
+        window = self._window
+        mains_s = self._evidence.begun("insert") or 0.0
+        current = self._current.within(mains_s, window.end_s)
+        voltage_V = self._voltage.at(current.time_s)
+        known = np.isfinite(voltage_V)
+        time_s, voltage_V, current_A = current.time_s[known], voltage_V[known], current.value[known]
+        u_A = Budget(0.0, "A", tuple(self._accuracy.current(float(np.max(current_A))))).u
+        u_V = Budget(0.0, "V", tuple(self._accuracy.volts("node.charger_voltage", float(np.max(voltage_V))))).u
+        found = classify(time_s, voltage_V, current_A, current_u_A=u_A, voltage_u_V=u_V)
+        return found, measure_charge(time_s, voltage_V, current_A, found, start_s=mains_s, end_s=window.end_s)
+
+    def findings(self) -> dict[str, Found]:
+        """Every finding that a full charge gives, by limit name."""
+        found = {"charge.algorithm": self._algorithm()}
+        for number in range(1, len(self._evidence.specification.charge.stages) + 1):
+            plateau = self.reading.plateaus[number - 1] if number <= len(self.reading.plateaus) else None
+            found[f"charge.stage{number}.current"] = self._stage_current(number, plateau)
+            found[f"charge.stage{number}.threshold"] = self._threshold(number, plateau)
+        found["charge.voltage"] = self._regulation()
+        found["charge.end_voltage"] = self._end_voltage()
+        found["charge.cutoff"] = self._cutoff()
+        found["charge.ends"] = self._ends()
+        found["charge.current_after_end"] = self._after_end()
+        return found
+
+    # class and states
+
+    def _algorithm(self) -> Found:
+        shown, window = self.classification, self._window
+        start_s = shown.stages[0].start_s if shown.stages else window.start_s
+        return Found(
+            seen=shown.algorithm, probability=shown.confidence, start_s=start_s, end_s=window.end_s, words=shown.why
+        )
+
+    def _ends(self) -> Found:
+        reading = self.reading
+        if reading.ended:
+            words = f"the current fell from {self._shown_cutoff()} to nothing at {reading.ended_s:.1f} s"
+            return Found(seen="ends", start_s=reading.ended_s, end_s=self._window.end_s, words=words)
+        last_A = reading.last_current_A.value if reading.last_current_A else math.nan
+        words = f"still charging at {si(last_A, 'A')} when the step was given up after {self._window.end_s:.0f} s"
+        return Found(seen="does not end", start_s=self._window.start_s, end_s=self._window.end_s, words=words)
+
+    def _shown_cutoff(self) -> str:
+        return si(self.reading.cutoff_A.value, "A") if self.reading.cutoff_A else "its plateau"
+
+    # currents
+
+    def _stage_current(self, number: int, plateau: Plateau | None) -> Found:
+        if plateau is None:
+            return Found(none=f"no constant-current stage {number} was seen")
+        estimate = plateau.current_A
+        if estimate.n < FEWEST:
+            return Found(trouble=f"only {estimate.n} readings on the plateau")
+        return self._current_found(estimate, [])
+
+    def _current_found(self, estimate: Estimate, more: list[Contribution]) -> Found:
+        trouble = self._disagreement(estimate.start_s, estimate.end_s)
+        lines = [*self._readings(estimate), *self._accuracy.current(estimate.value), *more]
+        return _found(Budget(estimate.value, "A", tuple(lines)), estimate, trouble)
+
+    @staticmethod
+    def _readings(estimate: Estimate, sensitivity: float = 1.0) -> list[Contribution]:
+        if not estimate.s > 0 or not estimate.n_eff > 1:
+            return []
+        source = f"{estimate.n} readings"
+        return [
+            Contribution.from_readings(
+                "repeatability", estimate.s, estimate.n_eff, sensitivity=sensitivity, source=source
+            )
+        ]
+
+    def _disagreement(self, start_s: float, end_s: float) -> str | None:
+        """Why the two ways to measure the current do not agree on a window; None where they do."""
+        shunt = self._current.within(start_s, end_s)
+        load_A = self._evidence.trace("load.current").at(shunt.time_s)
+        supply_A = self._evidence.trace("supply.current").at(shunt.time_s)
+        if np.count_nonzero(np.isfinite(load_A + supply_A)) < 2:
+            return None
+        gap = current_agreement(shunt.time_s, shunt.value, load_A, supply_A, start_s=start_s, end_s=end_s)
+        lines = [
+            *self._accuracy.current(float(np.mean(shunt.value))),
+            *self._accuracy.readback("node.load", float(np.nanmean(load_A))),
+            *self._accuracy.readback("node.supply", float(np.nanmean(supply_A))),
+        ]
+        allowed_A = Budget(gap.value, "A", (*lines, Contribution("readings", gap.u))).U
+        if abs(gap.value) <= allowed_A:
+            return None
+        told = f"shunt, and load minus supply, differ by {si(gap.value, 'A')}"
+        return f"{told}; their uncertainty is {si(allowed_A, 'A')}"
+
+    def _cutoff(self) -> Found:
+        reading, limit = self.reading, self._evidence.specification.charge.cutoff
+        if reading.cutoff_A is not None and reading.ended:
+            estimate = reading.cutoff_A
+            bracket_A = reading.cutoff_bracket_A or 0.0
+            # The charger decided between the last reading and the next: half of the fall there, rectangular.
+            middle = Estimate(
+                estimate.value - bracket_A / 2, estimate.s, estimate.n, estimate.n_eff, estimate.start_s, estimate.end_s
+            )
+            bracket = Contribution.from_half_width(
+                "bracket", bracket_A / 2, "rectangular", source="spacing of the readings"
+            )
+            return self._current_found(middle, [bracket])
+        if reading.last_current_A is None:
+            return Found(trouble="the end was seen, and no trend before it")
+        last_A = reading.last_current_A.value
+        if limit is not None and limit.low is not None and last_A < limit.low:
+            return self._current_found(reading.last_current_A, [])  # it went on below the lowest that is allowed
+        return Found(trouble=f"the charge did not end; the last current was {si(last_A, 'A')}")
+
+    def _after_end(self) -> Found:
+        if not self.reading.ended or self.reading.ended_s is None:
+            return Found(none="the charge did not end")
+        start_s, end_s = self.reading.ended_s + AFTER_END_s, self._window.end_s
+        after = self._current.within(start_s, end_s)
+        if after.value.size < FEWEST:
+            return Found(trouble=f"only {after.value.size} readings after the end")
+        estimate = mean_between(after.time_s, after.value, start_s, end_s)
+        lines = [*self._readings(estimate), *self._accuracy.current(estimate.value)]
+        return _found(Budget(estimate.value, "A", tuple(lines)), estimate, None)
+
+    # voltages, per cell
+
+    def _per_cell(self, estimate: Estimate, more: list[Contribution], trouble: str | None) -> Found:
+        share = 1.0 / self._cells
+        lines = [
+            *self._readings(estimate, share),
+            *self._accuracy.volts("node.charger_voltage", estimate.value, share),
+            *more,
+        ]
+        return _found(Budget(estimate.value * share, "V", tuple(lines)), estimate, trouble)
+
+    def _condition_lost(self, start_s: float, end_s: float) -> str | None:
+        condition = self._evidence.trace("node.condition").within(start_s, end_s)
+        lost = int(np.count_nonzero(condition.value == 0))
+        return f"the supply did not hold the node in {lost} of {condition.value.size} scans" if lost else None
+
+    def _threshold(self, number: int, plateau: Plateau | None) -> Found:
+        if plateau is None:
+            return Found(none=f"no constant-current stage {number} was seen")
+        if plateau.threshold_V is None:
+            return Found(none=f"stage {number} did not end by a step")
+        estimate = plateau.threshold_V
+        trouble = self._lag() or self._condition_lost(estimate.start_s, estimate.end_s)
+        half_V = (plateau.threshold_bracket_V or 0.0) / self._cells / 2
+        bracket = Contribution.from_half_width(
+            "ramp between readings", half_V, "rectangular", source="spacing of the readings"
+        )
+        return self._per_cell(estimate, [bracket], trouble)
+
+    def _lag(self) -> str | None:
+        stand_in = self._evidence.manifest.get("standin") or {}
+        lag_s, response_s = stand_in.get("lag_s"), self._evidence.specification.dwell.response
+        if lag_s is None or lag_s <= LAG_SHARE * response_s:
+            return None
+        return f"the stand-in lags {lag_s:.2f} s, more than a third of the charger's response time {response_s:g} s"
+
+    def _regulation(self) -> Found:
+        estimate = self.reading.regulation_V
+        if estimate is None:
+            return Found(none="no constant-voltage phase was seen")
+        if estimate.n < 2 * FEWEST:
+            return Found(trouble=f"only {estimate.n} readings at constant voltage")
+        return self._per_cell(estimate, [], self._condition_lost(estimate.start_s, estimate.end_s))
+
+    def _end_voltage(self) -> Found:
+        estimate = self.reading.end_voltage_V
+        found = self._per_cell(estimate, [], self._condition_lost(estimate.start_s, estimate.end_s))
+        peak_V = self.reading.peak_V / self._cells
+        return _with_words(found, f"largest single reading {peak_V:.4f} V per cell")
+
+
+def _found(budget: Budget, estimate: Estimate, trouble: str | None) -> Found:
+    return Found(budget=budget, n=estimate.n, start_s=estimate.start_s, end_s=estimate.end_s, trouble=trouble)
+
+
+def _with_words(found: Found, words: str) -> Found:
+    return Found(**{**found.__dict__, "words": words})
+
+
+def last_readings(trace: Trace, until_s: float, span_s: float = 2.0) -> Estimate | None:
+    """Mean of what was read last before a moment; None for fewer than two readings."""
+    last = trace.within(until_s - span_s, until_s)
+    if last.value.size < 2:
+        return None
+    return mean_between(last.time_s, last.value, until_s - span_s, until_s)
