@@ -39,7 +39,7 @@ def instruments(manifest: Json) -> tuple[tuple[str, str, str, str, str], ...]:
     return tuple(
         (
             clean(one.get("name")),
-            clean(one.get("role")),
+            clean(one.get("role")) + (f" ({clean(one['place'])})" if one.get("place") is not None else ""),
             clean(one.get("identity")),
             f"{clean(one.get('address'))} ({clean(one.get('dialect'))})",
             certificate(one.get("certificate")),
@@ -74,12 +74,19 @@ def surroundings(manifest: Json) -> tuple[Pair, ...]:
     return tuple(rows)
 
 
+_STANDIN = {"Rp_ohm": ("Rp", "Ω"), "Rv_ohm": ("Rv", "Ω"), "delay_scans": ("delay in scans", "")}
+
+
 def standin(values: Json) -> str:
-    """The stand-in's resistances and loop (design 8), rounded."""
-    words = {"Rp_ohm": ("Rp", "Ω"), "Rv_ohm": ("Rv", "Ω"), "lag_s": ("lag", "s"), "gain": ("gain", "")}
-    words["delay_scans"] = ("delay in scans", "")
-    named = {name: words.get(name, (clean(name), "")) for name in values}
-    return ", ".join(f"{label} {_number(values[name], unit)}" for name, (label, unit) in named.items())
+    """The stand-in's resistances and loop (design 8), rounded; a pace of its own in brackets."""
+    return ", ".join(_standin_part(str(name), value) for name, value in values.items())
+
+
+def _standin_part(name: str, value: object) -> str:
+    if isinstance(value, Mapping):
+        return f"{clean(name)} ({standin(value)})"
+    label, unit = _STANDIN.get(name, (clean(name).removesuffix("_s"), "s" if name.endswith("_s") else ""))
+    return f"{label} {_number(value, unit)}"
 
 
 def _number(value: object, unit: str) -> str:
@@ -99,30 +106,49 @@ def protections(manifest: Json) -> tuple[Pair, ...]:
 
 def ending(manifest: Json, events: Sequence[Json]) -> str:
     """How the run ended, why, and whether the bench was proven safe."""
-    last = {str(event.get("event")): event for event in events}
-    ended = clean(manifest.get("ended"))
-    why = last.get("run-end", {}).get("why")
-    words = f"Run ended: {ended}" + (f" ({clean(why)})" if why else "")
-    return f"{words}. Safe state: {_safe(manifest.get('safe'), last.get('safe-state', {}).get('words'))}."
+    why = manifest.get("why") or _last(events, "run-end").get("why")
+    words = f"Run ended: {clean(manifest.get('ended'))}" + (f" ({clean(why)})" if why else "")
+    return f"{words}. Safe state: {_SAFE[manifest.get('safe')]}."
 
 
-def _safe(safe: object, words: object) -> str:
-    """True is proven, False is not, None was never reached."""
-    detail = f" ({clean(words).rstrip('.')})" if words else ""
-    if safe is None:
-        return "not recorded"
-    return ("verified" if safe else "NOT VERIFIED") + detail
+# A value that is neither proven nor disproven was never reached.
+_SAFE = {True: "verified", False: "NOT VERIFIED", None: "not recorded"}
 
 
-def trip_lines(events: Sequence[Json]) -> tuple[str, ...]:
-    """Each trip of the guard in one line."""
-    return tuple(
-        f"{clean(event.get('cause'))} trip: {clean(event.get('quantity'))} "
-        f"{_number(event.get('value'), str(event.get('unit') or ''))}"
-        f" against {_number(event.get('bound'), str(event.get('unit') or ''))}; {clean(event.get('why'))}"
-        for event in events
-        if event.get("event") == "trip"
-    )
+def way_to_safety(events: Sequence[Json]) -> tuple[str, ...]:
+    """What was done and seen on the way to the safe state, in order, troubles last."""
+    event = _last(events, "safe-state")
+    return unique(_listed(event.get("words")), _listed(event.get("troubles")))
+
+
+def _last(events: Sequence[Json], name: str) -> Json:
+    return next((event for event in reversed(events) if event.get("event") == name), {})
+
+
+def _listed(words: object) -> Sequence[object]:
+    return words if isinstance(words, list) else [words] if words else []
+
+
+def alarms(events: Sequence[Json]) -> tuple[str, ...]:
+    """Each trip of the guard and each fault of the bench or of packmime itself, in one line."""
+    told = {"trip": _trip, "bench-fault": _bench_fault, "internal-fault": _internal_fault}
+    return tuple(told[name](event) for event in events if (name := str(event.get("event"))) in told)
+
+
+def _trip(event: Json) -> str:
+    unit = str(event.get("unit") or "")
+    value, bound = _number(event.get("value"), unit), _number(event.get("bound"), unit)
+    whose = clean(event.get("cause")).capitalize()
+    return f"{whose} trip: {clean(event.get('quantity'))} {value} against a bound of {bound}; {clean(event.get('why'))}"
+
+
+def _bench_fault(event: Json) -> str:
+    return f"Bench fault: {clean(event.get('instrument'))}: {clean(event.get('what'))}"
+
+
+def _internal_fault(event: Json) -> str:
+    lines = str(event.get("traceback") or "").strip().splitlines()
+    return f"Fault of packmime itself: {clean(lines[-1] if lines else None)}; the traceback is in the record's events"
 
 
 def dated(manifest: Json) -> str:

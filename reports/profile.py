@@ -117,13 +117,23 @@ def charge_profile(
 
 
 def _body(stages: Sequence[Stage], events: Sequence[Mapping[str, Any]], time_s: Floats) -> tuple[float, float]:
-    """The time in which the charge was watched: the finding's window, else the stages, else all."""
-    for event in events:
-        if event.get("event") == "finding-window" and event.get("finding") == "charge" and _spans(event):
-            return float(event["start_s"]), float(event["end_s"])
-    if stages:
-        return stages[0].start_s, stages[-1].end_s
-    return float(time_s[0]), float(time_s[-1])
+    """The time in which the charge was watched: from the insertion before it to its end or trip; else all."""
+    windows = [event for event in events if event.get("event") == "finding-window" and _spans(event)]
+    charge = next((event for event in windows if event.get("finding") == "charge"), None)
+    before = [
+        event
+        for event in windows
+        if event.get("finding") == "charges" and (charge is None or event["end_s"] <= charge["end_s"])
+    ]
+    used = [*before[-1:], *([charge] if charge is not None else [])]
+    starts = [float(event["start_s"] if event.get("mains_s") is None else event["mains_s"]) for event in used]
+    ends = [float(event["end_s"]) for event in used]
+    trips = [float(event["t"]) for event in events if event.get("event") == "trip"]
+    starts += [stages[0].start_s] if stages else []
+    ends += [stages[-1].end_s] if stages else []
+    if not starts:
+        return float(time_s[0]), float(time_s[-1])
+    return min(starts), max(ends + [trip_s for trip_s in trips if charge is None])
 
 
 def _spans(event: Mapping[str, Any]) -> bool:

@@ -34,7 +34,8 @@ class View:
     reason: str
     ending: str
     safe: bool
-    trips: tuple[str, ...]
+    alarms: tuple[str, ...]
+    way_to_safety: tuple[str, ...]
     deviations: tuple[str, ...]
     changed: tuple[str, ...]
     verdicts: tuple[VerdictRow, ...]
@@ -83,7 +84,8 @@ def build(source: Source) -> View:
         reason=clean(judgement["reason"]) if judgement.get("reason") is not None else "",
         ending=header.ending(manifest, source.events),
         safe=manifest.get("safe") is True,
-        trips=header.trip_lines(source.events),
+        alarms=header.alarms(source.events),
+        way_to_safety=header.way_to_safety(source.events),
         deviations=header.unique(judgement.get("deviations"), manifest.get("deviations")),
         changed=header.unique(judgement.get("changed")),
         verdicts=tuple(rows.verdict_row(number, one, source.measurands) for number, one in enumerate(verdicts, 1)),

@@ -18,9 +18,7 @@ def test_certificates(declared: object, text: str) -> None:
     assert header.certificate(declared) == text
 
 
-@pytest.mark.parametrize(
-    ("safe", "text"), [(True, "verified (node at"), (False, "NOT VERIFIED (node at"), (None, "not recorded.")]
-)
+@pytest.mark.parametrize(("safe", "text"), [(True, "verified."), (False, "NOT VERIFIED."), (None, "not recorded.")])
 def test_the_safe_state_is_never_claimed_without_proof(content: dict, safe: bool | None, text: str) -> None:
     assert f"Safe state: {text}" in header.ending(content["manifest"] | {"safe": safe}, content["events"])
 
@@ -34,8 +32,29 @@ def test_ending_says_why() -> None:
 
 def test_trips_name_cause_value_and_bound() -> None:
     trip = {"t": 5.0, "event": "trip", "cause": "bench", "quantity": "node voltage", "value": 21.9, "unit": "V"}
-    lines = header.trip_lines([trip | {"bound": 21.5, "why": "The meters disagree."}])
-    assert lines == ("bench trip: node voltage 21.9 V against 21.5 V; The meters disagree.",)
+    lines = header.alarms([trip | {"bound": 21.5, "why": "the meters disagree"}])
+    assert lines == ("Bench trip: node voltage 21.9 V against a bound of 21.5 V; the meters disagree",)
+
+
+def test_faults_of_bench_and_program_are_told_in_a_line() -> None:
+    bench = {"t": 5.0, "event": "bench-fault", "instrument": "node_load", "what": "no answer within 0.3 s"}
+    own = {"t": 6.0, "event": "internal-fault", "traceback": "Traceback ...\n  File x\nKeyError: 'a'\n"}
+    assert header.alarms([bench, {"t": 5.5, "event": "note"}, own]) == (
+        "Bench fault: node_load: no answer within 0.3 s",
+        "Fault of packmime itself: KeyError: 'a'; the traceback is in the record's events",
+    )
+
+
+def test_the_way_to_safety_in_its_order(content: dict) -> None:
+    assert header.way_to_safety(content["events"])[0] == "charger quiet: shunt 0.001 A, ballast 0.001 A"
+    torn = [{"t": 1.0, "event": "safe-state", "verified": False, "words": ["a"], "troubles": ["no answer"]}]
+    assert header.way_to_safety(torn) == ("a", "no answer")
+    assert header.way_to_safety([]) == ()
+
+
+def test_stand_in_with_a_second_pace() -> None:
+    words = header.standin({"Rp_ohm": 0.1124, "settling_s": 0.35, "quiet": {"gain": 0.3, "lag_s": 3.3}})
+    assert words == "Rp 112 mΩ, settling 0.35 s, quiet (gain 0.3, lag 3.3 s)"
 
 
 def test_files_with_the_head_of_their_hash(content: dict) -> None:

@@ -66,3 +66,25 @@ def test_the_window_follows_the_finding_and_trips_are_marked(content: dict) -> N
 def test_a_record_without_samples_has_no_figure() -> None:
     empty = series(np.empty(0), np.empty(0))
     assert charge_profile(empty, empty, {}) is None
+
+
+def window(finding: str, start_s: float, end_s: float, **more: float) -> dict:
+    return {"t": end_s, "event": "finding-window", "finding": finding, "start_s": start_s, "end_s": end_s, **more}
+
+
+@pytest.mark.parametrize(
+    ("events", "body"),
+    [
+        ([window("charges", 14, 16, mains_s=10), window("charge", 16, 900)], (10.0, 900.0)),
+        # Insertions of later steps are not part of the charge.
+        ([window("charges", 14, 16), window("charge", 16, 900), window("charges", 950, 990)], (14.0, 900.0)),
+        # A trip during the charge leaves no window of it behind.
+        ([window("charges", 14, 16, mains_s=10), {"t": 700.0, "event": "trip", "cause": "charger"}], (10.0, 700.0)),
+        ([window("charges", 14, 16) | {"end_s": None}], (0.0, 999.0)),
+    ],
+)
+def test_what_of_a_record_is_the_charge(events: list[dict], body: tuple[float, float]) -> None:
+    time_s = np.arange(1000.0)
+    profile = charge_profile(series(time_s, time_s), series(time_s, time_s), {}, events)
+    assert profile is not None
+    assert profile.body == body
