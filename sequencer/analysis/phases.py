@@ -14,6 +14,8 @@ from sequencer.analysis.trace import Trace
 Kind = Literal["precharge", "cc", "cv", "constant-power", "taper", "pulse", "rest", "float", "top-up"]
 
 SAME_LEVEL = 0.02  # plateaus closer than this are one
+SMALL_STEP = 0.08  # of the plateau before
+SLOPE_STEPS = 4  # plateaus in a row, each a small step below, are a slope
 LEAST_TIME = 0.005  # of a run: what is shorter is a transition
 FLOAT_SHARE = 0.12  # of the largest plateau: a plateau below, after the charge, is a float
 FLOAT_DROP = 0.6  # of the current before: how far the current falls at once into a float
@@ -43,7 +45,8 @@ def phases_of_run(trace: Trace, start: int, stop: int) -> list[Phase]:
     phases = _regulated(trace, segments)
     least_s = LEAST_TIME * trace.duration(start, stop)
     lasting = [p for p in phases if p.kind == "cv" or trace.duration(p.start, p.stop) >= least_s]
-    return _foldback_marked(_merged(trace, lasting))
+    lasting = [p for p in lasting if p.stop - p.start >= 2]
+    return _foldback_marked(_small_steps_joined(_merged(trace, lasting)))
 
 
 def _rises(trace: Trace, segment: Segment) -> bool:
@@ -130,6 +133,30 @@ def _merged(trace: Trace, phases: list[Phase]) -> list[Phase]:
         else:
             merged.append(phase)
     return merged
+
+
+def _small_steps_joined(phases: list[Phase]) -> list[Phase]:
+    """Four plateaus or more, each a little below the one before, are a slope in digital steps: the first one stays."""
+    joined: list[Phase] = []
+    index = 0
+    while index < len(phases):
+        end = index + 1
+        while end < len(phases) and phases[end].kind == "cc" == phases[end - 1].kind and _little_below(phases, end):
+            end += 1
+        joined.append(phases[index])
+        if end - index >= SLOPE_STEPS:
+            fall = 1.0 - phases[end - 1].level_A / phases[index].level_A
+            below = phases[index + 1]
+            joined.append(Phase("taper", below.start, phases[end - 1].stop, below.level_A, fall))
+            index = end
+        else:
+            index += 1
+    return joined
+
+
+def _little_below(phases: list[Phase], index: int) -> bool:
+    before, level = phases[index - 1].level_A, phases[index].level_A
+    return before * (1.0 - SMALL_STEP) <= level < before
 
 
 def same_level(trace: Trace, a_A: float, b_A: float) -> bool:

@@ -11,6 +11,7 @@ from sequencer.analysis.trace import Trace
 
 LEAST_PULSES = 4
 ALIKE = 0.25  # spread of the pulses' currents about their median
+LEAST_HEIGHT = 0.3  # of the largest current: lower ones are a float that comes and goes
 LEAST_DUTY = 0.1  # below, the runs after a full charge are top-ups
 
 
@@ -34,9 +35,9 @@ class PulseTrain:
 def pulse_train(trace: Trace, runs: list[tuple[int, int]]) -> PulseTrain | None:
     """The pulse train in the runs of a log, or None.
 
-    A train has at least 4 runs whose median currents agree within 25 %; runs that differ (a pre-charge, a short
-    start pulse) may come before or after, as long as the train carries most of the charge or follows a plateau
-    of its own height.
+    A train has at least 4 runs whose median currents agree within 25 % and reach 30 % of the largest current; runs that
+    differ (a pre-charge, a start pulse) may come before or after. A long plateau of the same height before it belongs
+    to the train: the duty of a pulse charger falls near the end.
     """
     if len(runs) < LEAST_PULSES:
         return None
@@ -46,7 +47,7 @@ def pulse_train(trace: Trace, runs: list[tuple[int, int]]) -> PulseTrain | None:
     if alike.size < LEAST_PULSES or alike.size < 0.7 * (int(alike[-1]) - int(alike[0]) + 1):
         return None
     train = _measure(trace, runs, int(alike[0]), int(alike[-1]), middle)
-    return train if train.duty >= LEAST_DUTY else None
+    return train if train.duty >= LEAST_DUTY and middle >= LEAST_HEIGHT * trace.scale_A else None
 
 
 def _measure(trace: Trace, runs: list[tuple[int, int]], first: int, last: int, level_A: float) -> PulseTrain:

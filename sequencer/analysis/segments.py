@@ -40,10 +40,10 @@ class Segment:
         return self.stop - self.start
 
 
-def active_runs(current_A: Array, threshold_A: float) -> list[tuple[int, int]]:
-    """Ranges in which current flows: above the threshold at least once, ending where it falls below half of it."""
+def active_runs(current_A: Array, threshold_A: float, *, noise_A: float) -> list[tuple[int, int]]:
+    """Ranges in which current flows: above the threshold at least once, ending below half of it (or 4.5 σ of noise)."""
     smooth = despiked(current_A)
-    runs = ranges(smooth > 0.5 * threshold_A)
+    runs = ranges(smooth > max(0.5 * threshold_A, 4.5 * noise_A))
     return [(a, b) for a, b in runs if b - a >= 2 and bool(np.any(smooth[a:b] > threshold_A))]
 
 

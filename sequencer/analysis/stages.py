@@ -69,7 +69,7 @@ class Course:
 
 def course_of(trace: Trace) -> Course:
     """Phases of a log in which current flows (trace.scale_A > 0)."""
-    runs = active_runs(trace.current_A, trace.charges_above_A)
+    runs = active_runs(trace.current_A, trace.charges_above_A, noise_A=trace.noise_A)
     train = pulse_train(trace, runs)
     found, interrupted = _all_runs(trace, runs, train)
     phases = _floats(trace, _precharges(trace, found))
