@@ -37,7 +37,7 @@ def decimals_of(uncertainty: float) -> int:
 
 def pm(value: float, uncertainty: float, unit: str) -> str:
     """ "4.2031 V ± 1.9 mV" style: the value to the digits of its uncertainty, each with its prefix."""
-    factor, prefixed = _scale(value, unit)
+    factor, prefixed = _scale(max(abs(value), uncertainty), unit)
     text = f"{value / factor:.{decimals_of(uncertainty / factor)}f} {prefixed}".strip()
     width, wide_unit = _scale(uncertainty, unit)
     return f"{text} ± {uncertainty / width:.{decimals_of(uncertainty / width)}f} {wide_unit}".strip()

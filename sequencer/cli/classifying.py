@@ -131,12 +131,13 @@ def _draw(
     current_A: NDArray[np.float64],
     found: Classification,
 ) -> None:
-    from reports.figures import charge_figure
+    from reports.figures import charge_figure, save_figure
 
-    if plot.suffix.lower() not in (".svg", ".png", ".pdf"):
+    kind = plot.suffix[1:].lower()
+    if kind not in ("svg", "png", "pdf"):
         raise BadInput([Fault(Place("--plot"), f"'{plot.name}': .svg, .png or .pdf was expected")])
     figure = charge_figure(time_s, voltage_V, current_A, found.as_dict(), log.name)
     try:
-        figure.savefig(plot)
+        save_figure(figure, str(plot), kind)
     except OSError as reason:
         raise BadInput([Fault(Place("--plot"), f"'{plot}' cannot be written: {reason.strerror}")]) from reason

@@ -13,7 +13,7 @@ from typing import Literal
 from drivers.bench import Limits
 from drivers.roles import LoadMode, SupplyMode
 from drivers.text.si import si
-from sequencer.engine.scan import Scan
+from sequencer.engine.scan import Scan, Seen
 from sequencer.model.pack import Pack
 
 Cause = Literal["charger", "bench"]
@@ -25,6 +25,7 @@ AGREE_FLOOR_A = 0.06
 STALE_PERIODS = 3.0
 CONDITION_PATIENCE_s = 2.0  # the current is still read so long after the node's voltage is no longer the supply's
 LOST_READINGS = 3
+MOVED_V = 0.02  # the node was moved by so much, and its meter must have seen it
 
 
 @dataclass(frozen=True)
@@ -78,24 +79,20 @@ class Guard:
     ballast_ohm: float
     charge_Ah: float = 0.0
     _before: Scan | None = None
-    _equal: dict[str, tuple[float, int]] = field(default_factory=dict)
+    _equal: dict[str, tuple[float, int, float]] = field(default_factory=dict)
     _lost: dict[str, int] = field(default_factory=dict)
     _condition_lost_s: float | None = None
 
-    def check(self, scan: Scan, period_s: float) -> None:
-        """Raise Trip where `scan` passes a bound; otherwise remember it."""
+    def check(self, scan: Scan, period_s: float, set_V: float | None = None) -> None:
+        """Raise Trip where `scan` passes a bound; otherwise remember it. `set_V` is what the supply is set to."""
         self._check_links(scan)
         self._check_clock(scan, period_s)
-        self._check_dead_meters(scan)
+        self._check_dead_meters(scan, set_V or 0.0)
         self._check_voltages(scan)
         self._check_current(scan)
         self._check_outputs(scan)
         self._count(scan)
         self._before = scan
-
-    def forget_gap(self) -> None:
-        """Time passes unwatched on purpose (none so far): the next scan is not held against the one before."""
-        self._before = None
 
     def _check_links(self, scan: Scan) -> None:
         """One late answer is forgiven, LOST_READINGS in a row are a lost link; not a number trips at once."""
@@ -127,18 +124,26 @@ class Guard:
         if scan.time_s > self.bounds.time_s:
             raise Trip("bench", "run time", scan.time_s, "s", self.bounds.time_s, "the bench's longest time has passed")
 
-    def _check_dead_meters(self, scan: Scan) -> None:
+    def _check_dead_meters(self, scan: Scan, set_V: float) -> None:
+        """A meter whose last digit stands still is dead; the node's only if the node was moved meanwhile.
+
+        A quiet supply on a meter's high range may well repeat a reading to its last digit; a shunt's noise does not.
+        """
         if not self.bounds.equal_readings:
             return
-        for name, seen in (("node voltage", scan.node_V), ("charger current", scan.current_A)):
-            if not seen.good:
-                continue
-            value, count = self._equal.get(name, (math.nan, 0))
-            count = count + 1 if seen.value == value else 1
-            self._equal[name] = (seen.value, count)
-            if count >= self.bounds.equal_readings:
-                why = f"{count} readings equal to the last digit: the meter does not measure"
-                raise Trip("bench", name, seen.value, "", math.nan, why)
+        self._check_dead("node voltage", scan.node_V, set_V, MOVED_V)
+        self._check_dead("charger current", scan.current_A, 0.0, 0.0)
+
+    def _check_dead(self, name: str, seen: Seen, set_V: float, moved_V: float) -> None:
+        if not seen.good:
+            return
+        value, count, first_set_V = self._equal.get(name, (math.nan, 0, set_V))
+        same = seen.value == value
+        count, first_set_V = (count + 1, first_set_V) if same else (1, set_V)
+        self._equal[name] = (seen.value, count, first_set_V)
+        if count >= self.bounds.equal_readings and abs(set_V - first_set_V) >= moved_V:
+            why = f"{count} readings equal to the last digit: the meter does not measure"
+            raise Trip("bench", name, seen.value, "", math.nan, why)
 
     def _check_voltages(self, scan: Scan) -> None:
         for name, seen, bound in (

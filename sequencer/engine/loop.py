@@ -98,6 +98,10 @@ class Loop:
         self.bench.hands.do(deeds)
         for deed in deeds:
             self._note(deed)
+        self.look_closely()
+
+    def look_closely(self) -> None:
+        """Fast pace for a while: something is about to be measured."""
         self.pace = self.pace.moved(self.now_s)
         self._next_s = min(self._next_s, self.now_s + FAST_s)
 
@@ -132,7 +136,7 @@ class Loop:
         self.shares.exchange_s += asked - waited
         self.shares.record_s += written - asked
         self.shares.scans += 1
-        self.guard.check(scan, period_s)
+        self.guard.check(scan, period_s, self._set_V)
         self._follow(scan)
         self.last = scan
         self._next_s = scan.time_s + self.pace.period_s(scan.time_s)

@@ -137,6 +137,7 @@ def _wait_for_charge(loop: Loop, specification: Specification) -> bool:
     began = loop.observe(watch_s, begins)
     if began:
         loop.observe(SETTLE_s)
+    loop.look_closely()
     window_s = loop.now_s
     means = Means()
     loop.observe(MEAN_s, means)

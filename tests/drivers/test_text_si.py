@@ -30,6 +30,7 @@ def test_value_takes_the_digits_of_its_uncertainty() -> None:
     assert pm(4.20312, 0.0019, "V") == "4.2031 V ± 1.9 mV"
     assert pm(3.00012, 0.0082, "A") == "3.0001 A ± 8.2 mA"
     assert pm(-0.00012, 3e-6, "A") == "-120.0 µA ± 3.0 µA"
+    assert pm(0.0002, 0.0021, "A") == "0.2 mA ± 2.1 mA"  # nothing is known below its uncertainty
     # GUM H.1.7: l = (50.000838 ± 0.000093) mm; in mm that is six decimals.
     assert decimals_of(0.000093) == 6
 
