@@ -31,7 +31,7 @@ class Load(Instrument):
 
     def reset(self) -> None:
         self.current, self.overcurrent, self.input = 0.0, 33.0, False
-        self._act(on=False, current_A=0.0, overcurrent_A=33.0)
+        self._act(on=False, current_A=0.0, overcurrent_A=33.0, tripped=set())
 
     def conditions(self) -> tuple[int, int]:
         return 0, sum(TRIP_BITS[cause] for cause in self.tripped)
@@ -41,7 +41,7 @@ class Load(Instrument):
         self.circuit.catch_up()
         return self.circuit.load.tripped
 
-    def _act(self, **settings: float | bool) -> None:
+    def _act(self, **settings: object) -> None:
         def apply() -> None:
             for what, value in settings.items():
                 setattr(self.circuit.load, what, value)

@@ -23,7 +23,8 @@ SPANS = (
 OVER_RANGE = 1.2  # a range reads to 120 %, the highest one to 100 %; common practice, no source
 DOWN_RANGE = 0.1  # autorange goes down below this share of a range
 APERTURES = (0.02, 0.2, 1.0, 10.0, 100.0)  # in power line cycles
-DIGITS = {0.02: 1e-4, 0.2: 1e-5}  # resolution as a share of the range for short apertures, else 1e-6
+DIGITS = {0.02: 1e-5, 0.2: 1e-6}  # resolution as a share of the range for short apertures
+LONG_DIGITS = 1e-7  # and for others: below the noise, as meters answer over their interface
 THERMAL_V = 0.3e-6  # standard deviation of the thermal EMF of the leads; common practice, no source
 
 RANGE = Number(0.0, 1000.0, "V", default=1000.0, optional=True)
@@ -103,7 +104,7 @@ class Meter(Instrument):
             return math.copysign(OVERLOAD, value)
         if self._ideal:
             return value
-        step_V = DIGITS.get(self.cycles, 1e-6) * top_V
+        step_V = DIGITS.get(self.cycles, LONG_DIGITS) * top_V
         return round(value / step_V) * step_V
 
     def _read(self) -> str:

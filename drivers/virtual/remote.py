@@ -113,9 +113,15 @@ class VirtualServer:
         line, _, self._heard = self._heard.partition(b"\n")
         return line.decode()
 
+    @property
+    def running(self) -> bool:
+        """Whether the process is there."""
+        return self._process.poll() is None
+
     def _state(self) -> str:
-        code = self._process.poll()
-        return "its process still runs" if code is None else f"its process ended with {code}"
+        if self.running:
+            return "its process still runs"
+        return f"its process ended with {self._process.returncode}{_last_words(self._process)}"
 
     def close(self) -> None:
         """End the process: its input closes, and if that is not enough it is killed. Closing twice does nothing."""
@@ -154,7 +160,6 @@ def _first_answer(process: subprocess.Popen[bytes], request: str) -> dict[str, A
     """Hand over the request and read which ports were opened."""
     assert process.stdin is not None
     assert process.stdout is not None
-    assert process.stderr is not None
     alarm = threading.Timer(START_TIMEOUT_s, process.kill)
     alarm.start()
     try:
@@ -166,10 +171,17 @@ def _first_answer(process: subprocess.Popen[bytes], request: str) -> dict[str, A
     finally:
         alarm.cancel()
     if not line:
-        said = process.stderr.read().decode(errors="replace").strip().splitlines()
-        raise LinkFault(WHO, f"its process did not come up: {said[-1] if said else 'it said nothing'}")
+        raise LinkFault(WHO, f"its process did not come up{_last_words(process)}")
     opened: dict[str, Any] = json.loads(line)
     return opened
+
+
+def _last_words(process: subprocess.Popen[bytes]) -> str:
+    """What an ended process said last on its standard error, as the tail of a sentence."""
+    if process.stderr is None or process.stderr.closed:
+        return ""
+    said = process.stderr.read().decode(errors="replace").strip().splitlines()
+    return f": {said[-1]}" if said else ""
 
 
 def _end(process: subprocess.Popen[bytes]) -> None:

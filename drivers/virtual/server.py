@@ -2,7 +2,7 @@
 
 `python -m drivers.virtual.server` reads one line of JSON on standard input,
 {"plan": ..., "seed": 1, "mode": "clock"|"wall", "ports": {name: port}}, and answers on standard output with
-{"ports": {name: port}, "clock": port}. It serves on 127.0.0.1 until standard input ends, or until the clock port hears "bye".
+{"ports": {name: port}, "clock": port}. It serves on 127.0.0.1 until standard input ends or the clock port hears "bye".
 Clock port, line by line: "advance 0.1" and "now" answer the bench's time, "stats" answers JSON.
 """
 
@@ -66,12 +66,11 @@ class Server:
             client, _ = listener.accept()
         except BlockingIOError:  # gone again already
             return
-        first = self._clients.get(name)
-        if first is not None and not self._has_left(first):
+        if name in self._clients:
+            self._hear_out(name, heard)
+        if name in self._clients:
             client.close()
             return
-        if first is not None:
-            self._drop(name, first)
         client.setblocking(False)
         client.setsockopt(socket.IPPROTO_TCP, socket.TCP_NODELAY, 1)
         self._clients[name] = client
@@ -81,36 +80,31 @@ class Server:
             self._half_line = b""
         self._selector.register(client, selectors.EVENT_READ, partial(self._receive, name, client, heard))
 
-    @staticmethod
-    def _has_left(client: socket.socket) -> bool:
-        """Whether a client has closed and we have not read so yet: probing and opening follow each other closely."""
-        try:
-            return not client.recv(1, socket.MSG_PEEK)
-        except BlockingIOError:
-            return False
-        except OSError:
-            return True
+    def _hear_out(self, name: str, heard: Callable[[socket.socket, bytes], None]) -> None:
+        """Read all that a client has sent: it may have left since, for opening follows probing closely."""
+        while name in self._clients and self._receive(name, self._clients[name], heard):
+            pass
 
     def _drop(self, name: str, client: socket.socket) -> None:
         self._selector.unregister(client)
         client.close()
-        if self._clients.get(name) is client:
-            del self._clients[name]
+        del self._clients[name]
 
     # -- hearing ----------------------------------------------------------------------------------------------
 
-    def _receive(self, name: str, client: socket.socket, heard: Callable[[socket.socket, bytes], None]) -> None:
+    def _receive(self, name: str, client: socket.socket, heard: Callable[[socket.socket, bytes], None]) -> bool:
+        """Hear what has come in; False where nothing had, or where the client has left."""
         try:
             data = client.recv(RECEIVE)
             if data:
                 heard(client, data)
-                return
+                return True
         except BlockingIOError:
-            return
+            return False
         except OSError:  # reset by the peer, or it does not take its answers
             pass
-        if self._clients.get(name) is client:
-            self._drop(name, client)
+        self._drop(name, client)
+        return False
 
     def _heard(self, instrument: Instrument, client: socket.socket, data: bytes) -> None:
         if self._clock is not None:

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 from drivers.virtual.circuit import Circuit
 from drivers.virtual.imperfection import Imperfect, Span
 from drivers.virtual.instrument import COMMON, Instrument, nr3, setting
@@ -35,9 +33,8 @@ class Supply(Instrument):
         self.reset()
 
     def reset(self) -> None:
-        self.output = False
-        self.voltage = self.current = self.overvoltage = self.overcurrent = 0.0
         self.overcurrent_on = False
+        self.circuit.change(self._unlatch)
         self._switch(False)
         self._set_voltage(0.0)
         self._set_current(1.5)
@@ -71,7 +68,7 @@ class Supply(Instrument):
 
     def _set_overvoltage(self, value: float) -> None:
         self.overvoltage = value
-        self._protect(lambda: setattr(self.circuit.supply, "overvoltage_V", value))
+        self.circuit.change(lambda: setattr(self.circuit.supply, "overvoltage_V", value))
 
     def _set_overcurrent(self, value: float) -> None:
         self.overcurrent = value
@@ -80,10 +77,7 @@ class Supply(Instrument):
     def _arm_overcurrent(self, on: bool) -> None:
         self.overcurrent_on = on
         level_A = self.overcurrent if on else float("inf")
-        self._protect(lambda: setattr(self.circuit.supply, "overcurrent_A", level_A))
-
-    def _protect(self, act: Callable[[], None]) -> None:
-        self.circuit.change(act)
+        self.circuit.change(lambda: setattr(self.circuit.supply, "overcurrent_A", level_A))
 
     @property
     def tripped(self) -> set[str]:
