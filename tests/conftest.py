@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
+import drivers.virtual
 import pytest
 from hypothesis import HealthCheck, settings
 
@@ -17,7 +18,7 @@ settings.register_profile(
 )
 settings.load_profile("packmime")
 
-CHARGERS = Path(__file__).resolve().parents[1] / "drivers" / "virtual" / "chargers"
+CHARGERS = Path(drivers.virtual.__file__).parent / "chargers"
 
 
 @dataclass(frozen=True)
@@ -90,7 +91,9 @@ def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
                 )
             finally:
                 opened.close()
-        return Rehearsed(record, ended, judge(record, Rejudging(), "2026-01-01T00:00:00.000Z") if ended.sealed else None)
+        return Rehearsed(
+            record, ended, judge(record, Rejudging(), "2026-01-01T00:00:00.000Z") if ended.sealed else None
+        )
 
     return rehearsing
 

@@ -127,7 +127,7 @@ def parse_tolerance(text: str, dimension: str) -> tuple[float, float]:
     match = _TOLERANCE.fullmatch(text)
     if match is None:
         raise QuantityFault(f'"{text}" has no tolerance; expected such as "{EXAMPLES[dimension]} ± 5 %"')
-    nominal = parse(match[1], dimension)
+    nominal = parse(match[1].strip(), dimension)
     spread = match[2].strip()
     if spread.endswith("%") and dimension != "ratio":
         half = abs(nominal) * parse(spread, "ratio")

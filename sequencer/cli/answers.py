@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import os
 import sys
+import traceback
 from collections.abc import Callable
 from functools import wraps
 from typing import ParamSpec
@@ -12,6 +14,7 @@ import typer
 BAD_INPUT = 2
 BENCH_FAULT = 3
 OUR_FAULT = 70
+TRACE = "PACKMIME_TRACE"  # set in the environment: a fault of ours shows where it happened
 P = ParamSpec("P")
 
 
@@ -51,6 +54,8 @@ def _answer(reason: Exception) -> int:
         _say(f"bench fault: {reason}")
         return BENCH_FAULT
     _say(f"a fault of packmime itself: {type(reason).__name__}: {reason}")
+    if os.environ.get(TRACE):
+        traceback.print_exception(reason)
     return OUR_FAULT
 
 

@@ -46,7 +46,7 @@ def read_log(log: Path, columns: str | None) -> tuple[NDArray[np.float64], NDArr
 
     names = _names(log, columns)
     try:
-        table = pd.read_csv(log, usecols=list(names.values()), encoding="utf-8-sig", float_precision="high")
+        table = pd.read_csv(log, usecols=list(names.values()), encoding="utf-8-sig")
     except (OSError, ValueError, UnicodeDecodeError) as reason:
         raise BadInput([Fault(Place(str(log)), f"cannot be read as CSV: {reason}")]) from reason
     read = []

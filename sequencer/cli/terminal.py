@@ -23,6 +23,7 @@ if TYPE_CHECKING:
     from sequencer.cli.judging import Judged
 
 REDRAW_s = 0.1
+PIPED_WIDTH = 120  # of tables where the output is no terminal
 STYLES = {
     "pass": "green",
     "conditional pass": "yellow",
@@ -35,11 +36,16 @@ STYLES = {
 CAUTION = "Safe means de-energised, not isolated: unplug the charger before touching it."
 
 
+def _console() -> Console:
+    console = Console(highlight=False)
+    return console if console.is_terminal else Console(highlight=False, width=PIPED_WIDTH)
+
+
 class Terminal:
     """One line that says what is being done and seen; sentences above it; a summary at the end."""
 
     def __init__(self, planned_s: float, console: Console | None = None) -> None:
-        self._console = console or Console(highlight=False)
+        self._console = console or _console()
         self._planned_s = planned_s
         self._words = "starting"
         self._drawn_s = 0.0
@@ -58,7 +64,7 @@ class Terminal:
             self._live.stop()
 
     def say(self, words: str) -> None:
-        self._console.print(Text(words))
+        self._console.print(Text(words), soft_wrap=True)
 
     def opening(self, inputs: Inputs, access: Access, folder: Path) -> None:
         model, procedure = inputs.specification.model.model, inputs.procedure.model
@@ -93,7 +99,7 @@ class Terminal:
         self._live.update(Text(line, no_wrap=True, overflow="ellipsis"), refresh=True)
 
     def ended(self, ended: Ended) -> None:
-        self.say(f"{ended.ended}: {ended.why}")
+        self.say(ended.why if ended.why.startswith(ended.ended) else f"{ended.ended}: {ended.why}")
         for words in (*ended.safe.words[-1:], *ended.safe.troubles):
             self.say(words)
 
