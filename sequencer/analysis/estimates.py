@@ -53,7 +53,7 @@ def mean_estimate(x: npt.ArrayLike, *, start_s: float = math.nan, end_s: float =
         bad = int(np.flatnonzero(~np.isfinite(readings))[0])
         raise ValueError(f"x: reading {bad} is {readings[bad]}, expected finite readings")
     value, deviations = _centred(readings)
-    s = math.sqrt(float(deviations @ deviations) / (readings.size - 1))
+    s = _root_mean(deviations, readings.size - 1)
     return Estimate(value, s, readings.size, effective_number(deviations), start_s, end_s)
 
 
@@ -78,6 +78,15 @@ def _centred(readings: Array) -> tuple[float, Array]:
     return value, deviations - float(np.mean(deviations))
 
 
+def _root_mean(deviations: Array, dof: int) -> float:
+    """Root of the sum of squares over dof, without leaving the range of the numbers."""
+    scale = float(np.max(np.abs(deviations)))
+    if scale == 0.0:
+        return 0.0
+    shares = deviations / scale
+    return scale * math.sqrt(float(shares @ shares) / dof)
+
+
 def effective_number(deviations: Array) -> float:
     """Independent readings that n correlated ones are worth, between 2 and n.
 
@@ -97,6 +106,7 @@ def effective_number(deviations: Array) -> float:
 def lag_correlation(deviations: Array) -> Array:
     """Autocorrelation at lags 0 ... n-1, (n,), normalised to 1 at lag 0 (biased form, as NIST StRD)."""
     n = deviations.size
+    deviations = deviations / float(np.max(np.abs(deviations)))
     size = 1 << (2 * n - 1).bit_length()
     spectrum = np.fft.rfft(deviations, size)
     covariance = np.fft.irfft(spectrum * np.conj(spectrum), size)[:n]

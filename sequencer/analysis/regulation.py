@@ -45,7 +45,9 @@ def held_voltage(trace: Trace, segments: list[Segment], last: int) -> tuple[int,
     first, start = _reach_back(trace, segments, last)
     if start >= segments[last].stop:
         return None
-    if first < last and segments[first].kind == "flat" and _opens(trace, segments, first, last):
+    while first < last and segments[first].kind == "flat" and (
+        _opens(trace, segments, first, last) or _is_stage(trace, segments, first)
+    ):
         first += 1
         start = segments[first].start
     group = segments[first : last + 1]
@@ -110,6 +112,19 @@ def _opens(trace: Trace, segments: list[Segment], first: int, last: int) -> bool
         return flats[-1].level_A < segments[first].level_A
     steps_s = [trace.duration(s.start, s.stop) for s in segments[first + 1 : last + 1] if s.kind == "flat"]
     return len(steps_s) < 2 or trace.duration(segments[first].start, segments[first].stop) > 2.0 * max(steps_s[:3])
+
+
+def _is_stage(trace: Trace, segments: list[Segment], index: int) -> bool:
+    """Whether a plateau climbs to the voltage again after a large step down, be it by less than the tolerance."""
+    segment = segments[index]
+    before = segments[index - 1].level_A if index and segments[index - 1].kind == "flat" else segment.level_A
+    after = segments[index + 1].level_A
+    if max(before - segment.level_A, segment.level_A - after) <= LADDER_STEP * before:
+        return False
+    part = max(1, segment.size // 5)
+    voltage = trace.voltage_V[segment.start : segment.stop]
+    climb = float(np.mean(voltage[-part:]) - np.mean(voltage[:part]))
+    return climb > max(STILL_SHARE * float(voltage[-1]), 4.0 * trace.noise_V * float(np.sqrt(2.0 / part)))
 
 
 def _passed_later(trace: Trace, segments: list[Segment], stop: int) -> bool:

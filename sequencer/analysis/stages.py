@@ -127,6 +127,8 @@ def _floats(trace: Trace, phases: list[Phase]) -> list[Phase]:
     marked = list(phases)
     for index in range(len(marked) - 1, 0, -1):
         phase = marked[index]
+        if phase.kind == "top-up":
+            continue
         if phase.kind not in ("cc", "float") or phase.level_A > FLOAT_SHARE * trace.scale_A:
             break
         rise = float(trace.voltage_V[phase.stop - 1] - trace.voltage_V[phase.start])
