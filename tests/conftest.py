@@ -7,9 +7,10 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import drivers.virtual
 import pytest
 from hypothesis import HealthCheck, settings
+
+import drivers.virtual
 
 # A shared 2-core machine is noisy: a deadline would measure the neighbours. No database: the suite also runs
 # from a folder that it cannot write to.
@@ -48,13 +49,12 @@ def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
     `charger`, `bench` and `files` are changes: a key's line in the charger file is replaced; texts in the bench file
     are replaced; whole files (specification, pack, procedure) may be given by path.
     """
+    from drivers.open_bench import open_bench
     from sequencer.cli.access import access_to, charger_for
     from sequencer.engine.inputs import FOLDERS, Asked, gather
     from sequencer.engine.judging import Rejudging, judge
     from sequencer.engine.loop import StopFlag
     from sequencer.engine.run import Options, Watching, run
-
-    from drivers.open_bench import open_bench
 
     count = 0
 

@@ -35,7 +35,8 @@ def test_json_is_one_document(packmime: Callable, log: Path) -> None:
     assert 0.9 < found["confidence"] < 1
     assert [stage["kind"] for stage in found["stages"]] == ["cc", "cv"]
     assert found["stages"][0]["current_A"]["value"] == pytest.approx(3.0, abs=1e-3)
-    assert found["stages"][0]["end_s"] == pytest.approx(3150, abs=3)
+    # A plateau ends where the current has left it by 1.5 to 2 %: up to 450 s x 0.02 after the analytic knee.
+    assert 3150 - 1 <= found["stages"][0]["end_s"] <= 3150 + 9
     assert found["voltage_limit_V"]["value"] == pytest.approx(4.2, abs=1e-3)
 
 

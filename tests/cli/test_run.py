@@ -181,7 +181,8 @@ LIMITED = """
 import resource, signal, sys
 signal.signal(signal.SIGXFSZ, signal.SIG_IGN)
 resource.setrlimit(resource.RLIMIT_FSIZE, (150_000, 150_000))
-sys.argv = ["packmime", "run", "acceptance", "--set", "compression=1", "--bench", "virtual-in-process", "--out", sys.argv[1]]
+words = "run acceptance --set compression=1 --bench virtual-in-process --out".split()
+sys.argv = ["packmime", *words, sys.argv[1]]
 from sequencer.cli import main
 main()
 """
