@@ -126,6 +126,28 @@ def test_short_dip_below_cut_off_does_not_end_the_charge() -> None:
     assert bench.charger.state == "charging"
 
 
+def test_filter_time_runs_on_while_other_things_move() -> None:
+    """The supply moves every 0.3 s, always above the threshold: the step still comes 1 s after it was reached."""
+    bench = charging(STEPPED, volts=20.15)
+    for step in range(4):
+        put(bench, 20.15 + step / 1000)
+        bench.advance_to(1.5 + 0.3 * (step + 1) - (0.2 + 1e-6) * (step == 3))
+    assert (bench.now_s, bench.charger.stage) == (pytest.approx(2.5), 0)
+    bench.advance_to(2.5 + 1e-6)
+    assert bench.charger.stage == 1
+
+
+def test_new_start_begins_with_the_first_stage() -> None:
+    bench = charging(STEPPED, volts=20.15)
+    bench.advance_to(3.0)
+    assert bench.charger.stage == 1
+    bench.set_mains(False)
+    put(bench, 18.0)
+    bench.set_mains(True)
+    bench.advance_to(5.0)
+    assert amperes(bench) == pytest.approx(3.0)
+
+
 def test_step_down_lowers_the_voltage_by_the_drop_and_is_done_once() -> None:
     """At 20.15 V the contacts stand at 20.15 V + 3 A x 0.12 Ω = 20.51 V; after the step at 20.33 V; computed."""
     bench = charging(STEPPED, volts=20.15)
