@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import json
-import random
 from collections.abc import Callable
 from pathlib import Path
 
@@ -134,7 +133,7 @@ READINGS = {
 }
 
 
-def scanned(make: Make, ask: Ask, seed: int, shuffle: random.Random | None) -> list[dict[str, str]]:
+def scanned(make: Make, ask: Ask, seed: int, turn: int) -> list[dict[str, str]]:
     world = make(seed=seed)
     ask(world, "node_supply", "VOLT 20.5;:CURR 10;:OUTP ON")
     ask(world, "node_load", "CURR 4;:INP ON")
@@ -142,21 +141,19 @@ def scanned(make: Make, ask: Ask, seed: int, shuffle: random.Random | None) -> l
     scans = []
     for _ in range(50):
         world.advance(0.1)
-        names = list(READINGS)
-        if shuffle:
-            shuffle.shuffle(names)
+        names = [*list(READINGS)[turn:], *list(READINGS)[:turn]][:: -1 if turn % 2 else 1]
         scans.append({name: ask(world, name, READINGS[name]) for name in names})
     return scans
 
 
 def test_order_of_the_exchanges_of_a_scan_does_not_matter(virtual_world: Make, ask: Ask) -> None:
-    straight = scanned(virtual_world, ask, 5, None)
-    assert scanned(virtual_world, ask, 5, random.Random(1)) == straight
-    assert scanned(virtual_world, ask, 5, random.Random(2)) == straight
+    straight = scanned(virtual_world, ask, 5, 0)
+    assert scanned(virtual_world, ask, 5, 1) == straight
+    assert scanned(virtual_world, ask, 5, 2) == straight
 
 
 def test_another_seed_is_another_bench(virtual_world: Make, ask: Ask) -> None:
-    one, other = (scanned(virtual_world, ask, seed, None) for seed in (5, 6))
+    one, other = (scanned(virtual_world, ask, seed, 0) for seed in (5, 6))
     assert all(a["meter_node"] != b["meter_node"] for a, b in zip(one, other, strict=True))
 
 
