@@ -123,6 +123,10 @@ class VirtualServer:
             return "its process still runs"
         return f"its process ended with {self._process.returncode}{_last_words(self._process)}"
 
+    def wait(self) -> None:
+        """Return when the process has ended by itself; Ctrl-C ends the waiting, not the process."""
+        self._process.wait()
+
     def close(self) -> None:
         """End the process: its input closes, and if that is not enough it is killed. Closing twice does nothing."""
         if self._clock is not None:
