@@ -13,6 +13,8 @@ from drivers.dialect import CurrentSpan, VoltageSpan
 from sequencer.analysis.uncertainty import Contribution
 from sequencer.engine.methods import range_for
 
+THERMAL_V = 1e-6  # of the leads at the shunt: common practice, no source
+
 
 @dataclass(frozen=True)
 class Accuracy:
@@ -53,7 +55,10 @@ class Accuracy:
             sensitivity=abs(value_A) / path.shunt_ohm,
             source=f"bench file: {path.shunt.text}",
         )
-        return [*meter, shunt]
+        thermal = Contribution.from_half_width(
+            "thermal EMF", THERMAL_V, sensitivity=1.0 / path.shunt_ohm, source="copper joints, common practice, no source"
+        )
+        return [*meter, shunt, thermal]
 
     def readback(self, where: str, value_A: float) -> list[Contribution]:
         """Of the current that a supply or load reads back."""

@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
+from itertools import pairwise
 
 import numpy as np
 
@@ -14,10 +15,16 @@ from sequencer.analysis.estimates import Estimate, mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.evidence import Evidence, Trace, Window
+from sequencer.engine.pace import FAST_s
+from sequencer.engine.stability import turning_points
 
 FEWEST = 5
 AFTER_END_s = 5.0
 LAG_SHARE = 1.0 / 3.0
+STAIRS_s = 30.0  # the last steps of the stand-in before the end
+SWING_V = 0.005  # per cell: the stand-in's own small steps stay far below
+SWINGS = 6  # turns in a row, each within TURN_WITHIN of the one before: a loop, not a charger's few steps
+TURN_WITHIN = 4.0  # times (settling + one fast scan); an unstable loop turns every (2d + 1) scans
 
 
 @dataclass(frozen=True)
@@ -75,6 +82,7 @@ class ChargeStep:
         self._accuracy = Accuracy(evidence.bench, highest_V)
         self._voltage = evidence.trace("charger.voltage")
         self._current = evidence.trace("charger.current")
+        self._swinging = self._swings()
         self.classification, self.reading = self._read()
 
     def _read(self) -> tuple[Classification, ChargeReading]:
@@ -103,17 +111,39 @@ class ChargeStep:
         found["charge.current_after_end"] = self._after_end()
         return found
 
+    def _swings(self) -> str | None:
+        """Why nothing about voltage, end and shape can be told where the stand-in's loop has swung; None elsewhere.
+
+        A charger that pulses as fast as the bench settles cannot be told from such a loop, and gets the same words.
+        """
+        moves = self._evidence.trace("set.supply.voltage").within(self._window.start_s, self._window.end_s)
+        turns_s = turning_points(moves.time_s.tolist(), moves.value.tolist(), SWING_V * self._cells)
+        standin = self._evidence.manifest.get("standin") or {}
+        most_s = TURN_WITHIN * (standin.get("settling_s", 0.0) + FAST_s)
+        close = [0.0 <= later - earlier <= most_s for earlier, later in pairwise(turns_s)]
+        for first in range(len(close) - SWINGS + 2):
+            if all(close[first : first + SWINGS - 1]):
+                return f"stand-in and charger swung against each other, from {turns_s[first]:.1f} s on"
+        return None
+
     # class and states
 
     def _algorithm(self) -> Found:
         shown, window = self.classification, self._window
         start_s = shown.stages[0].start_s if shown.stages else window.start_s
         return Found(
-            seen=shown.algorithm, probability=shown.confidence, start_s=start_s, end_s=window.end_s, words=shown.why
+            seen=shown.algorithm,
+            probability=shown.confidence,
+            start_s=start_s,
+            end_s=window.end_s,
+            words=shown.why,
+            trouble=self._swinging,
         )
 
     def _ends(self) -> Found:
         reading = self.reading
+        if self._swinging is not None:
+            return Found(trouble=self._swinging)
         if reading.ended:
             words = f"the current fell from {self._shown_cutoff()} to nothing at {reading.ended_s:.1f} s"
             return Found(seen="ends", start_s=reading.ended_s, end_s=self._window.end_s, words=words)
@@ -134,8 +164,8 @@ class ChargeStep:
             return Found(trouble=f"only {estimate.n} readings on the plateau")
         return self._current_found(estimate, [])
 
-    def _current_found(self, estimate: Estimate, more: list[Contribution]) -> Found:
-        trouble = self._disagreement(estimate.start_s, estimate.end_s)
+    def _current_found(self, estimate: Estimate, more: list[Contribution], trouble: str | None = None) -> Found:
+        trouble = trouble or self._disagreement(estimate.start_s, estimate.end_s)
         lines = [*self._readings(estimate), *self._accuracy.current(estimate.value), *more]
         return _found(Budget(estimate.value, "A", tuple(lines)), estimate, trouble)
 
@@ -175,19 +205,28 @@ class ChargeStep:
             estimate = reading.cutoff_A
             bracket_A = reading.cutoff_bracket_A or 0.0
             # The charger decided between the last reading and the next: half of the fall there, rectangular.
-            middle = Estimate(
-                estimate.value - bracket_A / 2, estimate.s, estimate.n, estimate.n_eff, estimate.start_s, estimate.end_s
-            )
+            middle = replace(estimate, value=estimate.value - bracket_A / 2)
             bracket = Contribution.from_half_width(
                 "bracket", bracket_A / 2, "rectangular", source="spacing of the readings"
             )
-            return self._current_found(middle, [bracket])
+            return self._current_found(middle, [bracket, self._stairs(estimate.end_s)], self._swinging)
         if reading.last_current_A is None:
             return Found(trouble="the end was seen, and no trend before it")
         last_A = reading.last_current_A.value
         if limit is not None and limit.low is not None and last_A < limit.low:
-            return self._current_found(reading.last_current_A, [])  # it went on below the lowest that is allowed
+            # It went on below the lowest that is allowed.
+            return self._current_found(reading.last_current_A, [], self._swinging)
         return Found(trouble=f"the charge did not end; the last current was {si(last_A, 'A')}")
+
+    def _stairs(self, until_s: float) -> Contribution:
+        """The node moves in steps, so the current at one moment lies off its trend by up to half of one step."""
+        moves = self._evidence.trace("set.supply.voltage").within(until_s - STAIRS_s, until_s)
+        step_V = float(np.max(np.abs(np.diff(moves.value)), initial=0.0))
+        wiring = self._evidence.bench.bench.wiring.node
+        standin = self._evidence.manifest.get("standin") or {}
+        fixture_ohm = standin.get("Rp_ohm") or wiring.ballast + wiring.current.shunt_ohm
+        source = "largest of the last steps, over Rp"
+        return Contribution.from_half_width("steps of the stand-in", step_V / fixture_ohm / 2, source=source)
 
     def _after_end(self) -> Found:
         if not self.reading.ended or self.reading.ended_s is None:
@@ -222,12 +261,13 @@ class ChargeStep:
         if plateau.threshold_V is None:
             return Found(none=f"stage {number} did not end by a step")
         estimate = plateau.threshold_V
-        trouble = self._lag() or self._condition_lost(estimate.start_s, estimate.end_s)
-        half_V = (plateau.threshold_bracket_V or 0.0) / self._cells / 2
+        trouble = self._swinging or self._lag() or self._condition_lost(estimate.start_s, estimate.end_s)
+        # The node rises once more between the last reading and the end of the stage: half of it there, rectangular.
+        half_V = (plateau.threshold_bracket_V or 0.0) / 2
         bracket = Contribution.from_half_width(
-            "ramp between readings", half_V, "rectangular", source="spacing of the readings"
+            "ramp between readings", half_V, sensitivity=1.0 / self._cells, source="spacing of the readings"
         )
-        return self._per_cell(estimate, [bracket], trouble)
+        return self._per_cell(replace(estimate, value=estimate.value + half_V), [bracket], trouble)
 
     def _lag(self) -> str | None:
         stand_in = self._evidence.manifest.get("standin") or {}
@@ -242,11 +282,13 @@ class ChargeStep:
             return Found(none="no constant-voltage phase was seen")
         if estimate.n < 2 * FEWEST:
             return Found(trouble=f"only {estimate.n} readings at constant voltage")
-        return self._per_cell(estimate, [], self._condition_lost(estimate.start_s, estimate.end_s))
+        trouble = self._swinging or self._condition_lost(estimate.start_s, estimate.end_s)
+        return self._per_cell(estimate, [], trouble)
 
     def _end_voltage(self) -> Found:
         estimate = self.reading.end_voltage_V
-        found = self._per_cell(estimate, [], self._condition_lost(estimate.start_s, estimate.end_s))
+        trouble = self._swinging or self._condition_lost(estimate.start_s, estimate.end_s)
+        found = self._per_cell(estimate, [], trouble)
         peak_V = self.reading.peak_V / self._cells
         return _with_words(found, f"largest single reading {peak_V:.4f} V per cell")
 
@@ -256,7 +298,7 @@ def _found(budget: Budget, estimate: Estimate, trouble: str | None) -> Found:
 
 
 def _with_words(found: Found, words: str) -> Found:
-    return Found(**{**found.__dict__, "words": words})
+    return replace(found, words=words)
 
 
 def last_readings(trace: Trace, until_s: float, span_s: float = 2.0) -> Estimate | None:

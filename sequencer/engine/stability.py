@@ -10,6 +10,7 @@ inside the unit circle (Jury / Schur-Cohn; the marginal case below by substituti
 from __future__ import annotations
 
 import math
+from collections.abc import Iterable
 
 SAFETY = 0.5  # of the largest stable gain
 
@@ -53,3 +54,26 @@ def gain(ratio: float, delay_scans: int) -> float:
 def delay_scans(settling_s: float, period_s: float) -> int:
     """Whole scans between a reading and the node settled on it: 0 if it has settled by the next scan."""
     return max(0, math.ceil(settling_s / period_s - 1e-9) - 1)
+
+
+def turning_points(times_s: Iterable[float], levels: Iterable[float], least: float) -> list[float]:
+    """When a series turned round, s: the extremes between swings of more than `least`; the first swing has none.
+
+    times_s, levels : (n,), in time order. A loop that has lost its stability turns again and again.
+    """
+    found: list[float] = []
+    low = high = math.nan
+    low_s = high_s = 0.0
+    rising: bool | None = None
+    for time_s, level in zip(times_s, levels, strict=True):
+        if not level <= high:  # also the very first, as high is not a number yet
+            high, high_s = level, time_s
+        if not level >= low:
+            low, low_s = level, time_s
+        if rising is not False and high - level > least:  # has come down far enough from its highest
+            found += [high_s] if rising else []
+            rising, low, low_s, high, high_s = False, level, time_s, level, time_s
+        elif rising is not True and level - low > least:
+            found += [low_s] if rising is False else []
+            rising, low, low_s, high, high_s = True, level, time_s, level, time_s
+    return found
