@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import itertools
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -107,20 +108,13 @@ def _slope(trace: Trace, start: int, stop: int, level_A: float) -> Phase:
 
 
 def _with_float(trace: Trace, group: list[Segment], held: Held) -> list[Phase]:
-    """The held voltage, and the float where its last piece is a low plateau that the current fell to at once."""
-    tail = group[-1]
-    plain = Phase("cv", held.start, held.stop, _first_current(trace, held), held.fall, held.levels)
-    if len(group) < 2 or tail.kind != "flat" or held.levels or tail.level_A > FLOAT_SHARE * trace.scale_A:
-        return [plain]
-    end = group[-2].stop
-    before = float(trace.current_A[end - 1])
-    if tail.level_A > FLOAT_DROP * before:
-        return [plain]
-    return [replace(plain, stop=end), Phase("float", tail.start, tail.stop, tail.level_A)]
-
-
-def _first_current(trace: Trace, held: Held) -> float:
-    return float(trace.current_A[held.start])
+    """The held voltage, and the float where it ends in a low plateau that the current fell to at once."""
+    plain = Phase("cv", held.start, held.stop, float(trace.current_A[held.start]), held.fall, held.levels)
+    for before, tail in itertools.pairwise(group if not held.levels else []):
+        low = tail.kind == "flat" and tail.level_A <= FLOAT_SHARE * trace.scale_A
+        if low and tail.level_A <= FLOAT_DROP * float(trace.current_A[before.stop - 1]):
+            return [replace(plain, stop=before.stop), Phase("float", tail.start, held.stop, tail.level_A)]
+    return [plain]
 
 
 def _merged(trace: Trace, phases: list[Phase]) -> list[Phase]:
@@ -168,6 +162,13 @@ def _foldback_marked(phases: list[Phase]) -> list[Phase]:
     """Plateaus that the current slid to, rather than stepped to, are no stages of the algorithm."""
     marked: list[Phase] = []
     for phase in phases:
-        slid = phase.kind == "cc" and bool(marked) and marked[-1].kind in ("taper", "constant-power")
-        marked.append(replace(phase, after_foldback=True) if slid and phase.level_A < marked[-1].level_A else phase)
+        slid = phase.kind == "cc" and bool(marked) and _slides_into(marked[-1], phase)
+        marked.append(replace(phase, after_foldback=True) if slid else phase)
     return marked
+
+
+def _slides_into(before: Phase, after: Phase) -> bool:
+    if before.kind in ("taper", "constant-power"):
+        return after.level_A < before.level_A
+    small = before.level_A * (1.0 - SMALL_STEP) <= after.level_A < before.level_A
+    return before.after_foldback and small

@@ -17,6 +17,7 @@ from sequencer.analysis.trace import Trace
 
 VOLTAGE_SHARE = 0.003
 POWER_SHARE = 0.015
+LADDER_SHARE = 0.01
 LEAST_FALL = 0.05  # of the current before: less shows a knee, not what is held after it
 LADDER_LEVELS = 6  # so many levels in small steps at a held voltage are one regulation in digital steps
 LADDER_STEP = 0.12  # of the first level
@@ -35,14 +36,22 @@ class Held:
     levels: int
 
 
-def tolerance_V(trace: Trace, voltage_V: float) -> float:
+def tolerance_V(trace: Trace, voltage_V: float, share: float = VOLTAGE_SHARE) -> float:
     """How far from a held voltage a sample may lie."""
-    return max(VOLTAGE_SHARE * abs(voltage_V), 3.0 * trace.noise_V)
+    return max(share * abs(voltage_V), 3.0 * trace.noise_V)
 
 
 def held_voltage(trace: Trace, segments: list[Segment], last: int) -> tuple[int, Held] | None:
     """The constant-voltage phase that ends with segment `last`, and the index of its first segment; None if none."""
-    first, start = _reach_back(trace, segments, last)
+    found = _held_within(trace, segments, last, VOLTAGE_SHARE)
+    if found is not None and (found[1].levels == 0 or found[0] <= 1):
+        return found
+    coarse = _held_within(trace, segments, last, LADDER_SHARE)  # digital steps have a sawtooth of their own
+    return coarse if coarse is not None and coarse[1].levels else found
+
+
+def _held_within(trace: Trace, segments: list[Segment], last: int, share: float) -> tuple[int, Held] | None:
+    first, start = _reach_back(trace, segments, last, share)
     if start >= segments[last].stop:
         return None
     while first < last and segments[first].kind == "flat" and (
@@ -75,11 +84,11 @@ def holds_power(trace: Trace, start: int, stop: int) -> bool:
     return spread <= POWER_SHARE * middle and fall > 2.0 * POWER_SHARE
 
 
-def _reach_back(trace: Trace, segments: list[Segment], last: int) -> tuple[int, int]:
+def _reach_back(trace: Trace, segments: list[Segment], last: int, share: float) -> tuple[int, int]:
     """First segment and sample from which the voltage stays where it is in segment `last`."""
     tail = segments[last]
     voltage = float(np.median(trace.voltage_V[max(tail.start, tail.stop - max(3, tail.size // 10)) : tail.stop]))
-    allowed = tolerance_V(trace, voltage)
+    allowed = tolerance_V(trace, voltage, share)
     first, start = last, _held_from(trace, tail, voltage, allowed)
     while start == segments[first].start and first > 0 and _continues(segments[first - 1], segments[first]):
         onset = _held_from(trace, segments[first - 1], voltage, allowed)

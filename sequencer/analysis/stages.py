@@ -12,7 +12,7 @@ import numpy.typing as npt
 from sequencer.analysis.estimates import mean_estimate
 from sequencer.analysis.phases import FLOAT_SHARE, Kind, Phase, phases_of_run, same_level
 from sequencer.analysis.pulses import PulseTrain, pulse_train
-from sequencer.analysis.regulation import tolerance_V
+from sequencer.analysis.regulation import STILL_SHARE, tolerance_V
 from sequencer.analysis.segments import active_runs
 from sequencer.analysis.trace import Trace
 
@@ -132,7 +132,8 @@ def _floats(trace: Trace, phases: list[Phase]) -> list[Phase]:
         if phase.kind not in ("cc", "float") or phase.level_A > FLOAT_SHARE * trace.scale_A:
             break
         rise = float(trace.voltage_V[phase.stop - 1] - trace.voltage_V[phase.start])
-        if marked[index - 1].kind == "cv" or rise <= tolerance_V(trace, float(trace.voltage_V[phase.start])):
+        steady = max(STILL_SHARE * float(trace.voltage_V[phase.start]), 4.0 * trace.noise_V)
+        if marked[index - 1].kind == "cv" or rise <= steady:
             marked[index] = replace(phase, kind="float")
     return marked
 

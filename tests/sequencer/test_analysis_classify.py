@@ -35,7 +35,7 @@ def read(case: dict[str, Any]) -> np.ndarray:
 
 @pytest.mark.parametrize("case", cases())
 def test_published_logs(case: dict[str, Any]) -> None:
-    """Labels as listed; currents within 1 %, limits within 10 mV, cut-off within 5 % or 1 mA (the data's own README)."""
+    """Labels as listed; currents within 1 %, limits within 10 mV, cut-off within 5 % or 1 mA (the data's README)."""
     found = classify(*read(case))
     stated = case["stated"]
     assert found.algorithm == case["algorithm"], found.why
