@@ -16,6 +16,7 @@ Array = npt.NDArray[np.float64]
 ENDED_SHARE = 0.05  # of the first plateau: below, and for good, the charge has ended
 AT_ONCE = 0.5  # of the current before: a fall by more within two samples is an end, not a taper
 LEAST_SHARE = 0.005  # of the first plateau: below, a current is not told from none
+TREND_SAMPLES = 10
 FIT_SPAN = 1.35  # the trend is read from samples up to this many times the last current
 FIT_LEAST, FIT_MOST = 8, 400
 
@@ -35,8 +36,8 @@ class Trend:
 def end_of_charge(current_A: Array, plateau_A: float) -> int | None:
     """Index of the last sample before the charge ended by itself; None where it did not.
 
-    The current falls to less than half of itself within two samples, is then below 5 % of the first plateau and stays
-    there up to the last sample given (single glitches aside).
+    The current falls to less than half of itself within two samples, by three times more than its trend would have it,
+    is then below 5 % of the first plateau and stays there up to the last sample given (single glitches aside).
     plateau_A : > 0, first plateau.
     """
     if current_A.size < 4:
@@ -44,10 +45,18 @@ def end_of_charge(current_A: Array, plateau_A: float) -> int | None:
     smooth = despiked(current_A)
     highest_later = np.maximum.accumulate(smooth[::-1])[::-1]
     low = (highest_later[2:] < ENDED_SHARE * plateau_A) & (current_A[2:] < AT_ONCE * current_A[:-2])
-    found = np.flatnonzero(low & (current_A[:-2] > max(LEAST_SHARE * plateau_A, 6.0 * _background(current_A))))
+    low &= current_A[:-2] > max(LEAST_SHARE * plateau_A, 6.0 * _background(current_A))
+    found = np.flatnonzero(low & (current_A[:-2] - current_A[2:] > 3.0 * _usual_fall(smooth)[:-2]))
     if found.size == 0:
         return None
     return _last_full(current_A, int(found[0]), plateau_A)
+
+
+def _usual_fall(smooth_A: Array) -> Array:
+    """Fall over two samples by the trend of the ten samples before each one, (n,); fewer at the start."""
+    index = np.arange(smooth_A.size)
+    back = np.maximum(0, index - TREND_SAMPLES)
+    return 2.0 * np.maximum(0.0, smooth_A[back] - smooth_A) / np.maximum(1, index - back)
 
 
 def _background(current_A: Array) -> float:
@@ -75,7 +84,7 @@ def trend_at(time_s: Array, current_A: Array, last: int, *, earliest: int = 0) -
     if times.size < 3 or float(times[0]) == float(times[-1]):
         raise ValueError(f"last, earliest: {times.size} samples up to sample {last} show no trend, 3 are needed")
     window = (float(time_s[first]), float(time_s[last]))
-    if float(np.min(currents)) > 0.3 * float(np.max(currents)):
+    if float(np.min(currents)) > 0.1 * float(np.max(currents)):
         value, slope, s, u = _line(times, np.log(currents))
         level = math.exp(value)
         return Trend(_estimate(level, level * s, level * u, times.size, window), -level * slope)
