@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from datetime import date
 from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field
@@ -27,7 +28,11 @@ class _Part(BaseModel):
 
 
 def _iso_date(value: str) -> str:
-    if not re.fullmatch(r"\d{4}-\d{2}-\d{2}", value):
+    try:
+        real = re.fullmatch(r"\d{4}-\d{2}-\d{2}", value, re.ASCII) and date.fromisoformat(value)
+    except ValueError:
+        real = None
+    if not real:
         raise refuse(f'"{value}" is not a date; expected such as "2027-03-01"')
     return value
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -10,7 +11,7 @@ from drivers.dialect import Dialect
 from drivers.shipped import locate
 from drivers.text.binding import Bound, bind
 from drivers.text.document import read
-from drivers.text.faults import BadInput, Faults
+from drivers.text.faults import BadInput, Faults, Place
 from drivers.text.nearest import unknown
 
 DIALECTS = Path(__file__).parent / "dialects"
@@ -81,12 +82,33 @@ def _check_wiring(bound: Bound[Bench], faults: Faults) -> None:
 
 def _check_addresses(bound: Bound[Bench], faults: Faults) -> None:
     bench = bound.model
+    seen: dict[str, str] = {}
     for name, part in bench.instruments.items():
         place = bound.place("instruments", name, "address")
+        if bench.virtual is None and part.address != "virtual":
+            _check_address(part.address, place, faults)
+            first = seen.setdefault(_canonical(part.address), name)
+            if first != name:
+                faults.add(place, f"'{first}' has this address already; one instrument cannot play two roles")
         if bench.virtual is None and part.address == "virtual":
             faults.add(place, "the address 'virtual' needs a bench with a 'virtual' section")
         if bench.virtual is not None and part.address != "virtual":
             faults.add(place, "a bench with a 'virtual' section drives no hardware: the address must be 'virtual'")
+
+
+def _canonical(address: str) -> str:
+    """The same for addresses that VISA takes for the same: letters of either case, interface 0 left out."""
+    return re.sub(r"^([A-Z]+)0*(?=::)", r"\1", address.strip().upper())
+
+
+def _check_address(address: str, place: Place, faults: Faults) -> None:
+    """Only what no VISA library can mean is refused; the rest shows when the link is opened."""
+    parts = address.split("::")
+    if len(parts) < 2 or not all(part.strip() for part in parts):
+        expected = 'such as "TCPIP::192.0.2.11::5025::SOCKET"'
+        faults.add(place, f'"{address}" is not a VISA resource name; expected {expected}')
+    elif parts[-1].upper() == "SOCKET" and not (len(parts) == 4 and parts[2].isdecimal() and 0 < int(parts[2]) < 65536):
+        faults.add(place, f'"{address}": expected a host and a port from 1 to 65535 before ::SOCKET')
 
 
 def _check_roles(bench_file: BenchFile, faults: Faults) -> None:

@@ -8,21 +8,28 @@ from __future__ import annotations
 import queue
 import threading
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Protocol
 
-from drivers.clock import Clock
+from drivers.clock import Clock, wall_seconds
 from drivers.session import Session
 from drivers.trouble import BenchFault, LinkFault, ReplyFault
+
+CLOSE_PATIENCE_s = 1.0
 
 
 @dataclass(frozen=True, slots=True)
 class Job:
-    """Messages for one instrument, sent in order; `fields` is how many values all answers together hold."""
+    """Messages for one instrument, sent in order; `fields` is how many values all answers together hold.
+
+    `reopen`: a link that is closed is opened anew first, and who answers is proven (one try); without it the job
+    of a closed link only says why it is closed. A job without messages just does that.
+    """
 
     instrument: str
     messages: tuple[str, ...]
     fields: int
+    reopen: bool = False
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,6 +69,8 @@ def split_fields(text: str) -> tuple[str, ...]:
 def perform(session: Session, job: Job, clock: Clock) -> Reply:
     """Do one job now."""
     try:
+        if job.reopen and not session.is_open:
+            session.reopen()
         fields: tuple[str, ...] = ()
         for message in job.messages:
             if "?" in message:
@@ -72,6 +81,8 @@ def perform(session: Session, job: Job, clock: Clock) -> Reply:
             told = f"{job.fields} values were expected to '{'; '.join(job.messages)}', {len(fields)} came: {fields}"
             raise ReplyFault(job.instrument, told)
     except BenchFault as fault:
+        if isinstance(fault, ReplyFault):
+            session.distrust(fault)
         return Reply(job.instrument, (), clock.now(), fault)
     return Reply(job.instrument, fields, clock.now())
 
@@ -98,77 +109,100 @@ class _Round:
     """The jobs of one exchange for one instrument, and what has come back so far."""
 
     jobs: list[Job]
-    replies: list[Reply]
-    done: threading.Event
+    replies: list[Reply] = field(default_factory=list)
+    begun: bool = False
+    abandoned: bool = False  # nobody waits any more: what has not begun must not be done late
+    done: threading.Event = field(default_factory=threading.Event)
+    bug: Exception | None = None
 
 
 class _Worker:
-    """One thread that serves one instrument; abandoned with its socket when it hangs."""
+    """One thread that serves one instrument, round after round; abandoned with its socket when it hangs.
+
+    Rounds stand in line: a second question never goes out before the first is answered or has failed.
+    """
 
     def __init__(self, session: Session, clock: Clock) -> None:
-        self.session = session
-        self.latest: _Round | None = None
+        self._session = session
+        self._latest: _Round | None = None
         self._rounds: queue.SimpleQueue[_Round | None] = queue.SimpleQueue()
         self._clock = clock
-        threading.Thread(target=self._serve, name=f"link-{session.name}", daemon=True).start()
-
-    @property
-    def owes(self) -> bool:
-        """Whether an earlier round is still unanswered."""
-        return self.latest is not None and not self.latest.done.is_set()
+        self.thread = threading.Thread(target=self._serve, name=f"link-{session.name}", daemon=True)
+        self.thread.start()
 
     def _serve(self) -> None:
         while (round_ := self._rounds.get()) is not None:
-            for job in round_.jobs:
-                round_.replies.append(perform(self.session, job, self._clock))
+            try:
+                self._do(round_)
+            except Exception as bug:  # ours; the thread lives on, for the safe state needs it
+                round_.bug = bug
             round_.done.set()
+        self._session.close()
+
+    def _do(self, round_: _Round) -> None:
+        for job in round_.jobs:
+            if round_.abandoned:
+                return
+            round_.begun = True
+            round_.replies.append(perform(self._session, job, self._clock))
 
     def give(self, jobs: list[Job]) -> _Round:
-        self.latest = _Round(jobs, [], threading.Event())
-        self._rounds.put(self.latest)
-        return self.latest
+        self._latest = _Round(jobs)
+        self._rounds.put(self._latest)
+        return self._latest
 
     def stop(self) -> None:
+        """Let the thread end once it has finished what it is at; it closes its link itself."""
+        if self._latest is not None:
+            self._latest.abandoned = True
         self._rounds.put(None)
-        if not self.owes:
-            self.session.close()
 
 
 class Workers:
-    """Jobs side by side, one thread an instrument: for wall time."""
+    """Jobs side by side, one thread an instrument: for wall time. A call lasts `wait_s` at most.
+
+    An instrument that is still at an earlier round when `wait_s` is over "still owes an answer": its new jobs are
+    dropped, never done late. A late answer is dropped too; it cannot pass as the answer to a later question.
+    """
 
     def __init__(self, sessions: Mapping[str, Session], clock: Clock) -> None:
         self._workers = {name: _Worker(session, clock) for name, session in sessions.items()}
         self._clock = clock
+        self._closed = False
         self.count = 0
 
     def __call__(self, jobs: Sequence[Job], wait_s: float) -> list[Reply]:
         self.count += len(jobs)
-        deadline = self._clock.now() + wait_s
+        deadline_s = self._clock.now() + wait_s
         by_instrument: dict[str, list[Job]] = {}
         for job in jobs:
             by_instrument.setdefault(job.instrument, []).append(job)
-        rounds = {name: self._begin(name, mine) for name, mine in by_instrument.items()}
-        replies = {
-            name: iter(self._end(name, round_, by_instrument[name], deadline)) for name, round_ in rounds.items()
-        }
+        if self._closed:
+            return [self._late(job.instrument, "the link is closed (the bench was closed)") for job in jobs]
+        rounds = {name: self._workers[name].give(mine) for name, mine in by_instrument.items()}
+        replies = {name: iter(self._end(name, round_, deadline_s)) for name, round_ in rounds.items()}
         return [next(replies[job.instrument]) for job in jobs]
 
-    def _begin(self, name: str, jobs: list[Job]) -> _Round | None:
-        worker = self._workers[name]
-        # A second question to an instrument that still owes an answer would mix the two up.
-        return None if worker.owes else worker.give(jobs)
-
-    def _end(self, name: str, round_: _Round | None, jobs: list[Job], deadline: float) -> list[Reply]:
-        if round_ is None:
-            return [self._late(name, "still owes an answer")] * len(jobs)
-        if not round_.done.wait(max(0.0, deadline - self._clock.now())):
-            return [self._late(name, "no answer in time")] * len(jobs)
-        return round_.replies
+    def _end(self, name: str, round_: _Round, deadline_s: float) -> list[Reply]:
+        """What came back of a round by the deadline, one reply a job. Raises a bug of ours that a worker met."""
+        in_time = round_.done.wait(max(0.0, deadline_s - self._clock.now()))
+        if round_.bug is not None:
+            raise round_.bug
+        if in_time:
+            return round_.replies
+        round_.abandoned = True
+        came = list(round_.replies)
+        what = "no answer in time" if round_.begun else "still owes an answer"
+        return came + [self._late(name, what)] * (len(round_.jobs) - len(came))
 
     def _late(self, name: str, what: str) -> Reply:
         return Reply(name, (), self._clock.now(), LinkFault(name, what))
 
     def close(self) -> None:
+        """End all threads and close their links; one that hangs is left behind after CLOSE_PATIENCE_s."""
+        self._closed = True
         for worker in self._workers.values():
             worker.stop()
+        until_s = wall_seconds() + CLOSE_PATIENCE_s
+        for worker in self._workers.values():
+            worker.thread.join(max(0.0, until_s - wall_seconds()))

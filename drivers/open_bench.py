@@ -8,10 +8,15 @@ from dataclasses import dataclass, field
 from drivers.bench_file import BenchFile
 from drivers.clock import Clock
 from drivers.dialect import Dialect
-from drivers.exchange import Exchange, Inline, Workers
+from drivers.exchange import Exchange, Inline, Job, Workers
 from drivers.roles import Hands, Load, MainsSwitch, Meter, Speaker, Supply
 from drivers.session import Library, Session
-from drivers.trouble import BenchFault, InstrumentFault
+from drivers.trouble import BenchFault, LinkFault
+
+OPEN_TRIES = 3
+OPEN_PAUSE_s = 0.3
+LAST_TRY_s = 4.0  # no further try begins later: whoever does not answer is named within 10 s
+OPEN_PATIENCE_s = 5.0
 
 
 @dataclass(frozen=True)
@@ -43,6 +48,7 @@ class OpenBench:
     clock: Clock
     access: Access
     identities: dict[str, str] = field(default_factory=dict)
+    lost: dict[str, BenchFault] = field(default_factory=dict)  # what could not be opened, by instrument
 
     @property
     def speakers(self) -> tuple[Speaker, ...]:
@@ -57,27 +63,46 @@ class OpenBench:
 
 
 def open_bench(file: BenchFile, access: Access) -> OpenBench:
-    """Open every link and verify who answers. Raises BenchFault naming the instrument; nothing is left open then."""
+    """Open every link and verify who answers. Raises BenchFault naming the instruments; nothing is left open then."""
+    bench = open_what_answers(file, access)
+    if bench.lost:
+        bench.close()
+        first, *others = bench.lost.values()
+        raise type(first)(first.instrument, "; also ".join([first.what, *map(str, others)]))
+    return bench
+
+
+def open_what_answers(file: BenchFile, access: Access) -> OpenBench:
+    """Open every link that can be opened, all side by side in wall time; the others stand in `lost` with their fault.
+
+    For the way to the safe state, to which one dead meter is no obstacle. Nobody but the one expected is spoken to.
+    """
+    serials = {name: file.bench.instruments[name].serial for _, name in file.bench.wired()}
     sessions = {
-        name: Session(name, access.addresses[name], file.dialect(name), access.library)
-        for _, name in file.bench.wired()
+        name: Session(name, access.addresses[name], file.dialect(name), access.library, serial)
+        for name, serial in serials.items()
     }
-    try:
-        for session in sessions.values():
-            session.open()
-    except BenchFault:
-        for session in sessions.values():
-            session.close()
-        raise
     exchange: Exchange = (Inline if access.clock.virtual else Workers)(sessions, access.clock)
     patience_s = max(file.dialect(name).timeout for name in sessions) + 0.5
     bench = _with_roles(file, exchange, Hands(exchange, patience_s), access)
-    try:
-        _identify(bench)
-    except BenchFault:
-        bench.close()
-        raise
+    _open_links(bench, list(sessions))
+    bench.identities.update({name: one.identity for name, one in sessions.items() if one.identity is not None})
     return bench
+
+
+def _open_links(bench: OpenBench, names: list[str]) -> None:
+    """OPEN_TRIES for each link, for one-client instruments need a moment after another client, such as the probe."""
+    begun_s = bench.clock.now()
+    for _ in range(OPEN_TRIES):
+        replies = bench.exchange([Job(name, (), 0, reopen=True) for name in names], OPEN_PATIENCE_s)
+        for reply in replies:
+            bench.lost.pop(reply.instrument, None)
+            if reply.fault is not None:
+                bench.lost[reply.instrument] = reply.fault
+        names = [name for name, fault in bench.lost.items() if isinstance(fault, LinkFault)]
+        if not names or bench.clock.now() - begun_s > LAST_TRY_s:
+            return
+        bench.clock.wait_until(bench.clock.now() + OPEN_PAUSE_s)
 
 
 def _with_roles(file: BenchFile, exchange: Exchange, hands: Hands, access: Access) -> OpenBench:
@@ -98,12 +123,3 @@ def _with_roles(file: BenchFile, exchange: Exchange, hands: Hands, access: Acces
         clock=access.clock,
         access=access,
     )
-
-
-def _identify(bench: OpenBench) -> None:
-    for speaker in bench.speakers:
-        identity = bench.hands.identity(speaker)
-        serial = bench.file.bench.instruments[speaker.name].serial
-        if serial is not None and serial not in identity:
-            raise InstrumentFault(speaker.name, f"answers as '{identity}'; serial {serial} was expected there")
-        bench.identities[speaker.name] = identity

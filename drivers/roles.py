@@ -6,6 +6,7 @@ A role makes jobs and reads replies. It holds no link and no time: `Hands` carri
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Sequence
 from dataclasses import dataclass
 from enum import IntEnum
@@ -16,6 +17,13 @@ from drivers.trouble import InstrumentFault, ReplyFault
 
 OVERLOAD = 9.0e37  # SCPI-1999 vol. 1, 7.2.1.4-5: 9.9E37 is infinity, 9.91E37 not a number
 BACK_TOLERANCE = 2e-3  # of the value set: the resolution of common programming DACs, common practice, no source
+BACK_FLOOR = 0.5e-3  # and half a step of 1 mV or 1 mA, for values near zero; common practice, no source
+# IEEE 488.2, 8.7.2 to 8.7.4: NR1, NR2, NR3; blanks around them, and words for what is no number, are seen in the field
+_NUMERIC = re.compile(
+    r"\s*[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?\s*|\s*[+-]?(?:nan|inf|infinity)\s*", re.ASCII | re.I
+)
+_SWITCHED = frozenset({"output", "input"})  # fields of a reading that are on or off
+_BOOLEAN = {"ON": "1", "OFF": "0"}  # SCPI-1999 vol. 1, 7.3: answered as 1 or 0; some instruments answer the words
 
 
 class SupplyMode(IntEnum):
@@ -33,10 +41,9 @@ class LoadMode(IntEnum):
 
 def number(instrument: str, text: str) -> float:
     """One value of an answer; nan where the instrument says overload or not a number. Raises ReplyFault."""
-    try:
-        value = float(text)
-    except ValueError as reason:
-        raise ReplyFault(instrument, f"'{text}' was answered where a number was expected") from reason
+    if not _NUMERIC.fullmatch(text):
+        raise ReplyFault(instrument, f"'{text}' was answered where a number was expected")
+    value = float(text)
     return value if math.isfinite(value) and abs(value) < OVERLOAD else math.nan
 
 
@@ -48,8 +55,14 @@ class Speaker:
     dialect: Dialect
 
     def setting(self, what: str, value: float | None = None) -> Job:
-        """A setting, its readback where the dialect has one, and the error queue, as few messages as can be."""
+        """A setting, its readback where the dialect has one, and the error queue, as few messages as can be.
+
+        Raises ValueError for a value that is missing, not wanted or not finite: none of them may reach an instrument.
+        """
         setting = self.dialect.settings[what]
+        if (value is not None) is not setting.takes_value or not math.isfinite(value or 0.0):
+            wanted = "a finite value" if setting.takes_value else "no value"
+            raise ValueError(f"{self.name}: '{what}' takes {wanted}, {value} was given")
         send = setting.send if value is None else setting.send.format(value=value)
         parts = [part for part in (send, setting.back, self.dialect.confirm) if part]
         messages = (self.dialect.joint.join(parts),) if self.dialect.compound else tuple(parts)
@@ -71,9 +84,10 @@ class Speaker:
     def _verify_back(self, back: str, what: str, value: float | None) -> None:
         expected = self.dialect.settings[what].expect
         if expected:
-            good = back.strip().upper() in {word.upper() for word in expected}
+            good = back.strip().strip('"').upper() in {word.upper() for word in expected}
         else:
-            good = value is None or abs(number(self.name, back) - value) <= max(BACK_TOLERANCE * abs(value), 1e-6)
+            assert value is not None
+            good = abs(number(self.name, back) - value) <= max(BACK_TOLERANCE * abs(value), BACK_FLOOR)
         if not good:
             raise InstrumentFault(
                 self.name, f"'{what}' was set to {value if value is not None else expected[0]}, reads back {back}"
@@ -88,7 +102,10 @@ class Speaker:
         if reply.fault is not None:
             raise reply.fault
         names = self.dialect.readings[what].fields
-        return {name: number(self.name, text) for name, text in zip(names, reply.fields, strict=True)}
+        return {name: self._number(name, text) for name, text in zip(names, reply.fields, strict=True)}
+
+    def _number(self, field: str, text: str) -> float:
+        return number(self.name, _BOOLEAN.get(text.strip().upper(), text) if field in _SWITCHED else text)
 
     def state(self, values: dict[str, float], name: str) -> bool:
         """Whether a status named in the dialect is set."""
@@ -176,9 +193,3 @@ class Hands:
 
     def ask(self, job: Job) -> Reply:
         return self.exchange([job], self.patience_s)[0]
-
-    def identity(self, speaker: Speaker) -> str:
-        reply = self.ask(Job(speaker.name, (speaker.dialect.identity,), 1))
-        if reply.fault is not None:
-            raise reply.fault
-        return reply.fields[0]

@@ -4,25 +4,37 @@ Order: 1 mains off. 2 two independent witnesses say that the charger no longer d
 more. 4 if still not, load and supply stay as they are and an alarm is raised. 5 (cell taps: none on this wiring).
 6 supply to zero while the load drains the node, then load off, supply off. 7 (contacts: none on this wiring).
 Only what readback and meter both show is called safe. Safe means de-energised, not isolated.
+
+All witnesses are asked in one exchange, so that any number of silent instruments costs one wait. A lost link is
+opened anew on the way, and who answers is proven before anything is said to it. Every wait has an end.
 """
 
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
-from dataclasses import dataclass, field
+from collections.abc import Callable
+from dataclasses import dataclass, field, replace
+from typing import TypeVar
 
+from drivers.exchange import Reply
 from drivers.open_bench import OpenBench
-from drivers.roles import Deed, LoadMode, SupplyMode
+from drivers.roles import Deed, LoadMode, LoadReading, SupplyMode, SupplyReading
 from drivers.trouble import BenchFault
 
+T = TypeVar("T")
 QUIET_CURRENT_A = 0.050
-PATIENCE_s = 2.0
+PATIENCE_s = 2.0  # for the charging current to go after each try
+QUIET_FOR_s = 0.3  # several looks: a charger may pulse; the whole PATIENCE_s where the mains are not proven off
 DRAIN_A = 0.080
 SAFE_VOLTAGE_V = 2.0
 DRAIN_PATIENCE_s = 10.0
 LOOK_EVERY_s = 0.1
-ALARM = "charger still sources: press the emergency stop, unplug the mains"
+LOOK_PATIENCE_s = 1.0  # a meter that nobody has set up may integrate for 0.4 s
+DEED_PATIENCE_s = 2.0
+LAST_LOOKS = 3
+BY_HAND = "press the emergency stop, unplug the mains"
+ALARM = f"charger still sources: {BY_HAND}"
+ALARM_UNKNOWN = f"nobody can say whether the charger still sources: {BY_HAND}"
 
 
 @dataclass
@@ -36,110 +48,179 @@ class SafeState:
 
 
 @dataclass(frozen=True)
-class _Witnesses:
-    """Charging current as three independent means see it; nan where one cannot say."""
+class Look:
+    """One look at everything; nan and None where an instrument cannot say. Currents out of the charger positive."""
 
     shunt_A: float
     ballast_A: float
-    difference_A: float
+    node_V: float
+    mains_on: bool | None
+    supply: SupplyReading | None
+    load: LoadReading | None
 
     @property
-    def agree_quiet(self) -> bool:
-        """Two of three see less than QUIET_CURRENT_A flowing out of the charger (a drain from the node is allowed)."""
-        seen = (self.shunt_A, self.ballast_A, self.difference_A)
-        return sum(1 for current_A in seen if current_A < QUIET_CURRENT_A) >= 2
+    def difference_A(self) -> float:
+        """The charger's current by a third way: what the load takes less what the supply gives."""
+        if self.supply is None or self.load is None:
+            return math.nan
+        return self.load.current_A - self.supply.current_A
+
+    @property
+    def witnesses_A(self) -> tuple[float, float, float]:
+        return self.shunt_A, self.ballast_A, self.difference_A
+
+    @property
+    def quiet(self) -> bool:
+        """Two of three see less than QUIET_CURRENT_A out of the charger (a drain from the node is allowed)."""
+        return sum(current_A < QUIET_CURRENT_A for current_A in self.witnesses_A) >= 2
+
+    @property
+    def sourcing(self) -> bool:
+        """Whether anyone sees the charger deliver."""
+        return any(current_A >= QUIET_CURRENT_A for current_A in self.witnesses_A)
+
+    @property
+    def low(self) -> bool:
+        return abs(self.node_V) < SAFE_VOLTAGE_V
 
 
 def to_safe_state(bench: OpenBench, alarm: Callable[[str], None] = lambda words: None) -> SafeState:
-    """Walk the order; never raises for an instrument. `alarm` is called once if the charger still sources."""
-    state = SafeState()
-    if not _source_away(bench, state):
+    """Walk the order; never raises for an instrument. `alarm` is called once if a person must act."""
+    walk = _Walk(bench)
+    state = walk.state
+    words = walk.source_away()
+    if words is None:
+        walk.drain()
+        state.verified, words = walk.outputs_off()
+    else:
+        state.words.append(f"NOT SAFE, load and supply left as they are: {words}")
+    if words is not None:
         state.alarm = True
-        state.words.append(f"NOT SAFE, load and supply left as they are: {ALARM}")
-        alarm(ALARM)
-        return state
-    _drain(bench, state)
-    state.verified = _verify(bench, state)
-    state.words.append("safe: de-energised, not isolated" if state.verified else "NOT SAFE: not all outputs proven off")
+        alarm(words)
     return state
 
 
-def _try(state: SafeState, bench: OpenBench, deeds: Sequence[Deed]) -> bool:
-    done = True
-    for deed in deeds:  # one by one: a lost link must not keep the next from being done
-        try:
-            bench.hands.do([deed])
-        except BenchFault as fault:
-            state.troubles.append(str(fault))
-            done = False
-    return done
+class _Walk:
+    """The bench, and what was done and seen on the way."""
 
+    def __init__(self, bench: OpenBench) -> None:
+        self.bench = bench
+        self.state = SafeState()
 
-def _source_away(bench: OpenBench, state: SafeState) -> bool:
-    for attempt in ("mains off", "mains off once more"):
-        _try(state, bench, [Deed(bench.mains, "off")])
-        state.words.append(attempt)
-        until_s = bench.clock.now() + PATIENCE_s
+    def source_away(self) -> str | None:
+        """Steps 1 to 4. Returns what to tell a person if the charger is not proven quiet."""
+        for words in ("mains off", "mains off once more"):
+            until_s = self.bench.clock.now() + PATIENCE_s
+            proven = self._do(Deed(self.bench.mains, "off"))
+            self.state.words.append(words if proven else f"{words}: not confirmed")
+            look, quiet = self._watch(until_s, QUIET_FOR_s if proven else PATIENCE_s)
+            if quiet:
+                self.state.words.append(f"charger quiet: {_seen(look)}")
+                return None
+        self.state.words.append(f"charger not proven quiet: {_seen(look)}")
+        return ALARM if look.sourcing else ALARM_UNKNOWN
+
+    def _watch(self, until_s: float, hold_s: float) -> tuple[Look, bool]:
+        """Look until the charger has been quiet for `hold_s`, or it is not and `until_s` has passed."""
+        clock = self.bench.clock
+        look, since_s = self._look(reopen=True), None
         while True:
-            seen = _witnesses(bench, state)
-            if seen.agree_quiet:
-                state.words.append(f"charger quiet: shunt {seen.shunt_A:.3f} A, ballast {seen.ballast_A:.3f} A")
-                return True
-            if bench.clock.now() >= until_s:
-                break
+            now_s = clock.now()
+            if not look.quiet:
+                since_s = None
+                if now_s >= until_s:
+                    return look, False
+            elif since_s is None:
+                since_s = now_s
+            elif now_s - since_s >= hold_s:
+                return look, True
+            clock.wait_until(now_s + LOOK_EVERY_s)
+            look = self._look()
+
+    def drain(self) -> None:
+        """Step 6, first half: supply to zero while the load keeps a small current, until the node is low by meter."""
+        bench, clock = self.bench, self.bench.clock
+        self._do(Deed(bench.load, "current", DRAIN_A), Deed(bench.supply, "voltage", 0.0))
+        begun_s, look = clock.now(), self._look()
+        until_s, idle = begun_s + DRAIN_PATIENCE_s, True
+        while not look.low and clock.now() < until_s:
+            if idle and clock.now() - begun_s > PATIENCE_s and look.load is not None and look.load.mode == LoadMode.OFF:
+                idle = False  # a charged capacitor keeps a node up for minutes when nothing draws from it
+                self._do(*(Deed(bench.load, *what) for what in _TO_DRAIN))
+            clock.wait_until(clock.now() + LOOK_EVERY_s)
+            look = self._look()
+        self.state.words.append(f"node at {look.node_V:.2f} V by meter")
+
+    def outputs_off(self) -> tuple[bool, str | None]:
+        """Step 6, second half, and the proof: whether all is proven off, and what to tell a person if it is not."""
+        bench = self.bench
+        off = self._do(Deed(bench.load, "off"), Deed(bench.supply, "off"))
+        for left in reversed(range(LAST_LOOKS)):  # one late answer must not spoil the proof
             bench.clock.wait_until(bench.clock.now() + LOOK_EVERY_s)
-    return False
+            look = self._look(reopen=True)
+            on = _not_proven_off(look, off)
+            if not on or not left:
+                break
+        self.state.words.append(f"NOT SAFE: {', '.join(on)}" if on else "safe: de-energised, not isolated")
+        if math.isnan(look.node_V) or look.low:
+            return not on, None
+        return False, f"the node still carries {look.node_V:.1f} V: {BY_HAND}, switch supply and load off by hand"
+
+    def _do(self, *deeds: Deed) -> bool:
+        """Carry out settings side by side; returns whether all stand as set."""
+        replies = self.bench.exchange([replace(deed.job, reopen=True) for deed in deeds], DEED_PATIENCE_s)
+        done = True
+        for deed, reply in zip(deeds, replies, strict=True):
+            try:
+                deed.speaker.verify(reply, deed.what, deed.value)
+            except BenchFault as fault:
+                self._trouble(fault)
+                done = False
+        return done
+
+    def _look(self, *, reopen: bool = False) -> Look:
+        bench, ballast_ohm = self.bench, self.bench.file.bench.wiring.node.ballast
+        meters = (bench.node_meter, bench.charger_meter, bench.shunt_meter)
+        jobs = [meter.reading("volts") for meter in meters]
+        jobs += [speaker.reading("state") for speaker in (bench.supply, bench.load, bench.mains)]
+        *volts, supply, load, mains = bench.exchange([replace(job, reopen=reopen) for job in jobs], LOOK_PATIENCE_s)
+        seen_V = [self._read(meter.read, reply) for meter, reply in zip(meters, volts, strict=True)]
+        node_V, charger_V, shunt_V = (math.nan if value is None else value for value in seen_V)
+        return Look(
+            shunt_V / bench.shunt_ohm,
+            (charger_V - node_V) / ballast_ohm if ballast_ohm > 0 else math.nan,
+            node_V,
+            self._read(bench.mains.read, mains),
+            self._read(bench.supply.read, supply),
+            self._read(bench.load.read, load),
+        )
+
+    def _read(self, read: Callable[[Reply], T], reply: Reply) -> T | None:
+        try:
+            return read(reply)
+        except BenchFault as fault:
+            self._trouble(fault)
+            return None
+
+    def _trouble(self, fault: BenchFault) -> None:
+        if str(fault) not in self.state.troubles:
+            self.state.troubles.append(str(fault))
 
 
-def _read(bench: OpenBench, state: SafeState, what: str) -> float:
-    """One quantity, nan where its instrument cannot say."""
-    try:
-        match what:
-            case "node":
-                return bench.node_meter.read(bench.hands.ask(bench.node_meter.reading("volts")))
-            case "charger":
-                return bench.charger_meter.read(bench.hands.ask(bench.charger_meter.reading("volts")))
-            case "shunt":
-                return bench.shunt_meter.read(bench.hands.ask(bench.shunt_meter.reading("volts"))) / bench.shunt_ohm
-            case "load":
-                return bench.load.read(bench.hands.ask(bench.load.reading("state"))).current_A
-        return bench.supply.read(bench.hands.ask(bench.supply.reading("state"))).current_A
-    except BenchFault as fault:
-        if str(fault) not in state.troubles:
-            state.troubles.append(str(fault))
-        return math.nan
+_TO_DRAIN: tuple[tuple[str, float | None], ...] = (("constant_current", None), ("current", DRAIN_A), ("on", None))
 
 
-def _witnesses(bench: OpenBench, state: SafeState) -> _Witnesses:
-    drop_V = _read(bench, state, "charger") - _read(bench, state, "node")
-    ballast_ohm = bench.file.bench.wiring.node.ballast
-    return _Witnesses(
-        _read(bench, state, "shunt"),
-        drop_V / ballast_ohm if ballast_ohm > 0 else math.nan,
-        _read(bench, state, "load") - _read(bench, state, "supply"),
+def _seen(look: Look) -> str:
+    named = zip(("shunt", "ballast", "load less supply"), look.witnesses_A, strict=True)
+    return ", ".join(f"{name} {'?' if math.isnan(current_A) else f'{current_A:.3f} A'}" for name, current_A in named)
+
+
+def _not_proven_off(look: Look, off: bool) -> list[str]:
+    """What is not known to be off by readback, and the node if it is not low by meter. `off`: settings confirmed."""
+    load_off = look.load is not None and (
+        look.load.mode == LoadMode.OFF or (look.load.mode == LoadMode.TRIPPED and off)
     )
-
-
-def _drain(bench: OpenBench, state: SafeState) -> None:
-    """Supply to zero while the load keeps a small current, until the node is low by meter; then both off."""
-    lowest = [Deed(bench.load, "current", DRAIN_A), Deed(bench.supply, "voltage", 0.0)]
-    _try(state, bench, lowest)
-    until_s = bench.clock.now() + DRAIN_PATIENCE_s
-    while not (node_V := _read(bench, state, "node")) < SAFE_VOLTAGE_V and bench.clock.now() < until_s:
-        bench.clock.wait_until(bench.clock.now() + LOOK_EVERY_s)
-    state.words.append(f"node at {node_V:.2f} V by meter")
-    _try(state, bench, [Deed(bench.load, "off"), Deed(bench.supply, "off")])
-
-
-def _verify(bench: OpenBench, state: SafeState) -> bool:
-    """Readback of each output, and the node by meter."""
-    try:
-        mains_on = bench.mains.read(bench.hands.ask(bench.mains.reading("state")))
-        supply = bench.supply.read(bench.hands.ask(bench.supply.reading("state")))
-        load = bench.load.read(bench.hands.ask(bench.load.reading("state")))
-    except BenchFault as fault:
-        state.troubles.append(str(fault))
-        return False
-    node_V = _read(bench, state, "node")
-    quiet = not mains_on and supply.mode == SupplyMode.OFF and load.mode != LoadMode.ON
-    return quiet and abs(node_V) < SAFE_VOLTAGE_V
+    supply_off = look.supply is not None and look.supply.mode == SupplyMode.OFF
+    found = [("mains", look.mains_on is False), ("supply", supply_off), ("load", load_off)]
+    outputs = [f"{name} not proven off" for name, good in found if not good]
+    return outputs if look.low else [*outputs, "node not proven below 2 V"]

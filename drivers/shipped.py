@@ -13,6 +13,14 @@ def is_bare(text: str) -> bool:
     return not ("/" in text or "\\" in text or text.endswith((".yaml", ".yml")))
 
 
+def _is_file(path: Path) -> bool:
+    """Whether there is such a file; a name that no file can have (too long, no access) names none."""
+    try:
+        return path.is_file()
+    except OSError:
+        return False
+
+
 def locate(
     text: str, folder: Path, what: str, place: Place, faults: Faults, *, beside: Path | None = None
 ) -> Path | None:
@@ -22,12 +30,12 @@ def locate(
     """
     if is_bare(text):
         path = folder / f"{text}.yaml"
-        if path.is_file():
+        if _is_file(path):
             return path
         faults.add(place, unknown(text, (found.stem for found in folder.glob("*.yaml")), what))
         return None
     candidates = [Path(text)] if beside is None else [beside / text, Path(text)]
-    found_path = next((path for path in candidates if path.is_file()), None)
+    found_path = next((path for path in candidates if _is_file(path)), None)
     if found_path is None:
         faults.add(place, f"there is no {what} file '{text}'")
     return found_path
