@@ -56,7 +56,7 @@ class Accuracy:
             source=f"bench file: {path.shunt.text}",
         )
         thermal = Contribution.from_half_width(
-            "thermal EMF", THERMAL_V, sensitivity=1.0 / path.shunt_ohm, source="copper joints, common practice, no source"
+            "thermal EMF", THERMAL_V, sensitivity=1.0 / path.shunt_ohm, source="common practice, no source"
         )
         return [*meter, shunt, thermal]
 

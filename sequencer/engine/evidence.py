@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 from drivers.bench import Bench
 from drivers.bench_file import BenchFile
 from drivers.dialect import Dialect
+from drivers.text.binding import Bound
 from drivers.text.document import compose
 from drivers.text.faults import Faults
 from sequencer.engine.durable import RecordError
@@ -128,8 +129,11 @@ def _procedure(record: Record) -> Procedure:
 def _bench(record: Record) -> BenchFile:
     assert record.manifest is not None
     bound = rebind(Bench, record.input_bytes("bench.yaml"), "bench.yaml", "bench")
-    dialects = {}
-    for part in record.manifest["instruments"]:
-        name = f"dialects/{part['dialect']}.yaml"
-        dialects[part["name"]] = rebind(Dialect, record.input_bytes(name), name, "dialect")
-    return BenchFile(bound, dialects)
+    spoken = {part["name"]: part["dialect"] for part in record.manifest["instruments"]}
+    dialects = {dialect: _dialect(record, dialect) for dialect in sorted(set(spoken.values()))}
+    return BenchFile(bound, {name: dialects[dialect] for name, dialect in spoken.items()})
+
+
+def _dialect(record: Record, dialect: str) -> Bound[Dialect]:
+    name = f"dialects/{dialect}.yaml"
+    return rebind(Dialect, record.input_bytes(name), name, "dialect")

@@ -20,6 +20,8 @@ Cause = Literal["charger", "bench"]
 CURRENT_SHARE = 2.0  # of the pack's rated current: beyond it a real pack would be in danger
 REVERSE_A = 0.25  # more than this out of the pack is no charger's doing
 AGREE_V = 0.05  # two voltage readings of one node, beyond what the current drops between them
+AGREE_DROP = 0.25  # of that drop: leads before they are measured, a warm ballast after
+APART_READINGS = 3
 AGREE_SHARE = 0.02  # of the load current: ordinary readback of supply and load (0.1 % + 0.05 % of range each)
 AGREE_FLOOR_A = 0.06
 STALE_PERIODS = 3.0
@@ -64,7 +66,9 @@ class Trip(Exception):
             bound,
             why,
         )
-        super().__init__(f"{quantity} {si(value, unit)} passed its bound {si(bound, unit)}: {why}")
+        reading = quantity if math.isnan(value) else f"{quantity} {si(value, unit)}"
+        passed = "" if math.isnan(bound) else f" passed its bound {si(bound, unit)}"
+        super().__init__(f"{reading}{passed}: {why}")
 
     def as_dict(self) -> dict[str, object]:
         names = ("cause", "quantity", "value", "unit", "bound", "why")
@@ -77,11 +81,13 @@ class Guard:
 
     bounds: Bounds
     ballast_ohm: float
+    fixture_ohm: float | None = None  # all between contacts and node, once it has been measured
     charge_Ah: float = 0.0
     _before: Scan | None = None
     _equal: dict[str, tuple[float, int, float]] = field(default_factory=dict)
     _lost: dict[str, int] = field(default_factory=dict)
     _condition_lost_s: float | None = None
+    _apart: int = 0
 
     def check(self, scan: Scan, period_s: float, set_V: float | None = None) -> None:
         """Raise Trip where `scan` passes a bound; otherwise remember it. `set_V` is what the supply is set to."""
@@ -90,6 +96,7 @@ class Guard:
         self._check_dead_meters(scan, set_V or 0.0)
         self._check_voltages(scan)
         self._check_current(scan)
+        self._check_agreement(scan)
         self._check_outputs(scan)
         self._count(scan)
         self._before = scan
@@ -131,10 +138,10 @@ class Guard:
         """
         if not self.bounds.equal_readings:
             return
-        self._check_dead("node voltage", scan.node_V, set_V, MOVED_V)
-        self._check_dead("charger current", scan.current_A, 0.0, 0.0)
+        self._check_dead("node voltage", "V", scan.node_V, set_V, MOVED_V)
+        self._check_dead("charger current", "A", scan.current_A, 0.0, 0.0)
 
-    def _check_dead(self, name: str, seen: Seen, set_V: float, moved_V: float) -> None:
+    def _check_dead(self, name: str, unit: str, seen: Seen, set_V: float, moved_V: float) -> None:
         if not seen.good:
             return
         value, count, first_set_V = self._equal.get(name, (math.nan, 0, set_V))
@@ -143,7 +150,7 @@ class Guard:
         self._equal[name] = (seen.value, count, first_set_V)
         if count >= self.bounds.equal_readings and abs(set_V - first_set_V) >= moved_V:
             why = f"{count} readings equal to the last digit: the meter does not measure"
-            raise Trip("bench", name, seen.value, "", math.nan, why)
+            raise Trip("bench", name, seen.value, unit, math.nan, why)
 
     def _check_voltages(self, scan: Scan) -> None:
         for name, seen, bound in (
@@ -164,6 +171,22 @@ class Guard:
         if seen.value < -REVERSE_A:
             why = "current flows out of the pack: the shunt is reversed or something else feeds the charger"
             raise Trip("bench", "charger current", seen.value, "A", -REVERSE_A, why)
+
+    def _check_agreement(self, scan: Scan) -> None:
+        """Without it a charger's meter that stands still would be a charger that regulates wrong."""
+        if self.fixture_ohm is None or not (scan.node_V.good and scan.charger_V.good and scan.current_A.good):
+            return
+        apart_V = self._apart_V(scan)
+        self._apart = 0 if apart_V is None else self._apart + 1
+        if apart_V is not None and self._apart >= APART_READINGS:
+            why = "charger's and node's meter differ by so much more than the current drops between them"
+            raise Trip("bench", "voltage between the meters", apart_V, "V", math.nan, why)
+
+    def _apart_V(self, scan: Scan) -> float | None:
+        """By how much the two voltage meters disagree, None where they agree."""
+        between_V = scan.current_A.value * (self.fixture_ohm or self.ballast_ohm)
+        gap_V = abs(scan.charger_V.value - scan.node_V.value - between_V)
+        return gap_V if gap_V > AGREE_V + AGREE_DROP * abs(between_V) else None
 
     def _check_outputs(self, scan: Scan) -> None:
         if scan.load.mode == LoadMode.TRIPPED:
@@ -205,13 +228,10 @@ class Guard:
         wrong = self._stood()
         if wrong is not None:
             return "bench", wrong
-        between_V = scan.current_A.value * self.ballast_ohm
-        gap_V = abs(scan.charger_V.value - scan.node_V.value - between_V)
-        if gap_V > AGREE_V + 0.25 * abs(between_V):
-            return (
-                "bench",
-                f"the two voltage meters differ by {si(gap_V, 'V')} more than the current drops between them",
-            )
+        apart_V = self._apart_V(scan)
+        if apart_V is not None:
+            told = f"the two voltage meters differ by {si(apart_V, 'V')} more than the current drops between them"
+            return "bench", told
         if abs(scan.supply.voltage_V - scan.node_V.value) > AGREE_V + 0.01 * scan.node_V.value:
             return "bench", "the node's meter and the supply's readback differ"
         return "charger", "outputs stood as set, and two independent readings agree"

@@ -18,16 +18,16 @@ from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.evidence import Evidence, Window, open_evidence
 from sequencer.engine.judgements import changes, latest, new_judgement, write_json
 from sequencer.engine.manifest import program_version, sha256
-from sequencer.engine.measured import ChargeStep, Found, last_readings, measure_charges
+from sequencer.engine.measured import ChargeStep, Found, measure_charges
 from sequencer.model.findings import LimitRow, declared_elsewhere, limit_rows
 
-# What a trip of the charger's own doing says something about.
+# What a trip of the charger's own doing says something about; the first of them that is declared.
 TRIP_LIMITS = {
-    "charger voltage": "charge.end_voltage",
-    "node voltage": "charge.end_voltage",
-    "charger current": "charge.stage1.current",
-    "supply current": "charge.stage1.current",
-    "charge": "charge.ends",
+    "charger voltage": ("charge.end_voltage", "charge.voltage"),
+    "node voltage": ("charge.end_voltage", "charge.voltage"),
+    "charger current": ("charge.stage1.current",),
+    "supply current": ("charge.stage1.current",),
+    "charge": ("charge.ends",),
 }
 
 
@@ -56,8 +56,8 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
     evidence = open_evidence(record, asked.specification)
     previous = latest(record)
     rows = limit_rows(evidence.specification, evidence.procedure.judge, asked.rule)
-    found, classification = _findings(evidence)
-    verdicts = [_verdict(row, found.get(row.name, Found(absent=_why_absent(evidence)))) for row in rows]
+    found, classification = _findings(evidence, rows)
+    verdicts = [_verdict(row, found.get(row.name) or _not_made(row, evidence)) for row in rows]
     words = [verdict["verdict"] for verdict in verdicts]
     document = {"overall": overall(words), "rehearsal": bool(evidence.manifest["rehearsal"]), "verdicts": verdicts}
     folder = new_judgement(record)
@@ -71,7 +71,7 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
     return Judgement(folder, document, exit_status(words, left_out=left_out), bool(trip and trip["cause"] == "bench"))
 
 
-def _findings(evidence: Evidence) -> tuple[dict[str, Found], dict[str, Any] | None]:
+def _findings(evidence: Evidence, rows: list[LimitRow]) -> tuple[dict[str, Found], dict[str, Any] | None]:
     found = {"charges": measure_charges(evidence)}
     window = evidence.window("charge")
     if window is not None:
@@ -79,7 +79,7 @@ def _findings(evidence: Evidence) -> tuple[dict[str, Found], dict[str, Any] | No
         return {**found, **step.findings()}, step.classification.as_dict()
     trip = evidence.trip
     if trip is not None and trip["cause"] == "charger":
-        name, tripped = _tripped(evidence, trip)
+        name, tripped = _tripped(evidence, trip, rows)
         found[name] = tripped
     return found, _unfinished(evidence)
 
@@ -96,9 +96,13 @@ def _unfinished(evidence: Evidence) -> dict[str, Any] | None:
         return None  # too little of it to read anything
 
 
-def _tripped(evidence: Evidence, trip: dict[str, Any]) -> tuple[str, Found]:
+def _tripped(evidence: Evidence, trip: dict[str, Any], rows: list[LimitRow]) -> tuple[str, Found]:
     """The finding behind a trip that was the charger's doing: what was read last before it."""
-    name = TRIP_LIMITS[trip["quantity"]]
+    concerned = TRIP_LIMITS[trip["quantity"]]
+    thresholds = [row.name for row in rows if row.finding == "charge.stage.threshold"][::-1]
+    declared = {row.name for row in rows if row.declared}
+    candidates = (*concerned, *thresholds) if concerned[0] == "charge.end_voltage" else concerned
+    name = next((one for one in candidates if one in declared), concerned[0])
     words = f"the guard ended the run: {trip['quantity']} {si(trip['value'], trip['unit'])}; {trip['why']}"
     moment_s = float(trip["t"])
     if name == "charge.ends":
@@ -106,13 +110,19 @@ def _tripped(evidence: Evidence, trip: dict[str, Any]) -> tuple[str, Found]:
     accuracy = Accuracy(
         evidence.bench, min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
     )
-    if name == "charge.end_voltage":
+    if concerned[0] == "charge.end_voltage":
         return name, _tripped_voltage(evidence, accuracy, moment_s, words)
-    estimate = last_readings(evidence.trace("charger.current"), moment_s)
-    if estimate is None:
-        return name, Found(trouble=f"too few readings before the trip; {words}")
-    budget = Budget(estimate.value, "A", tuple(accuracy.current(estimate.value)))
-    return name, Found(budget=budget, n=estimate.n, start_s=estimate.start_s, end_s=estimate.end_s, words=words)
+    return name, _tripped_current(evidence, accuracy, moment_s, words)
+
+
+def _tripped_current(evidence: Evidence, accuracy: Accuracy, moment_s: float, words: str) -> Found:
+    """The last reading: a mean would take in what flowed before the charger went too far."""
+    current = evidence.trace("charger.current").within(moment_s - 2.0, moment_s)
+    if current.value.size == 0:
+        return Found(trouble=f"no reading before the trip; {words}")
+    last_A, last_s = float(current.value[-1]), float(current.time_s[-1])
+    budget = Budget(last_A, "A", tuple(accuracy.current(last_A)))
+    return Found(budget=budget, n=1, start_s=last_s, end_s=moment_s, words=words)
 
 
 def _tripped_voltage(evidence: Evidence, accuracy: Accuracy, moment_s: float, words: str) -> Found:
@@ -123,6 +133,14 @@ def _tripped_voltage(evidence: Evidence, accuracy: Accuracy, moment_s: float, wo
     largest_V = float(np.max(voltage.value))
     budget = Budget(largest_V * share, "V", tuple(accuracy.volts("node.charger_voltage", largest_V, share)))
     return Found(budget=budget, n=voltage.value.size, start_s=float(voltage.time_s[0]), end_s=moment_s, words=words)
+
+
+def _not_made(row: LimitRow, evidence: Evidence) -> Found:
+    """A finding that the bench tripped on the way to is inconclusive; one that was not looked for was not run."""
+    trip, why = evidence.trip, _why_absent(evidence)
+    if trip is not None and trip["cause"] == "bench" and row.finding != "charges" and evidence.begun("charge"):
+        return Found(trouble=why)
+    return Found(absent=why)
 
 
 def _why_absent(evidence: Evidence) -> str:

@@ -14,13 +14,14 @@ from sequencer.analysis.classify import Classification, classify
 from sequencer.analysis.estimates import Estimate, mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
-from sequencer.engine.evidence import Evidence, Trace, Window
+from sequencer.engine.evidence import Evidence, Window
 from sequencer.engine.pace import FAST_s
 from sequencer.engine.stability import turning_points
 
 FEWEST = 5
 AFTER_END_s = 5.0
 LAG_SHARE = 1.0 / 3.0
+FIXTURE_SHARE = 0.05  # of the drop between contacts and node: a ballast that has warmed since it was measured
 STAIRS_s = 30.0  # the last steps of the stand-in before the end
 SWING_V = 0.005  # per cell: the stand-in's own small steps stay far below
 SWINGS = 6  # turns in a row, each within TURN_WITHIN of the one before: a loop, not a charger's few steps
@@ -255,13 +256,40 @@ class ChargeStep:
         lost = int(np.count_nonzero(condition.value == 0))
         return f"the supply did not hold the node in {lost} of {condition.value.size} scans" if lost else None
 
+    def _untrusted(self, estimate: Estimate) -> str | None:
+        """What makes a voltage at the contacts no reading of the charger; None where nothing does."""
+        window = estimate.start_s, estimate.end_s
+        return self._swinging or self._condition_lost(*window) or self._apart(*window)
+
+    def _apart(self, start_s: float, end_s: float) -> str | None:
+        """Why the charger's meter is not what node, current and fixture say; None where it is."""
+        standin = self._evidence.manifest.get("standin") or {}
+        voltage, fixture_ohm = self._voltage.within(start_s, end_s), standin.get("Rp_ohm")
+        node_V = self._evidence.trace("node.voltage").at(voltage.time_s)
+        drop_V = self._current.at(voltage.time_s) * (fixture_ohm or math.nan)
+        gaps_V = voltage.value - node_V - drop_V
+        if not np.any(np.isfinite(gaps_V)):
+            return None
+        gap_V, largest_V = float(np.nanmean(gaps_V)), float(np.nanmax(np.abs(drop_V)))
+        warm = Contribution.from_half_width("fixture", FIXTURE_SHARE * largest_V, source="a warm ballast")
+        lines = [
+            *self._accuracy.volts("node.charger_voltage", float(np.mean(voltage.value))),
+            *self._accuracy.volts("node.voltage", float(np.nanmean(node_V))),
+            warm,
+        ]
+        allowed_V = Budget(gap_V, "V", tuple(lines)).U
+        if abs(gap_V) <= allowed_V:
+            return None
+        told = f"charger's meter, and node's with the drop between them, differ by {si(gap_V, 'V')}"
+        return f"{told}; their uncertainty is {si(allowed_V, 'V')}"
+
     def _threshold(self, number: int, plateau: Plateau | None) -> Found:
         if plateau is None:
             return Found(none=f"no constant-current stage {number} was seen")
         if plateau.threshold_V is None:
             return Found(none=f"stage {number} did not end by a step")
         estimate = plateau.threshold_V
-        trouble = self._swinging or self._lag() or self._condition_lost(estimate.start_s, estimate.end_s)
+        trouble = self._lag() or self._untrusted(estimate)
         # The node rises once more between the last reading and the end of the stage: half of it there, rectangular.
         half_V = (plateau.threshold_bracket_V or 0.0) / 2
         bracket = Contribution.from_half_width(
@@ -282,13 +310,11 @@ class ChargeStep:
             return Found(none="no constant-voltage phase was seen")
         if estimate.n < 2 * FEWEST:
             return Found(trouble=f"only {estimate.n} readings at constant voltage")
-        trouble = self._swinging or self._condition_lost(estimate.start_s, estimate.end_s)
-        return self._per_cell(estimate, [], trouble)
+        return self._per_cell(estimate, [], self._untrusted(estimate))
 
     def _end_voltage(self) -> Found:
         estimate = self.reading.end_voltage_V
-        trouble = self._swinging or self._condition_lost(estimate.start_s, estimate.end_s)
-        found = self._per_cell(estimate, [], trouble)
+        found = self._per_cell(estimate, [], self._untrusted(estimate))
         peak_V = self.reading.peak_V / self._cells
         return _with_words(found, f"largest single reading {peak_V:.4f} V per cell")
 
@@ -299,11 +325,3 @@ def _found(budget: Budget, estimate: Estimate, trouble: str | None) -> Found:
 
 def _with_words(found: Found, words: str) -> Found:
     return replace(found, words=words)
-
-
-def last_readings(trace: Trace, until_s: float, span_s: float = 2.0) -> Estimate | None:
-    """Mean of what was read last before a moment; None for fewer than two readings."""
-    last = trace.within(until_s - span_s, until_s)
-    if last.value.size < 2:
-        return None
-    return mean_between(last.time_s, last.value, until_s - span_s, until_s)

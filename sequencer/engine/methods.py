@@ -164,6 +164,7 @@ def measure_fixture(loop: Loop, zero_V: float, settling_s: float, pack: Pack, fo
             f"{si(means.drop_V, 'V')} stands between charger and node at {si(means.mean_A, 'A')}: wiring or meter wrong"
         )
         raise InstrumentFault(loop.bench.charger_meter.name, told)
+    loop.guard.fixture_ohm = fixture_ohm
     loop.follow_at(settling_s, fixture_ohm, pack.resistance, forced_delay)
     fast, quiet = loop.follow[FAST_s], loop.follow[QUIET_s]
     loop.stand_in_words = {
