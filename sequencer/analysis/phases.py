@@ -17,6 +17,9 @@ Kind = Literal["precharge", "cc", "cv", "constant-power", "taper", "pulse", "res
 SAME_LEVEL = 0.02  # plateaus closer than this are one
 SMALL_STEP = 0.08  # of the plateau before
 SLOPE_STEPS = 4  # plateaus in a row, each a small step below, are a slope
+SLIDE_SHARE = 0.025  # of the largest current: less between two plateaus is no step
+FRAGMENT_TIME = 0.02  # of a run: what is shorter may be a piece of a slope
+LEAST_SLOPE = 4  # samples: less may be a transition
 LEAST_TIME = 0.005  # of a run: what is shorter is a transition
 FLOAT_SHARE = 0.12  # of the largest plateau: a plateau below, after the charge, is a float
 FLOAT_DROP = 0.6  # of the current before: how far the current falls at once into a float
@@ -43,11 +46,11 @@ def phases_of_run(trace: Trace, start: int, stop: int) -> list[Phase]:
     """Phases of the run of samples start ... stop-1, in order."""
     segments = cut(trace.time_s, trace.current_A, start, stop, scale_A=trace.scale_A, noise_A=trace.noise_A)
     segments = [segment for segment in segments if not _rises(trace, segment)]
-    phases = _regulated(trace, segments)
+    phases = _slopes_joined(trace, _regulated(trace, segments), FRAGMENT_TIME * trace.duration(start, stop))
     least_s = LEAST_TIME * trace.duration(start, stop)
     lasting = [p for p in phases if p.kind == "cv" or trace.duration(p.start, p.stop) >= least_s]
-    lasting = [p for p in lasting if p.stop - p.start >= 2]
-    return _foldback_marked(_small_steps_joined(_merged(trace, lasting)))
+    lasting = [p for p in lasting if p.stop - p.start >= (LEAST_SLOPE if p.kind == "taper" else 2)]
+    return _foldback_marked(trace, _small_steps_joined(_merged(trace, lasting)))
 
 
 def _rises(trace: Trace, segment: Segment) -> bool:
@@ -86,12 +89,12 @@ def _alone(trace: Trace, segments: list[Segment], index: int) -> list[Phase]:
     segment = segments[index]
     if segment.kind == "flat":
         return [Phase("cc", segment.start, segment.stop, segment.level_A)]
-    if segment.kind == "short":
-        return []
+    if segment.kind == "short":  # part of a slope, or a transition; too short to tell until it is joined
+        return [Phase("taper", segment.start, segment.stop, segment.level_A)]
     phase = _slope(trace, segment.start, segment.stop, segment.level_A)
-    ends_run = index == len(segments) - 1 and segment.level_A > FLOAT_SHARE * trace.scale_A
+    cut_off = segment.stop == trace.time_s.size and segment.level_A > FLOAT_SHARE * trace.scale_A
     knee = phase.fall < 3.0 * SAME_LEVEL and index > 0 and segments[index - 1].kind == "flat"
-    if ends_run and knee and _steady_voltage(trace, segment):
+    if cut_off and knee and _steady_voltage(trace, segment):
         return [replace(phase, kind="cv")]
     return [phase]
 
@@ -129,6 +132,22 @@ def _merged(trace: Trace, phases: list[Phase]) -> list[Phase]:
     return merged
 
 
+def _slopes_joined(trace: Trace, phases: list[Phase], fragment_s: float) -> list[Phase]:
+    """Noise breaks a slope into pieces, some of which look flat for a moment: what goes on downward joins it."""
+    joined: list[Phase] = []
+    for phase in phases:
+        last = joined[-1] if joined else phase
+        short = phase.kind == "cc" and trace.duration(phase.start, phase.stop) < fragment_s
+        if last.kind == "taper" and (phase.kind == "taper" or short) and _slides_into(trace, last, phase):
+            fall = 1.0 - float(trace.current_A[phase.stop - 1]) / last.level_A
+            joined[-1] = replace(last, stop=phase.stop, fall=fall)
+        elif short and joined and last.kind == "cc" and _slides_into(trace, last, phase):
+            joined.append(replace(phase, kind="taper"))
+        else:
+            joined.append(phase)
+    return joined
+
+
 def _small_steps_joined(phases: list[Phase]) -> list[Phase]:
     """Four plateaus or more, each a little below the one before, are a slope in digital steps: the first one stays."""
     joined: list[Phase] = []
@@ -158,17 +177,22 @@ def same_level(trace: Trace, a_A: float, b_A: float) -> bool:
     return abs(a_A - b_A) <= max(SAME_LEVEL * max(a_A, b_A), trace.noise_A)
 
 
-def _foldback_marked(phases: list[Phase]) -> list[Phase]:
+def _foldback_marked(trace: Trace, phases: list[Phase]) -> list[Phase]:
     """Plateaus that the current slid to, rather than stepped to, are no stages of the algorithm."""
     marked: list[Phase] = []
     for phase in phases:
-        slid = phase.kind == "cc" and bool(marked) and _slides_into(marked[-1], phase)
+        slid = phase.kind == "cc" and bool(marked) and _slides_into(trace, marked[-1], phase)
         marked.append(replace(phase, after_foldback=True) if slid else phase)
     return marked
 
 
-def _slides_into(before: Phase, after: Phase) -> bool:
-    if before.kind in ("taper", "constant-power"):
-        return after.level_A < before.level_A
-    small = before.level_A * (1.0 - SMALL_STEP) <= after.level_A < before.level_A
-    return before.after_foldback and small
+def _slides_into(trace: Trace, before: Phase, after: Phase) -> bool:
+    """Lower than what comes before, and reached without a step."""
+    if after.level_A >= before.level_A or before.kind == "cv":
+        return False
+    end = float(np.median(trace.current_A[max(before.start, before.stop - 3) : before.stop]))
+    begin = float(np.median(trace.current_A[after.start : min(after.stop, after.start + 3)]))
+    step = end - begin
+    if before.kind in ("taper", "constant-power") and step <= FLOAT_SHARE * trace.scale_A:
+        return True
+    return step <= max(SLIDE_SHARE * trace.scale_A, 6.0 * trace.noise_A)

@@ -127,10 +127,19 @@ def _pieces(time_s: Array, current_A: Array, start: int, stop: int, noise_A: flo
     first, knee = _plateau_bounds(time, smooth, level, noise_A)
     if first is None:
         return [Segment("slope", start, stop, float(smooth[0]))]
+    above = _above_plateau(smooth[first:knee], level)
+    if above >= max(SHORTEST, knee // 50):  # a slope down to the plateau, or a higher one that was held for less long
+        leading = _pieces(time_s, current_A, start, start + first + above, noise_A)
+        return leading + _pieces(time_s, current_A, start + first + above, stop, noise_A)
     flat = Segment("flat", start + first, start + knee, float(np.median(current[first:knee])))
     if stop - start - knee < SHORTEST:
         return [flat]
     return [flat, Segment("slope", start + knee, stop, float(smooth[knee]))]
+
+
+def _above_plateau(smooth_A: Array, level_A: float) -> int:
+    """Number of samples before the current first comes within 2 % of the plateau from above."""
+    return int(np.argmax(smooth_A <= level_A * (1.0 + 2.0 * FLAT_SHARE)))
 
 
 def plateau_level(time_s: Array, current_A: Array) -> float:

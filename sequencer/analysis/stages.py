@@ -112,8 +112,10 @@ def _precharges(trace: Trace, phases: list[Phase]) -> list[Phase]:
     marked = list(phases)
     top = float(np.quantile(trace.voltage_V, 0.999))
     for index, phase in enumerate(marked[:-1]):
-        after = marked[index + 1]
-        if phase.kind != "cc" or phase.level_A > PRECHARGE_CURRENT * after.level_A:
+        if phase.kind != "cc":
+            continue
+        after = next((later for later in marked[index + 1 :] if later.kind == "cc"), phase)
+        if phase.level_A > PRECHARGE_CURRENT * after.level_A:
             break
         if float(trace.voltage_V[phase.stop - 1]) <= PRECHARGE_VOLTAGE * top:
             marked[index] = replace(phase, kind="precharge")

@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from ruamel.yaml import YAML
 
@@ -122,7 +122,7 @@ CHARGES = st.fixed_dictionaries({
 
 
 class Charge:
-    """A pack of the drawn kind and what to charge it with; a single cell is not played in steps of 10 mV."""
+    """A pack of the drawn kind and what to charge it with; the stand-in's steps move the current by 5 % at most."""
 
     def __init__(self, pack: Callable[..., Any], drawn: dict[str, Any], cell_V: float = 3.3) -> None:
         cells, capacity = drawn["cells"], drawn["capacity_Ah"]
@@ -131,7 +131,8 @@ class Charge:
         self.limit_V = 4.2 * cells
         self.pack = pack(
             empty_V=cell_V * cells, capacity_Ah=capacity, resistance_ohm=cells * drawn["resistance"] / capacity,
-            span_V=1.25 * cells, period_s=drawn["period_s"], grid_V=drawn["grid_V"] if cells > 1 else 0.0,
+            span_V=1.25 * cells, period_s=drawn["period_s"],
+            grid_V=min(drawn["grid_V"], 0.05 * 0.1 * cells * drawn["rate"] * drawn["resistance"]),
         )  # fmt: skip
         self.drawn = drawn
 
@@ -173,6 +174,7 @@ def test_cc_only(pack: Callable[..., Any], drawn: dict[str, Any]) -> None:
 @FEW
 @given(CHARGES, st.floats(0.4, 0.75), st.integers(2, 4), st.booleans())
 def test_stepped_cc(pack: Callable[..., Any], drawn: dict[str, Any], ratio: float, steps: int, held: bool) -> None:
+    assume(ratio ** (steps - 1) > 0.13)  # what is lower may be a float
     charge = Charge(pack, drawn)
     levels = [charge.current_A * ratio**k for k in range(steps)]
     for level in levels:
