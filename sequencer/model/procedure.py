@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, model_validator
 
 from drivers.text.binding import Bound, Written, bind
 from drivers.text.document import Document, Mapped, Scalar, scalars, substitute
@@ -31,6 +31,12 @@ def _times(value: Any) -> float:
     return number
 
 
+# As the file may hold it: a number, or the $name of a parameter.
+_TIMES_SCHEMA = WithJsonSchema(
+    {"anyOf": [{"type": "number", "minimum": 1, "maximum": MAX_COMPRESSION}, {"type": "string"}]}
+)
+
+
 class Insert(_Part):
     """Put a pack in: its cells at this open-circuit voltage."""
 
@@ -40,7 +46,7 @@ class Insert(_Part):
 class FullCharge(_Part):
     """Charge until the charger ends it."""
 
-    compression: Annotated[float, BeforeValidator(_times)] = Field(
+    compression: Annotated[float, BeforeValidator(_times), _TIMES_SCHEMA] = Field(
         1.0, description="at most so many times faster than the pack's capacity, away from declared events"
     )
     after: Seconds = Field(30.0, description="watched so long after the end")
@@ -93,6 +99,17 @@ class Procedure(Written):
             raise refuse(
                 "the first step must be an insert with 'expect: charges': else a dead charger looks like a safe one"
             )
+        return self
+
+    @model_validator(mode="after")
+    def _handles_one_pack(self) -> Procedure:
+        inserted = False
+        for number, step in enumerate(self.steps, 1):
+            if step.insert is not None and inserted:
+                raise refuse(f"step {number} inserts a pack while one is in: a 'remove' was expected before it")
+            if step.insert is None and not inserted:
+                raise refuse(f"step {number} ({step.kind}) needs a pack: an 'insert' was expected before it")
+            inserted = step.remove is None
         return self
 
 
