@@ -45,8 +45,9 @@ class ChargeReading:
     end_voltage_V, peak_V : largest mean over 1 s (at 1 s spacing: largest sample), and the largest sample. Being the
     largest of many, both lie above the true voltage by up to 4 s / √n of the estimate.
     ended, ended_s : the current fell at once to below 5 % of the first plateau and stayed there; last sample before.
-    cutoff_A : trend of the current at ended_s.    cutoff_bracket_A : fall of the trend over one sample spacing there:
-    the charger's own cut-off lies up to so much lower.
+    cutoff_A : trend of the current at ended_s.
+    cutoff_bracket_A : fall of the trend over one sample spacing there, or the steps about the trend where these are
+    larger: the charger's own cut-off lies up to so much lower.
     last_current_A : trend at the end of the window when it did not end.
     after_end_A, after_end_largest_A, after_end_duration_s : mean and largest magnitude from two samples after the end.
     """
@@ -84,7 +85,7 @@ def measure_charge(
     stages = [stage for stage in classification.stages if stage.start_s < end_s and stage.end_s > start_s]
     levels = [stage for stage in stages if stage.kind == "cc" and _samples(time, stage.start_s, stage.end_s) >= 2]
     first_A = levels[0].current_A.value if levels else max(0.0, float(np.max(current)))
-    last = end_of_charge(current, first_A) if first_A > 0.0 else None
+    last = end_of_charge(time, current, first_A) if first_A > 0.0 else None
     end_voltage = largest_mean(time, voltage, END_MEAN_S, float(time[0]), float(time[-1]))
     before, bracket = _cutoff(time, current, last)
     after = slice(last + 2, None) if last is not None else slice(0, 0)
@@ -194,7 +195,7 @@ def _cutoff(time: Array, current: Array, last: int | None) -> tuple[Estimate | N
         return None, None
     trend: Trend = trend_at(time, current, last)
     spacing_s = float(time[last + 1] - time[last])
-    return trend.current_A, max(0.0, trend.fall_per_s * spacing_s)
+    return trend.current_A, max(trend.unrest_A, trend.fall_per_s * spacing_s)
 
 
 def _mean_over(time: Array, level: Array) -> Estimate | None:

@@ -12,8 +12,8 @@ Shape = Literal["normal", "t", "rectangular", "trapezoidal"]
 NORMAL_COVERAGE = math.erf(math.sqrt(2.0))
 #: Coverage probability of the bounded shapes (EA-4/02 S9, S10).
 BOUNDED_COVERAGE = 0.95
-#: Largest ratio of all other contributions (root sum of squares) to the dominant one or two, as EA-4/02 S9.14 words it
-#: (from memory). At this ratio a k of 1.65 covers 92 to 93 %, not 95 % (computed): a Budget uses the stricter one below.
+#: Largest ratio of all other contributions (root sum of squares) to the dominant one or two, as EA-4/02 S9.14 words
+#: it (from memory). There a k of 1.65 covers 92 to 93 %, not 95 % (computed): a Budget uses the stricter one below.
 DOMINANCE_EA = 0.3
 #: The ratio a Budget uses: the interval then still holds at least 94.5 % (computed in the tests).
 DOMINANCE = 0.1

@@ -173,12 +173,13 @@ def _sides(value: float, low: float | None, high: float | None) -> list[_Side]:
 
 
 def _zone(side: _Side, guard_band: float, value: float) -> Verdict:
-    rounding = 4.0 * sys.float_info.epsilon * max(abs(value), abs(side.limit), guard_band)
-    if side.distance >= guard_band - rounding:
+    at_limit = 4.0 * sys.float_info.epsilon * max(abs(value), abs(side.limit))
+    at_guard = at_limit + 4.0 * sys.float_info.epsilon * guard_band
+    if side.distance >= guard_band - at_guard:
         return "pass"
-    if side.distance >= -rounding:
+    if side.distance >= -at_limit:
         return "conditional pass"
-    return "conditional fail" if side.distance >= -guard_band - rounding and guard_band > 0.0 else "fail"
+    return "conditional fail" if side.distance >= -guard_band - at_guard and guard_band > 0.0 else "fail"
 
 
 def _reason(value: float, verdict: Verdict, side: _Side, guard_band: float, step: float, unit: str) -> str:

@@ -124,9 +124,10 @@ def _merged(trace: Trace, phases: list[Phase]) -> list[Phase]:
     """Neighbouring plateaus of one level become one: a glitch between them is no step."""
     merged: list[Phase] = []
     for phase in phases:
-        if merged and phase.kind == "cc" == merged[-1].kind and same_level(trace, phase.level_A, merged[-1].level_A):
+        held = merged[-1].kind if merged else "rest"
+        if phase.kind == "cc" and held in ("cc", "float") and same_level(trace, phase.level_A, merged[-1].level_A):
             longer = max(phase, merged[-1], key=lambda p: trace.duration(p.start, p.stop))
-            merged[-1] = replace(longer, start=merged[-1].start, stop=phase.stop)
+            merged[-1] = replace(longer, kind=held, start=merged[-1].start, stop=phase.stop)
         else:
             merged.append(phase)
     return merged

@@ -90,7 +90,7 @@ def _reach_back(trace: Trace, segments: list[Segment], last: int, share: float) 
     voltage = float(np.median(trace.voltage_V[max(tail.start, tail.stop - max(3, tail.size // 10)) : tail.stop]))
     allowed = tolerance_V(trace, voltage, share)
     first, start = last, _held_from(trace, tail, voltage, allowed)
-    while start == segments[first].start and first > 0 and _continues(segments[first - 1], segments[first]):
+    while start == segments[first].start and first > 0 and _continues(trace, segments[first - 1], segments[first]):
         onset = _held_from(trace, segments[first - 1], voltage, allowed)
         if onset >= segments[first - 1].stop or (onset > segments[first - 1].start and _is_flat(segments[first - 1])):
             break
@@ -102,8 +102,8 @@ def _is_flat(segment: Segment) -> bool:
     return segment.kind == "flat"
 
 
-def _continues(before: Segment, after: Segment) -> bool:
-    return before.level_A >= after.level_A * 0.99
+def _continues(trace: Trace, before: Segment, after: Segment) -> bool:
+    return before.level_A >= after.level_A * 0.99 - 4.0 * trace.noise_A
 
 
 def _held_from(trace: Trace, segment: Segment, voltage_V: float, allowed_V: float) -> int:

@@ -135,7 +135,7 @@ def _floats(trace: Trace, phases: list[Phase]) -> list[Phase]:
             break
         rise = float(trace.voltage_V[phase.stop - 1] - trace.voltage_V[phase.start])
         steady = max(STILL_SHARE * float(trace.voltage_V[phase.start]), 4.0 * trace.noise_V)
-        if marked[index - 1].kind == "cv" or rise <= steady:
+        if marked[index - 1].kind in ("cv", "float") or rise <= steady:
             marked[index] = replace(phase, kind="float")
     return marked
 

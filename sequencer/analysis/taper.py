@@ -9,6 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from sequencer.analysis.estimates import Estimate, effective_number
+from sequencer.analysis.segments import ranges
 from sequencer.analysis.smoothing import despiked, noise_of
 
 Array = npt.NDArray[np.float64]
@@ -17,8 +18,12 @@ ENDED_SHARE = 0.05  # of the first plateau: below, and for good, the charge has 
 AT_ONCE = 0.5  # of the current before: a fall by more within two samples is an end, not a taper
 LEAST_SHARE = 0.005  # of the first plateau: below, a current is not told from none
 TREND_SAMPLES = 10
+STAIR_RATIO = 1.3  # of the largest step in the taper: a drop that is no larger may be one of them
+STAIR_S = 1.0  # in which the stand-in has made its step
+NEAR_END = 6.0  # times the last current: steps of a taper are looked for below
 FIT_SPAN = 1.35  # the trend is read from samples up to this many times the last current
 FIT_LEAST, FIT_MOST = 8, 400
+FIT_NO_CURRENT = 50  # samples where the current is lost in noise
 
 
 @dataclass(frozen=True)
@@ -27,18 +32,21 @@ class Trend:
 
     current_A : Estimate whose u is that of the fit at that moment (n_eff is s²/u²); window as fitted.
     fall_per_s : A/s, how fast the trend falls there, negative for a rise.
+    unrest_A : peak to peak of what is left beside trend and noise (steps of a stand-in), 0 where nothing is.
     """
 
     current_A: Estimate
     fall_per_s: float
+    unrest_A: float
 
 
-def end_of_charge(current_A: Array, plateau_A: float) -> int | None:
+def end_of_charge(time_s: Array, current_A: Array, plateau_A: float) -> int | None:
     """Index of the last sample before the charge ended by itself; None where it did not.
 
-    The current falls to less than half of itself within two samples, by three times more than its trend would have it,
-    is then below 5 % of the first plateau and stays there up to the last sample given (single glitches aside).
-    plateau_A : > 0, first plateau.
+    The current falls to less than half of itself within two samples, by three times more than its trend and clearly
+    more than any step before would have it, is then below 5 % of the first plateau and stays there up to the last
+    sample given (single glitches aside).
+    time_s, current_A : (n,).    plateau_A : > 0, first plateau.
     """
     if current_A.size < 4:
         return None
@@ -46,10 +54,26 @@ def end_of_charge(current_A: Array, plateau_A: float) -> int | None:
     highest_later = np.maximum.accumulate(smooth[::-1])[::-1]
     low = (highest_later[2:] < ENDED_SHARE * plateau_A) & (current_A[2:] < AT_ONCE * current_A[:-2])
     low &= current_A[:-2] > max(LEAST_SHARE * plateau_A, 6.0 * _background(current_A))
-    found = np.flatnonzero(low & (current_A[:-2] - current_A[2:] > 3.0 * _usual_fall(smooth)[:-2]))
-    if found.size == 0:
-        return None
-    return _last_full(current_A, int(found[0]), plateau_A)
+    drop = current_A[:-2] - current_A[2:]
+    for first in np.flatnonzero(low & (drop > 3.0 * _usual_fall(smooth)[:-2])):
+        if float(drop[first]) > STAIR_RATIO * _stair(time_s, smooth, int(first)):
+            return _last_full(current_A, int(first), plateau_A)
+    return None
+
+
+def _stair(time_s: Array, smooth_A: Array, first: int) -> float:
+    """Largest step of a taper that falls in steps: three or more of them among the last 400 samples, else 0.
+
+    A stand-in that moves in steps makes a taper do so; the last one, to no current at all, is no end of the charger.
+    """
+    before, times = smooth_A[max(0, first - 400) : first + 1], time_s[max(0, first - 400) : first + 1]
+    if before.size < 10:
+        return 0.0
+    index = np.arange(before.size)
+    ahead = np.minimum(np.maximum(np.searchsorted(times, times + STAIR_S), index + 2), before.size - 1)
+    falls = np.where(before > NEAR_END * before[-1], 0.0, before - before[ahead])
+    steps = ranges(falls > max(0.25 * float(before[-1]), 6.0 * noise_of(before)))
+    return max(float(np.max(falls[a:b])) for a, b in steps) if len(steps) >= 3 else 0.0
 
 
 def _usual_fall(smooth_A: Array) -> Array:
@@ -87,17 +111,25 @@ def trend_at(time_s: Array, current_A: Array, last: int, *, earliest: int = 0) -
     if float(np.min(currents)) > 0.1 * float(np.max(currents)):
         value, slope, s, u = _line(times, np.log(currents))
         level = math.exp(value)
-        return Trend(_estimate(level, level * s, level * u, times.size, window), -level * slope)
+        trend = level * np.exp(slope * times)
+        estimate = _estimate(level, level * s, level * u, times.size, window)
+        return Trend(estimate, -level * slope, _unrest(currents - trend))
     value, slope, s, u = _line(times, currents)
-    return Trend(_estimate(value, s, u, times.size, window), -slope)
+    return Trend(_estimate(value, s, u, times.size, window), -slope, _unrest(currents - value - slope * times))
+
+
+def _unrest(residuals: Array) -> float:
+    return max(0.0, float(np.ptp(residuals)) - 7.0 * noise_of(residuals))
 
 
 def _fit_start(current_A: Array, last: int, earliest: int) -> int:
-    """Where the current was 1.35 times what it is in the end, but at least 8 and at most 400 samples back."""
+    """Where the current was within a factor of 1.35 of what it is in the end, but 8 to 400 samples back."""
     smooth = despiked(current_A[earliest : last + 1])
     end = float(np.median(smooth[-3:]))
-    higher = np.flatnonzero(smooth > FIT_SPAN * max(end, 0.0))
-    start = earliest + (int(higher[-1]) + 1 if higher.size else 0)
+    if end <= 4.0 * noise_of(smooth[-FIT_LEAST:]):
+        return max(earliest, last + 1 - FIT_NO_CURRENT)
+    outside = np.flatnonzero((smooth > FIT_SPAN * end) | (smooth < end / FIT_SPAN))
+    start = earliest + (int(outside[-1]) + 1 if outside.size else 0)
     start = max(start, last + 1 - FIT_MOST)
     return max(earliest, min(start, last + 1 - FIT_LEAST))
 

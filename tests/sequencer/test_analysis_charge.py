@@ -25,6 +25,10 @@ def covers(estimate: Estimate | None, truth: float) -> bool:
     return abs(estimate.value - truth) <= t_factor(estimate.dof) * estimate.u
 
 
+def ended_at(current: np.ndarray) -> int | None:
+    return end_of_charge(np.arange(float(current.size)), current, 1.0)
+
+
 @pytest.mark.parametrize(
     ("period_s", "compressed"),
     [(1.0, 1.0), (1.0, 10.0), (0.1, 10.0), (1.0, 20.0)],
@@ -183,17 +187,34 @@ def test_end_is_found_at_the_last_full_sample(level: float, spanning: int) -> No
     """A sample that spans the drop does not count, whatever share of it is full."""
     tail = [] if spanning == 0 else [level * (0.2 + 0.2 * spanning)]
     current = np.array([1.0] * 20 + [level] * 20 + tail + [0.0] * 20)
-    assert end_of_charge(current, 1.0) == 39
+    assert ended_at(current) == 39
 
 
 def test_end_from_a_taper_below_five_percent() -> None:
     current = np.concatenate((np.ones(20), np.exp(-np.arange(1.0, 181.0) / 50.0), np.zeros(20)))
     assert float(current[199]) == pytest.approx(math.exp(-3.6))
-    assert end_of_charge(current, 1.0) == 199
+    assert ended_at(current) == 199
+
+
+@pytest.mark.parametrize(("cutoff_A", "ended"), [(0.15, True), (0.0, False)])
+def test_the_last_step_of_a_stand_in_is_no_end(pack: Callable[..., Any], cutoff_A: float, ended: bool) -> None:
+    """Steps of 10 mV behind 150 mΩ move the current by 67 mA; without a cut-off the last of them reaches 0."""
+    tool = pack(capacity_Ah=0.2, span_V=6.0, grid_V=0.010, charge_As=600.0)
+    tool.constant_current(3.0, 21.0)
+    tool.constant_voltage(21.0, max(cutoff_A, 0.01), 3.0)
+    tool.rest(60.0)
+    reading = measured(tool.log(1, noise_A=0.001, noise_V=0.001))
+    assert reading.ended == ended
+    if ended:
+        assert reading.cutoff_A is not None
+        assert reading.cutoff_bracket_A is not None
+        assert reading.cutoff_bracket_A == pytest.approx(0.01 / 0.15, rel=0.5)
+        slack = 4.0 * reading.cutoff_A.u
+        assert reading.cutoff_A.value - reading.cutoff_bracket_A - slack <= cutoff_A <= reading.cutoff_A.value + slack
 
 
 def test_a_fall_to_a_trickle_is_an_end() -> None:
-    assert end_of_charge(np.array([1.0] * 20 + [0.1] * 20 + [0.01] * 20), 1.0) == 39
+    assert ended_at(np.array([1.0] * 20 + [0.1] * 20 + [0.01] * 20)) == 39
 
 
 @pytest.mark.parametrize(
@@ -206,7 +227,7 @@ def test_a_fall_to_a_trickle_is_an_end() -> None:
     ],
 )
 def test_no_end_where_the_charge_goes_on(current: list[float]) -> None:
-    assert end_of_charge(np.array(current), 1.0) is None
+    assert ended_at(np.array(current)) is None
 
 
 def test_largest_mean_at_a_spacing_of_the_span_is_one_sample() -> None:
