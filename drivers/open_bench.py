@@ -77,17 +77,20 @@ def open_what_answers(file: BenchFile, access: Access) -> OpenBench:
 
     For the way to the safe state, to which one dead meter is no obstacle. Nobody but the one expected is spoken to.
     """
-    serials = {name: file.bench.instruments[name].serial for _, name in file.bench.wired()}
-    sessions = {
-        name: Session(name, access.addresses[name], file.dialect(name), access.library, serial)
-        for name, serial in serials.items()
-    }
+    sessions = {name: _session(file, access, name) for _, name in file.bench.wired()}
     exchange: Exchange = (Inline if access.clock.virtual else Workers)(sessions, access.clock)
     patience_s = max(file.dialect(name).timeout for name in sessions) + 0.5
     bench = _with_roles(file, exchange, Hands(exchange, patience_s), access)
     _open_links(bench, list(sessions))
     bench.identities.update({name: one.identity for name, one in sessions.items() if one.identity is not None})
     return bench
+
+
+def _session(file: BenchFile, access: Access, name: str) -> Session:
+    """What an earlier user left in an error queue must not be taken for the answer to a setting of ours."""
+    dialect = file.dialect(name)
+    clear = Speaker(name, dialect).setting("clear").messages
+    return Session(name, access.addresses[name], dialect, access.library, file.bench.instruments[name].serial, clear)
 
 
 def _open_links(bench: OpenBench, names: list[str]) -> None:

@@ -49,12 +49,24 @@ class Session:
     RPC and struct errors); whatever it is, the link's state is unknown then: it is closed, and a LinkFault says why.
     """
 
-    def __init__(self, name: str, address: str, dialect: Dialect, library: Library, serial: str | None = None) -> None:
-        """`serial`: must be a field of the identity that the instrument answers; None: anyone will do."""
+    def __init__(
+        self,
+        name: str,
+        address: str,
+        dialect: Dialect,
+        library: Library,
+        serial: str | None = None,
+        greeting: tuple[str, ...] = (),
+    ) -> None:
+        """`serial`: must be a field of the identity that the instrument answers; None: anyone will do.
+
+        `greeting`: said once it is known who answers, such as what empties the error queue; answers are dropped.
+        """
         self.name = name
         self.address = address
         self.identity: str | None = None  # as proven at the first opening
         self._serial = serial
+        self._greeting = greeting
         self._dialect = dialect
         self._library = library
         self._link: MessageBasedResource | None = None
@@ -94,7 +106,7 @@ class Session:
         return link  # type: ignore[no-any-return]  # pyvisa's own type depends on the address
 
     def prove(self) -> str:
-        """Ask who answers, hold it against serial number and earlier identity, empty the error queue.
+        """Ask who answers, hold it against serial number and earlier identity, then say the greeting.
 
         Returns the identity. Raises LinkFault, and InstrumentFault for somebody else; the link is closed then.
         """
@@ -104,7 +116,8 @@ class Session:
             self.close(wrong)
             raise InstrumentFault(self.name, wrong)
         self.identity = identity
-        self._empty_queue()
+        for message in self._greeting:
+            self._through("ask" if "?" in message else "tell", message)
         return identity
 
     def _wrong(self, identity: str) -> str | None:
@@ -114,17 +127,6 @@ class Session:
         if self.identity is not None and identity != self.identity:
             return f"answers as '{identity}' where '{self.identity}' was before"
         return None
-
-    def _empty_queue(self) -> None:
-        """What an earlier user left in the queue must not be taken for the answer to a setting of ours."""
-        clear, confirm = self._dialect.settings["clear"].send, self._dialect.confirm
-        if confirm is None:
-            self.tell(clear)
-        elif self._dialect.compound:
-            self.ask(self._dialect.joint.join((clear, confirm)))
-        else:
-            self.tell(clear)
-            self.ask(confirm)
 
     def reopen(self) -> None:
         """Close, open anew, prove: one try. Raises LinkFault or InstrumentFault; the link is closed then."""

@@ -114,8 +114,16 @@ def test_two_instruments_at_one_address(load: Load, again: str) -> None:
 
 @pytest.mark.parametrize(
     "address",
-    ["", "192.0.2.11", "TCPIP::", "TCPIP::192.0.2.11::SOCKET", "TCPIP::192.0.2.11::0::SOCKET"]
-    + ["TCPIP::192.0.2.11::65536::SOCKET", "TCPIP::192.0.2.11::http::SOCKET", "TCPIP:192.0.2.11:5025:SOCKET"],
+    [
+        "",
+        "192.0.2.11",
+        "TCPIP::",
+        "TCPIP::192.0.2.11::SOCKET",
+        "TCPIP::192.0.2.11::0::SOCKET",
+        "TCPIP::192.0.2.11::65536::SOCKET",
+        "TCPIP::192.0.2.11::http::SOCKET",
+        "TCPIP:192.0.2.11:5025:SOCKET",
+    ],
 )
 def test_what_no_visa_library_can_mean_is_refused_before_anything_is_touched(load: Load, address: str) -> None:
     _, faults = load(("TCPIP::192.0.2.11::5025::SOCKET", address))

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator
+from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 
@@ -49,13 +49,13 @@ Virtual = Callable[..., tuple[BenchFile, Access, World]]
 
 
 @pytest.fixture
-def real(virtual: Virtual) -> Iterator[Callable[[dict[str, str]], tuple[BenchFile, Access]]]:
+def real(virtual: Virtual) -> Callable[[dict[str, str]], tuple[BenchFile, Access]]:
     """The same bench as if it were real: addresses given, wall clock, pyvisa-py."""
 
     def make(addresses: dict[str, str]) -> tuple[BenchFile, Access]:
         return virtual()[0], Access("@py", addresses, WallClock())
 
-    yield make
+    return make
 
 
 def silent(count: int) -> tuple[list[object], list[str]]:
@@ -73,7 +73,7 @@ def refused() -> str:
 
 
 def test_every_role_is_identified(virtual: Virtual) -> None:
-    file, access, world = virtual()
+    file, access, _ = virtual()
     bench = open_bench(file, access)
     assert list(bench.identities) == NAMES == [speaker.name for speaker in bench.speakers]
     assert all(serial_number(name) in identity for name, identity in bench.identities.items())

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Sequence
+from contextlib import suppress
 
 import pytest
 from hypothesis import given
@@ -100,10 +101,8 @@ def test_every_number_comes_back(value: float, form: str) -> None:
 
 @given(st.text(max_size=12))
 def test_any_text_is_a_number_or_a_reply_fault(text: str) -> None:
-    try:
+    with suppress(ReplyFault):
         assert isinstance(number("meter", text), float)
-    except ReplyFault:
-        pass
 
 
 # -- settings ---------------------------------------------------------------------------------------------------
@@ -155,7 +154,7 @@ def test_a_refusal_names_instrument_setting_value_and_what_was_said() -> None:
 
 @pytest.mark.parametrize("back", ["4.0", "0", "9.91E37", "+1.000000000E+00"])
 def test_a_readback_that_differs_is_a_fault(back: str) -> None:
-    with pytest.raises(InstrumentFault, match="'current_limit' was set to 4.125, reads back"):
+    with pytest.raises(InstrumentFault, match="'current_limit' was set to 4\\.125, reads back"):
         SUPPLY.verify(reply(back, NO_ERROR), "current_limit", 4.125)
 
 

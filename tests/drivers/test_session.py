@@ -20,6 +20,7 @@ from drivers.text.faults import Faults
 from drivers.trouble import InstrumentFault, LinkFault, ReplyFault
 
 TIMEOUT_s = 0.3
+GREETING = ("*CLS;:SYST:ERR?",)
 IDENTITY = "invented,bench meter,A0001,1.0"
 Said = Sequence[bytes | float | None]  # bytes: say them; a number: wait so long; None: close the connection
 Script = Callable[[int, str], Said]  # (how many clients have spoken, this one too; the line heard) -> what to do
@@ -120,7 +121,7 @@ def link(meter_dialect: Dialect) -> Iterator[Callable[..., tuple[Session, Peer]]
 
     def make(script: Script = healthy, serial: str | None = None) -> tuple[Session, Peer]:
         peer = Peer(script)
-        made.append((Session("meter_node", peer.address, meter_dialect, "@py", serial), peer))
+        made.append((Session("meter_node", peer.address, meter_dialect, "@py", serial, GREETING), peer))
         return made[-1]
 
     yield make
@@ -322,7 +323,7 @@ def test_another_instrument_at_the_same_address_is_not_spoken_to(link: Link) -> 
     session, peer = link(script)
     session.reopen()
     fails(session, "no answer", 10 * TIMEOUT_s)
-    with pytest.raises(InstrumentFault, match="answers as 'invented,bench supply,B0002,1.0' where"):
+    with pytest.raises(InstrumentFault, match="answers as 'invented,bench supply,B0002,1\\.0' where"):
         session.reopen()
     assert peer.heard[-1] == "*IDN?"
     with pytest.raises(LinkFault, match="the link is closed \\(answers as"):
