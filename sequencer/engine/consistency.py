@@ -32,6 +32,7 @@ def check(
         _check_thresholds(specification, pack, faults)
     if bench is None or not all(name in bench.dialects for _, name in bench.bench.wired()):
         return  # a place in the wiring is empty, which is a fault of its own
+    _check_accuracy(bench, faults)
     if pack is not None:
         _check_node(pack, bench, faults)
     if specification is not None:
@@ -78,6 +79,21 @@ def _check_thresholds(specification: Bound[Specification], pack: Bound[Pack], fa
         if band is not None and band.high is not None and band.high > bound_V:
             told = f"limit {si(band.high, 'V')} lies above the pack's guard bound {si(bound_V, 'V')} per cell"
             faults.add(specification.place("charge", *path), told)
+
+
+def _check_accuracy(bench: BenchFile, faults: Faults) -> None:
+    """What a judgement will need must be known before the run: how good each reading is."""
+    for where, quantity in (
+        ("node.voltage", "voltage"),
+        ("node.charger_voltage", "voltage"),
+        ("node.current.meter", "voltage"),
+        ("node.supply", "current"),
+        ("node.load", "current"),
+    ):
+        name, _, dialect = bench.at(where)
+        if not getattr(dialect.accuracy, quantity):
+            told = f"the dialect '{dialect.name}' of '{name}' states no accuracy of {quantity}; nothing could be judged"
+            faults.add(bench.bound.place("wiring", *where.split(".")), told)
 
 
 def _check_node(pack: Bound[Pack], bench: BenchFile, faults: Faults) -> None:

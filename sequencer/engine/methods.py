@@ -33,6 +33,7 @@ ENDED = 0.05  # of the first plateau
 NODE_TOLERANCE_V = 0.05
 NODE_TOLERANCE = 0.005
 NUDGE_V = 0.02  # per cell: the small step by which the delay of the loop is measured
+LEAST_FIXTURE = 0.8  # of ballast and shunt as declared: a power resistor's tolerance and its heat
 SETTLED = 0.05  # of that step
 
 
@@ -87,8 +88,8 @@ def insert(loop: Loop, step: Insert, pack: Pack, specification: Specification, f
     settling_s = measure_settling(loop, stand_in.node_V, NUDGE_V * pack.cells)
     zero = Means()
     loop.observe(MEAN_s, zero)
-    wiring = bench.file.bench.wiring.node
-    loop.follow_at(settling_s, wiring.ballast + wiring.current.shunt_ohm, pack.resistance, forced_delay)
+    _verify_at_rest(loop, zero.drop_V, stand_in.node_V)
+    loop.follow_at(settling_s, _declared_ohm(loop), pack.resistance, forced_delay)
     loop.stand_in = stand_in
     loop.set(Deed(bench.mains, "on"))
     charges = _wait_for_charge(loop, specification)
@@ -103,6 +104,18 @@ def _verify_node(loop: Loop, expected_V: float) -> None:
     if not seen.good or abs(seen.value - expected_V) > NODE_TOLERANCE_V + NODE_TOLERANCE * expected_V:
         told = f"reads {si(seen.value, 'V')}, the supply was set to {si(expected_V, 'V')}: open lead, wrong wiring?"
         raise InstrumentFault(loop.bench.node_meter.name, told)
+
+
+def _declared_ohm(loop: Loop) -> float:
+    wiring = loop.bench.file.bench.wiring.node
+    return wiring.ballast + wiring.current.shunt_ohm
+
+
+def _verify_at_rest(loop: Loop, drop_V: float, node_V: float) -> None:
+    """With no current the charger's contacts stand at the node's voltage; before the mains are on."""
+    if not abs(drop_V) <= NODE_TOLERANCE_V + NODE_TOLERANCE * node_V:
+        told = f"reads {si(drop_V, 'V')} more than the node with no current flowing: open lead, wrong wiring?"
+        raise InstrumentFault(loop.bench.charger_meter.name, told)
 
 
 def measure_settling(loop: Loop, node_V: float, nudge_V: float) -> float:
@@ -159,10 +172,9 @@ def measure_fixture(loop: Loop, zero_V: float, settling_s: float, pack: Pack, fo
     means = Means()
     loop.observe(MEAN_s, means)
     fixture_ohm = (means.drop_V - zero_V) / means.mean_A
-    if not 0 < fixture_ohm < 10:
-        told = (
-            f"{si(means.drop_V, 'V')} stands between charger and node at {si(means.mean_A, 'A')}: wiring or meter wrong"
-        )
+    if not LEAST_FIXTURE * _declared_ohm(loop) < fixture_ohm < 10:
+        told = f"{si(means.drop_V - zero_V, 'V')} lie between charger and node at {si(means.mean_A, 'A')}"
+        told += f", over {si(_declared_ohm(loop), 'Ω')} of ballast and shunt: is the meter at the charger's contacts?"
         raise InstrumentFault(loop.bench.charger_meter.name, told)
     loop.guard.fixture_ohm = fixture_ohm
     loop.follow_at(settling_s, fixture_ohm, pack.resistance, forced_delay)

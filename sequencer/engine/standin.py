@@ -12,7 +12,7 @@ from sequencer.engine.stability import delay_scans, gain
 from sequencer.model.pack import Pack
 from sequencer.model.specification import Specification
 
-NEAR_V = 0.025  # per cell: this close to a declared threshold the pack moves at its own pace
+NEAR_V = 0.010  # per cell around a declared band: there the pack is real; farther off no verdict hangs on it
 FLAT = 0.005  # relative change of the current over LOOK_BACK_s below which it counts as constant
 LOOK_BACK_s = 10.0
 TAPER_SHARE = 0.02  # of the current: largest change within one response time away from the cut-off
@@ -51,7 +51,7 @@ class Follow:
 class Events:
     """Where something is declared to happen, and how long the charger takes to decide."""
 
-    thresholds_V: tuple[float, ...]  # per cell, ascending
+    bands_V: tuple[tuple[float, float], ...]  # per cell, (low, high), ascending
     cutoff_A: float | None
     response_s: float
     largest: float  # compression asked for by the procedure
@@ -60,7 +60,7 @@ class Events:
     def of(cls, specification: Specification, compression: float) -> Events:
         cutoff = specification.charge.cutoff
         high = None if cutoff is None else cutoff.high
-        return cls(specification.thresholds_V, high, specification.dwell.response, compression)
+        return cls(specification.events_V, high, specification.dwell.response, compression)
 
 
 @dataclass
@@ -143,11 +143,12 @@ class StandIn:
         return TAPER_SHARE * time_constant_s / events.response_s
 
     def _in_plateau(self, cell_V: float, current_A: float, events: Events) -> float:
-        """Near a declared threshold the pack is real; elsewhere one scan moves a cell by LARGEST_STEP_V at most."""
-        above_all = bool(events.thresholds_V) and cell_V > events.thresholds_V[-1] - NEAR_V
-        if above_all or any(abs(cell_V - threshold) < NEAR_V for threshold in events.thresholds_V):
+        """In and near a declared band the pack is real; elsewhere one scan moves a cell by LARGEST_STEP_V at most."""
+        bands = [(low - NEAR_V, high + NEAR_V) for low, high in events.bands_V]
+        above_all = bool(bands) and cell_V > bands[-1][0]
+        if above_all or any(low < cell_V < high for low, high in bands):
             return 1.0
         real_rate_V = current_A * self.pack.slope_V(self.soc) / (3600.0 * self.pack.capacity)
-        ahead = [threshold - NEAR_V - cell_V for threshold in events.thresholds_V if threshold - NEAR_V > cell_V]
-        room_V = min([LARGEST_STEP_V, *(gap / 2 for gap in ahead)])  # never run through a window between two scans
+        ahead = [low - cell_V for low, _ in bands if low > cell_V]
+        room_V = min([LARGEST_STEP_V, *(gap / 2 for gap in ahead)])  # never run through a band between two scans
         return room_V * self.pack.cells / max(real_rate_V, 1e-9)

@@ -7,7 +7,17 @@ from typing import Literal
 from pydantic import BaseModel, ConfigDict, Field, model_validator
 
 from drivers.text.binding import Written
-from drivers.text.measures import AmpereLimit, Flag, PositiveAmperes, PositiveSeconds, Rule, Seconds, VoltLimit, refuse
+from drivers.text.measures import (
+    AmpereLimit,
+    Band,
+    Flag,
+    PositiveAmperes,
+    PositiveSeconds,
+    Rule,
+    Seconds,
+    VoltLimit,
+    refuse,
+)
 
 Algorithm = Literal["cc-cv", "stepped-cc", "stepped-cc-cv", "cc-only", "cv-only", "constant-power", "pulsed"]
 
@@ -72,15 +82,17 @@ class Specification(Written):
         return self.rating_current or 1.5 * self.largest_declared_A
 
     @property
-    def thresholds_V(self) -> tuple[float, ...]:
-        """Voltages per cell at which something is declared to happen, ascending."""
+    def events_V(self) -> tuple[tuple[float, float], ...]:
+        """Bands of voltage per cell in which something is declared to happen, (low, high), ascending."""
         charge = self.charge
         bands = [stage.threshold_per_cell for stage in charge.stages] + [charge.voltage_per_cell]
-        middles = [_middle(band.low, band.high) for band in bands if band is not None]
-        return tuple(sorted(value for value in middles if value is not None))
+        return tuple(sorted(ends for ends in map(_ends, bands) if ends is not None))
 
 
-def _middle(low: float | None, high: float | None) -> float | None:
-    if low is None or high is None:
-        return low if high is None else high
-    return (low + high) / 2
+def _ends(band: Band | None) -> tuple[float, float] | None:
+    """Both ends of a band; where one is open, the other stands for it."""
+    if band is None or (band.low is None and band.high is None):
+        return None
+    low = band.high if band.low is None else band.low
+    high = band.low if band.high is None else band.high
+    return (low, high) if low is not None and high is not None else None
