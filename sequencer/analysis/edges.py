@@ -9,6 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
+from itertools import pairwise
 from typing import Literal, Self
 
 from sequencer.analysis.uncertainty import Budget, Contribution
@@ -16,7 +17,7 @@ from sequencer.analysis.wording import quantity
 
 Scale = Literal["geometric", "arithmetic"]
 UNDECIDED = "undecided"
-TRIES = 2  # of one setting that gave no answer, or whose control failed, before the search gives up
+TRIES = 2  # of one setting without an answer, or failed controls in a row, before a search gives up
 
 
 def next_ohm(low_ohm: float, high_ohm: float, resolution: float) -> float | None:
@@ -81,11 +82,12 @@ class EdgeInterval:
 
 @dataclass(frozen=True)
 class EdgeSearch:
-    """A search for one edge, as far as it has come.
+    """A search for the edge next to the low end of a bracket, as far as it has come.
 
     answers : (setting, class) in the order given, both ends of the bracket first.
-    vouched : how many of them a good control stands behind.    further : brackets with edges of their own that this
-    search came across and left aside.    trouble : why it ended without narrowing down; the interval still holds then.
+    vouched : how many of them a good control stands behind.    unclear, failed : tries of the present setting that gave
+    no answer, and failed controls in a row.    trouble : why the search ended before the interval was as narrow as
+    wanted; what the interval says holds nevertheless.
     """
 
     answers: tuple[tuple[float, str], ...]
@@ -93,8 +95,8 @@ class EdgeSearch:
     scale: Scale = "geometric"
     unit: str = "Ω"
     vouched: int = 2
-    tries: int = 0
-    further: tuple[EdgeInterval, ...] = ()
+    unclear: int = 0
+    failed: int = 0
     trouble: str | None = None
 
     @classmethod
@@ -108,9 +110,7 @@ class EdgeSearch:
         """
         _check_bracket(low, high, resolution, scale)
         if low_class == high_class or UNDECIDED in (low_class, high_class):
-            raise ValueError(
-                f"low_class, high_class: expected two classes that differ, got '{low_class}' and '{high_class}'"
-            )
+            raise ValueError(f"high_class: expected two classes that differ, got '{low_class}' and '{high_class}'")
         return cls(((low, low_class), (high, high_class)), resolution, scale, unit)
 
     @property
@@ -118,24 +118,27 @@ class EdgeSearch:
         return self.answers[0][1]
 
     @property
-    def high_class(self) -> str:
-        return self.answers[1][1]
-
-    @property
     def interval(self) -> EdgeInterval:
-        """What the answers say together: below it only low_class was seen, above it only high_class.
+        """What the answers say together: below it only low_class was seen, above it never again.
 
         Where answers contradict each other it spans them all, so that it still holds the edge, sharp or not.
         """
         first_other = min(value for value, seen in self.answers if seen != self.low_class)
-        last_other = max(value for value, seen in self.answers if seen != self.high_class)
-        low = max(value for value, _ in self.answers if value < first_other or value == self.answers[0][0])
-        high = min(value for value, _ in self.answers if value > last_other or value == self.answers[1][0])
-        return EdgeInterval(min(low, high), max(low, high), self.low_class, self.high_class)
+        last_same = max(value for value, seen in self.answers if seen == self.low_class)
+        low = max((value for value, _ in self.answers if value < first_other), default=first_other)
+        high = min((value for value, _ in self.answers if value > last_same), default=last_same)
+        high_class = next((seen for value, seen in self.answers if value == high and seen != self.low_class), "")
+        return EdgeInterval(low, high, self.low_class, high_class or self.answers[1][1])
+
+    @property
+    def further(self) -> tuple[EdgeInterval, ...]:
+        """Brackets of more edges above this one: a class between those of the two ends was met on the way."""
+        above = sorted(answer for answer in self.answers if answer[0] >= self.interval.high)
+        return tuple(EdgeInterval(a[0], b[0], a[1], b[1]) for a, b in pairwise(above) if a[1] != b[1])
 
     @property
     def steps_left(self) -> int:
-        """Settings still to be asked for, if every answer is one of the two classes."""
+        """Settings still to be asked for, if all goes well."""
         found = self.interval
         return 0 if self.trouble else _steps(found.low, found.high, self.resolution, self.scale)
 
@@ -151,19 +154,19 @@ class EdgeSearch:
         """The search after an answer. Raises ValueError when nothing was asked and no setting is named.
 
         seen : a class; "undecided" has the same setting asked once more, then ends the search.
-        at : the setting that was really made, where it is not the one asked (a resistor has steps), or a setting seen
-        besides. A third class splits the bracket: the edge next to the low end is pursued, the other goes to `further`.
+        at : the setting that was really made, where it is not the one asked (a resistor has steps), or one seen beside.
         """
         value = self.ask() if at is None else at
         if value is None:
             raise ValueError("at: nothing was asked; name the setting that was seen")
         if seen == UNDECIDED:
-            return self._again(f"{quantity(value, self.unit)} gave no clear answer {TRIES} times")
+            shown = quantity(value, self.unit)
+            unclear = self.unclear + 1
+            why = f"{shown} gave no clear answer in {TRIES} tries" if unclear >= TRIES else None
+            return replace(self, unclear=unclear, trouble=self.trouble or why)
         before = self.interval
-        if seen not in (self.low_class, self.high_class):
-            return self._split(value, seen)
-        after = replace(self, answers=(*self.answers, (value, seen)), tries=0)
-        return after._judged(value, seen, before)
+        after = replace(self, answers=(*self.answers, (value, seen)), unclear=0)
+        return replace(after, trouble=self.trouble or after._contradiction() or after._too_coarse(value, before))
 
     def controlled(self, good: bool) -> Self:
         """The search after a control point: a good one vouches for the answers so far.
@@ -172,44 +175,30 @@ class EdgeSearch:
         looks like "no charge"; the same setting is then asked once more, and a second failure ends the search.
         """
         if good:
-            return replace(self, vouched=len(self.answers))
-        kept = replace(self, answers=self.answers[: self.vouched])
-        lost = len(self.answers) - self.vouched
-        return kept._again(f"the control failed {TRIES} times, {lost} answers before it count for nothing")
+            return replace(self, vouched=len(self.answers), failed=0)
+        failed = self.failed + 1
+        void = [quantity(value, self.unit) for value, _ in self.answers[self.vouched :]]
+        told = f"the control failed {TRIES} times in a row"
+        why = f"{told}; what was seen at {', '.join(void)} counts for nothing" if void else told
+        kept = replace(self, answers=self.answers[: self.vouched], failed=failed, unclear=0)
+        return replace(kept, trouble=why if failed >= TRIES else kept._contradiction())
 
-    def _again(self, why: str) -> Self:
-        tries = self.tries + 1
-        return replace(self, tries=tries, trouble=why if tries >= TRIES else self.trouble)
+    def _contradiction(self) -> str | None:
+        """Words for a low_class answer at or above another class; the edge is not sharp, or something drifted."""
+        first, other = min((value, seen) for value, seen in self.answers if seen != self.low_class)
+        last = max(value for value, seen in self.answers if seen == self.low_class)
+        if last < first:
+            return None
+        if last == first:
+            return f"answers contradict each other: {quantity(first, self.unit)} showed {self.low_class} and {other}"
+        low, high = quantity(first, self.unit), quantity(last, self.unit)
+        return f"answers contradict each other: {other} at {low}, {self.low_class} above it at {high}"
 
-    def _judged(self, value: float, seen: str, before: EdgeInterval) -> Self:
-        """Trouble where an answer contradicts earlier ones, or a step of the resistor lets nothing new be set."""
-        if (value <= before.low and seen != self.low_class) or (value >= before.high and seen != self.high_class):
-            return replace(self, trouble=f"answers contradict each other: {self._contradiction(value, seen)}")
-        if value in (before.low, before.high) and self.steps_left:
-            shown = quantity(before.width, self.unit)
-            return replace(self, trouble=f"no setting lies within the last {shown}; the resistor has no finer step")
-        return self
-
-    def _contradiction(self, value: float, seen: str) -> str:
-        beyond = self.low_class if seen == self.high_class else self.high_class
-        others = [other for other, answer in self.answers if answer == beyond]
-        at = max(others) if seen == self.high_class else min(others)
-        if at == value:
-            return f"{quantity(value, self.unit)} showed {seen} and, another time, {beyond}"
-        side = "above" if at > value else "below"
-        return f"{seen} at {quantity(value, self.unit)}, {beyond} {side} it at {quantity(at, self.unit)}"
-
-    def _split(self, value: float, seen: str) -> Self:
-        found = self.interval
-        if not found.low < value < found.high:
-            words = f"{seen} at {quantity(value, self.unit)}, outside {found.words(self.unit)}"
-            return replace(self, trouble=f"answers contradict each other: {words}")
-        aside = EdgeInterval(value, found.high, seen, self.high_class)
-        kept = [(setting, answer) for setting, answer in self.answers[2:] if answer == self.low_class]
-        answers = (self.answers[0], (value, seen), *kept)
-        return replace(
-            self, answers=answers, vouched=min(self.vouched, len(answers)), tries=0, further=(*self.further, aside)
-        )
+    def _too_coarse(self, value: float, before: EdgeInterval) -> str | None:
+        """Words where a setting fell on an end of the bracket: the resistor has no step between."""
+        if value not in (before.low, before.high) or not self.steps_left:
+            return None
+        return f"no setting lies within the last {quantity(before.width, self.unit)}; there is no finer step"
 
 
 def edge_budget(interval: EdgeInterval, contributions: Iterable[Contribution] = (), *, unit: str = "Ω") -> Budget:

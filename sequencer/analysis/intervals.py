@@ -4,8 +4,8 @@ The true value lies anywhere in [low, high], and both ends are uncertain by U = 
 and the guard band w (U, or 0 for simple acceptance) the zones of ILAC-G8:09/2019 4.2.3 read, for an upper limit TL:
 pass m <= TL - (w + h), that is high <= TL - w; conditional pass m <= TL; conditional fail m <= TL + (w + h), that is
 low <= TL + w; fail beyond. So the whole interval passes, or the whole of it fails, or the word is conditional, on the
-side of its middle. For h = 0 this is `decision.decide`. Simple acceptance knows no conditional words for a value; for an
-interval across a limit they stay, because neither of the two other words would be true.
+side of its middle. For h = 0 this is `decision.decide`. Simple acceptance has no conditional words for a value; for
+an interval across a limit they stay, because neither of the two other words would be true.
 """
 
 from __future__ import annotations
@@ -75,8 +75,8 @@ def decide_interval(
 ) -> Decision:  # fmt: skip
     """Verdict of an interval against one limit or two; each limit is judged by itself and the worse word holds.
 
-    low, high : ends of the interval, low <= high, in `unit`.    u, k : standard uncertainty of the ends (the bracket not
-    among it) and its coverage factor.    rule : "guarded" (w = k u) or "simple" (w = 0).
+    low, high : ends of the interval, low <= high, in `unit`.    u, k : standard uncertainty of the ends (without the
+    bracket) and its coverage factor.    rule : "guarded" (w = k u) or "simple" (w = 0).
     The decision's guard_band is w; p_conform takes the true value as evenly spread over the interval and the ends'
     error as normal. Raises ValueError naming the argument.
     """
@@ -108,7 +108,7 @@ def telling_sizes(width: float, u: float, k: float, rule: Rule) -> Sizes:
     """What an interval of this width, with ends uncertain by k u, can tell about an edge beyond its limit.
 
     An edge d beyond an upper limit lies in its interval, whose ends are found up to U wrong: high >= TL + d - U passes
-    for high <= TL - w, hence only where d <= U - w; low >= TL + d - width - U fails for certain where it exceeds TL + w.
+    for high <= TL - w, hence only where d <= U - w; low >= TL + d - width - U fails for certain once above TL + w.
     """
     for name, number in (("width", width), ("u", u), ("k", k)):
         if not (math.isfinite(number) and number >= 0.0):

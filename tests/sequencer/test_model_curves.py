@@ -8,7 +8,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from drivers.text.binding import KINDS, Bound, bind
-from drivers.text.document import compose
+from drivers.text.document import compose, plain
 from drivers.text.faults import Faults, Place
 from sequencer.model.curves import CURVES, Curve, load_curve
 
@@ -168,6 +168,11 @@ LAWS = {
 }
 
 
+CURVE = {
+    law: Curve.model_validate(plain(compose(f"name: {law}\n{body}".encode(), law).root)) for law, body in LAWS.items()
+}
+
+
 @pytest.mark.parametrize("law", LAWS)
 @given(share=st.floats(0.0, 1.0), further=st.floats(1e-6, 1.0))
 def test_monotone_and_back_again(law: str, share: float, further: float) -> None:
@@ -192,6 +197,3 @@ def test_the_slope_is_the_derivative(law: str, share: float) -> None:
         return  # two slopes meet at a point
     numeric = (curve.ohm_at(here + step) - curve.ohm_at(here - step)) / (2 * step)
     assert curve.slope_ohm_per_K(here) == pytest.approx(numeric, rel=1e-5)
-
-
-CURVE = {law: curve_of(body) for law, body in LAWS.items()} if KINDS.setdefault("curve", 1) else {}
