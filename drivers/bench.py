@@ -12,8 +12,7 @@ from drivers.text.binding import Written
 from drivers.text.measures import (
     AmpereHours,
     Amperes,
-    Band,
-    Limit,
+    Measure,
     Ohms,
     PositiveAmperes,
     PositiveVolts,
@@ -21,6 +20,7 @@ from drivers.text.measures import (
     Volts,
     refuse,
 )
+from drivers.wiring import ChannelRef, Wiring
 
 
 class _Part(BaseModel):
@@ -63,45 +63,6 @@ class Instrument(_Part):
     dialect: str = Field(description="name of a shipped dialect, or path of a dialect file")
     serial: str | None = Field(None, description="must stand in the identity that the instrument answers")
     certificate: Certificate | None = None
-
-
-def _has_tolerance(value: Band) -> Band:
-    if value.nominal is None or value.nominal <= 0:
-        raise refuse(f'"{value.text}": a shunt needs a resistance and its tolerance, such as "10 mΩ ± 0.1 %"')
-    return value
-
-
-class CurrentPath(_Part):
-    """How the charger's current is measured: a Kelvin shunt and the meter across it."""
-
-    shunt: Annotated[Band, Limit("resistance"), AfterValidator(_has_tolerance)]
-    meter: str
-
-    @property
-    def shunt_ohm(self) -> float:
-        assert self.shunt.nominal is not None
-        return self.shunt.nominal
-
-
-class NodeWiring(_Part):
-    """The junction of charger, supply and load, and who measures there."""
-
-    supply: str
-    load: str
-    voltage: str = Field(description="meter at the node")
-    charger_voltage: str = Field(description="meter at the charger's own contacts (Kelvin)")
-    current: CurrentPath
-    ballast: Ohms = Field(description="resistor in the charger's path, at least half of the pack's resistance")
-    ballast_power: Annotated[str, Field(description="its rating, such as '10 W'")] | None = None
-
-
-class MainsWiring(_Part):
-    switch: str
-
-
-class Wiring(_Part):
-    node: NodeWiring
-    mains: MainsWiring
 
 
 class Limits(_Part):
@@ -159,6 +120,11 @@ class Virtual(_Part):
     )
     errors: Annotated[float, BeforeValidator(_scale)] = Field(1.0, description="scale of gain, offset, drift, noise")
     node_offset: Volts = 0.0
+    tap_resistance: Ohms = Field(0.5, description="source resistance of each cell tap, beyond its shunt")
+    contact_walk: Ohms = Field(0.02, description="how far a signal contact's resistance wanders between closings")
+    resistor_glitch: Seconds = Field(0.02, description="a programmable resistor is open for so long while it switches")
+    welded: ChannelRef | None = Field(None, description="a contact that never opens (trouble)")
+    ambient: Annotated[float, Measure("temperature")] = 23.0
 
 
 class Bench(Written):
@@ -174,23 +140,9 @@ class Bench(Written):
     virtual: Virtual | None = None
 
     def wired(self) -> list[tuple[str, str]]:
-        """(place in the wiring, name of the instrument there), in a fixed order."""
-        node = self.wiring.node
-        return [
-            ("node.supply", node.supply),
-            ("node.load", node.load),
-            ("node.voltage", node.voltage),
-            ("node.charger_voltage", node.charger_voltage),
-            ("node.current.meter", node.current.meter),
-            ("mains.switch", self.wiring.mains.switch),
-        ]
+        """(place in the wiring, name of the instrument there), in a fixed order; several places may share one."""
+        return [(where, what if isinstance(what, str) else what.instrument) for where, what, _ in self.wiring.places()]
 
-
-ROLE_AT = {
-    "node.supply": "supply",
-    "node.load": "load",
-    "node.voltage": "meter",
-    "node.charger_voltage": "meter",
-    "node.current.meter": "meter",
-    "mains.switch": "mains switch",
-}
+    def used(self) -> list[str]:
+        """Names of the instruments that the wiring uses, each once, in the order of the wiring."""
+        return list(dict.fromkeys(name for _, name in self.wired()))

@@ -6,7 +6,7 @@ import re
 from dataclasses import dataclass
 from pathlib import Path
 
-from drivers.bench import ROLE_AT, Bench, Instrument
+from drivers.bench import Bench, Instrument
 from drivers.dialect import Dialect
 from drivers.shipped import locate
 from drivers.text.binding import Bound, bind
@@ -69,15 +69,22 @@ def _dialect(bound: Bound[Bench], name: str, faults: Faults) -> Bound[Dialect] |
 
 
 def _check_wiring(bound: Bound[Bench], faults: Faults) -> None:
+    """Every instrument exists, and no two places share an instrument or a channel of one."""
     bench = bound.model
     used: dict[str, str] = {}
-    for where, name in bench.wired():
-        place = bound.place("wiring", *where.split("."))
+    for where, what, _ in bench.wiring.places():
+        place, name = _place(bound, where), what if isinstance(what, str) else what.instrument
         if name not in bench.instruments:
             faults.add(place, unknown(name, bench.instruments, "instrument"))
-        elif name in used:
-            faults.add(place, f"'{name}' stands at {used[name]} already; each place needs an instrument of its own")
-        used.setdefault(name, where)
+        elif str(what) in used:
+            need = "an instrument" if isinstance(what, str) else "a channel"
+            faults.add(place, f"'{what}' stands at {used[str(what)]} already; each place needs {need} of its own")
+        used.setdefault(str(what), where)
+
+
+def _place(bound: Bound[Bench], where: str) -> Place:
+    """The place in the file of a place in the wiring, such as "taps.0.supply"."""
+    return bound.place("wiring", *(int(part) if part.isdigit() else part for part in where.split(".")))
 
 
 def _check_addresses(bound: Bound[Bench], faults: Faults) -> None:
@@ -112,9 +119,9 @@ def _check_address(address: str, place: Place, faults: Faults) -> None:
 
 
 def _check_roles(bench_file: BenchFile, faults: Faults) -> None:
-    for where, name in bench_file.bench.wired():
+    for where, what, role in bench_file.bench.wiring.places():
+        name = what if isinstance(what, str) else what.instrument
         dialect = bench_file.dialects.get(name)
-        if dialect is not None and dialect.model.role != ROLE_AT[where]:
-            place = bench_file.bound.place("wiring", *where.split("."))
+        if dialect is not None and dialect.model.role != role:
             told = f"'{name}' speaks '{dialect.model.name}', the dialect of a {dialect.model.role}"
-            faults.add(place, f"{told}; a {ROLE_AT[where]} is needed here")
+            faults.add(_place(bench_file.bound, where), f"{told}; a {role} is needed here")

@@ -10,33 +10,20 @@ from typing import Annotated, Any, Literal
 
 from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, model_validator
 
+from drivers.needs import NEEDS, Role
 from drivers.text.binding import Written
-from drivers.text.measures import Flag, Measure, PositiveAmperes, PositiveSeconds, PositiveVolts, Ratio, refuse
+from drivers.text.measures import (
+    Flag,
+    Measure,
+    PositiveAmperes,
+    PositiveOhms,
+    PositiveSeconds,
+    PositiveVolts,
+    Ratio,
+    refuse,
+)
 
-Role = Literal["supply", "load", "meter", "mains switch"]
-
-# role -> (settings, readings -> fields) that a dialect of the role must have.
-NEEDS: dict[str, tuple[frozenset[str], dict[str, frozenset[str]]]] = {
-    "supply": (
-        frozenset({"clear", "voltage", "current_limit", "overvoltage", "on", "off"}),
-        {"state": frozenset({"voltage", "current", "output", "status"})},
-    ),
-    "load": (
-        frozenset({"clear", "constant_current", "current", "overcurrent", "on", "off"}),
-        {"state": frozenset({"voltage", "current", "input", "status"})},
-    ),
-    "meter": (frozenset({"clear", "range", "integration"}), {"volts": frozenset({"volts"})}),
-    "mains switch": (frozenset({"clear", "on", "off"}), {"state": frozenset({"output"})}),
-}
-STATUS = {
-    "supply": frozenset({"constant_voltage", "constant_current"}),
-    "load": frozenset({"tripped"}),
-    "meter": frozenset[str](),
-    "mains switch": frozenset[str](),
-}
-
-# Settings of any role that take a value; all others take none.
-VALUED = frozenset({"voltage", "current_limit", "overvoltage", "current", "overcurrent", "range", "integration"})
+PLACES = frozenset({"value", "channel"})  # what may stand in braces in a command text
 
 
 def _is_query(value: str) -> str:
@@ -48,61 +35,108 @@ def _is_query(value: str) -> str:
 Query = Annotated[str, AfterValidator(_is_query)]
 
 
+def _braces(text: str) -> set[str]:
+    """The names in braces in a command text. Refuses what cannot be filled in."""
+    try:
+        names = {name for _, name, _, _ in string.Formatter().parse(text) if name is not None}
+    except ValueError as reason:
+        raise refuse(f'"{text}": {reason}') from reason
+    if names - PLACES:
+        raise refuse(f'"{text}": only {{value}} and {{channel}} may stand in a command text')
+    try:
+        text.format(value=1.0, channel="1")
+    except (ValueError, LookupError) as reason:
+        raise refuse(f'"{text}": a number cannot be written so ({reason})') from reason
+    return names
+
+
+def _texts(value: Any) -> Any:
+    return (value,) if isinstance(value, str) else tuple(value) if isinstance(value, list) else value
+
+
+Texts = Annotated[tuple[str, ...], BeforeValidator(_texts), Field(min_length=1)]
+
+
 class Setting(BaseModel):
-    """One setting: the text sent, with {value}; the query that reads it back, and the words that prove it.
+    """One setting: the texts sent, in order, with {value} and {channel}; the query that reads it back; its proof.
 
     Without `expect` the readback must be the number that was set.
     """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
-    send: str
+    send: Texts
     back: Query | None = None
     expect: tuple[str, ...] = ()
 
     @model_validator(mode="after")
-    def _only_value(self) -> Setting:
-        try:
-            names = {name for _, name, _, _ in string.Formatter().parse(self.send) if name is not None}
-        except ValueError as reason:
-            raise refuse(f'"{self.send}": {reason}') from reason
-        if names - {"value"}:
-            raise refuse(f'"{self.send}": only {{value}} may stand in a command text')
-        try:
-            self.send.format(value=1.0)
-        except (ValueError, LookupError) as reason:
-            raise refuse(f'"{self.send}": a number cannot be written so ({reason})') from reason
-        return self
-
-    @model_validator(mode="after")
-    def _provable(self) -> Setting:
+    def _fits(self) -> Setting:
+        for text in (*self.send, self.back or ""):
+            _braces(text)
         if self.expect and self.back is None:
-            raise refuse(f'"{self.send}": `expect` needs a `back` to be held against')
+            raise refuse(f'"{self.words}": `expect` needs a `back` to be held against')
         if self.back is not None and not self.expect and not self.takes_value:
-            raise refuse(f'"{self.send}" sets no value: its `back` needs an `expect`')
+            raise refuse(f'"{self.words}" sets no value: its `back` needs an `expect`')
         return self
 
     @property
+    def words(self) -> str:
+        return "; ".join(self.send)
+
+    @property
     def takes_value(self) -> bool:
-        return any(name == "value" for _, name, _, _ in string.Formatter().parse(self.send))
+        return any("value" in _braces(text) for text in self.send)
+
+    @property
+    def takes_channel(self) -> bool:
+        return any("channel" in _braces(text) for text in self.send)
 
 
 def _setting(value: Any) -> Any:
-    return {"send": value} if isinstance(value, str) else value
+    return {"send": value} if isinstance(value, (str, list)) else value
 
 
 class Reading(BaseModel):
-    """One reading: a query, and the names of the fields of its answer, in order."""
+    """One reading: its queries, in order, and the names of the fields of all answers together, in order.
+
+    A reading of {channel} gives one field a channel; `between` is what parts them in the answer to a list of channels.
+    """
 
     model_config = ConfigDict(extra="forbid", frozen=True)
-    ask: Query
+    ask: Texts
     fields: tuple[str, ...] = Field(min_length=1)
+    between: str | None = Field(None, description="one query for a whole list of channels, its values parted by this")
 
     @model_validator(mode="after")
-    def _named_once(self) -> Reading:
+    def _fits(self) -> Reading:
+        for text in self.ask:
+            if "value" in _braces(text):
+                raise refuse(f'"{text}": a reading takes no {{value}}')
+        if "?" not in self.ask[-1]:
+            _is_query(self.ask[-1])
         twice = sorted({name for name in self.fields if self.fields.count(name) > 1})
         if twice:
-            raise refuse(f'"{self.ask}": each field has a name of its own; {", ".join(twice)} stands there twice')
+            words = "; ".join(self.ask)
+            raise refuse(f'"{words}": each field has a name of its own; {", ".join(twice)} stands there twice')
         return self
+
+    @property
+    def takes_channel(self) -> bool:
+        return any("channel" in _braces(text) for text in self.ask)
+
+
+class Bits(BaseModel):
+    """A state in a status value: any bit of `mask` set, or, where the family says it the other way, clear."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+    mask: Annotated[int, Field(gt=0)]
+    when: Literal["set", "clear"] = "set"
+
+    def hold(self, status: int) -> bool:
+        return bool(status & self.mask) is (self.when == "set")
+
+
+def _bits(value: Any) -> Any:
+    return {"mask": value} if isinstance(value, (str, int)) else value
 
 
 class VoltageSpan(BaseModel):
@@ -125,10 +159,20 @@ class CurrentSpan(BaseModel):
     resolution: PositiveAmperes | None = None
 
 
+class OhmSpan(BaseModel):
+    """Accuracy of a programmable resistor up to a resistance: ±(set + residual), half widths, rectangular."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+    range: PositiveOhms
+    set: Ratio
+    residual: PositiveOhms
+
+
 class Accuracy(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True)
     voltage: tuple[VoltageSpan, ...] = ()
     current: tuple[CurrentSpan, ...] = ()
+    resistance: tuple[OhmSpan, ...] = ()
 
 
 class Dialect(Written):
@@ -146,18 +190,18 @@ class Dialect(Written):
     timeout: PositiveSeconds = 3.0
     settings: dict[str, Annotated[Setting, BeforeValidator(_setting)]]
     readings: dict[str, Reading]
-    status: dict[str, Annotated[int, Field(gt=0)]] = Field(default_factory=dict)
+    status: dict[str, Annotated[Bits, BeforeValidator(_bits)]] = Field(default_factory=dict)
     accuracy: Accuracy = Accuracy()
     settable: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value))]] = Field(default_factory=dict)
 
     @model_validator(mode="after")
     def _complete(self) -> Dialect:
-        settings, readings = NEEDS[self.role]
-        lacking = [f"settings.{name}" for name in sorted(settings - set(self.settings))]
-        for name, fields in readings.items():
+        need = NEEDS[self.role]
+        lacking = [f"settings.{name}" for name in sorted(need.settings - set(self.settings))]
+        for name, fields in need.readings.items():
             have = set(self.readings[name].fields) if name in self.readings else set()
             lacking += [f"readings.{name}.{field}" for field in sorted(fields - have)]
-        lacking += [f"status.{name}" for name in sorted(STATUS[self.role] - set(self.status))]
+        lacking += [f"status.{name}" for name in sorted(need.states - set(self.status))]
         if lacking:
             raise refuse(f"a dialect of role '{self.role}' also needs {', '.join(lacking)}")
         return self
@@ -165,10 +209,17 @@ class Dialect(Written):
     @model_validator(mode="after")
     def _values(self) -> Dialect:
         """A voltage that never reaches the instrument, or an "on" that waits for a value, would show too late."""
-        for name, setting in self.settings.items():
-            if setting.takes_value is not (name in VALUED) and name in NEEDS[self.role][0]:
-                wanted = "must hold {value}" if name in VALUED else "takes no {value}"
-                raise refuse(f'settings.{name}: "{setting.send}" {wanted}')
+        need = NEEDS[self.role]
+        for name in sorted(need.settings & set(self.settings)):
+            setting = self.settings[name]
+            if setting.takes_value is not (name in need.valued):
+                wanted = "must hold {value}" if name in need.valued else "takes no {value}"
+                raise refuse(f'settings.{name}: "{setting.words}" {wanted}')
+            if setting.takes_channel is not (name in need.channelled) and name in need.channelled:
+                raise refuse(f'settings.{name}: "{setting.words}" must hold {{channel}}')
+        for name in sorted(need.channelled & set(self.readings)):
+            if not self.readings[name].takes_channel:
+                raise refuse(f"readings.{name}: must hold {{channel}}")
         return self
 
     @property
@@ -178,6 +229,7 @@ class Dialect(Written):
 
 
 def _largest(value: Any) -> float:
-    """A largest settable value, of a voltage or a current."""
-    text = str(value)
-    return Measure("current" if text.rstrip().endswith("A") else "voltage", above=0).read(text)
+    """A largest settable value, of a voltage, a current or a resistance."""
+    text = str(value).rstrip()
+    dimension = "current" if text.endswith("A") else "voltage" if text.endswith("V") else "resistance"
+    return Measure(dimension, above=0).read(text)

@@ -54,7 +54,7 @@ class Speaker:
     name: str
     dialect: Dialect
 
-    def setting(self, what: str, value: float | None = None) -> Job:
+    def setting(self, what: str, value: float | None = None, channel: str | None = None) -> Job:
         """A setting, its readback where the dialect has one, and the error queue, as few messages as can be.
 
         Raises ValueError for a value that is missing, not wanted or not finite: none of them may reach an instrument.
@@ -63,10 +63,10 @@ class Speaker:
         if (value is not None) is not setting.takes_value or not math.isfinite(value or 0.0):
             wanted = "a finite value" if setting.takes_value else "no value"
             raise ValueError(f"{self.name}: '{what}' takes {wanted}, {value} was given")
-        send = setting.send if value is None else setting.send.format(value=value)
-        parts = [part for part in (send, setting.back, self.dialect.confirm) if part]
-        messages = (self.dialect.joint.join(parts),) if self.dialect.compound else tuple(parts)
-        return Job(self.name, messages, len(parts) - 1)
+        filled = [text.format(value=value, channel=channel) for text in setting.send]
+        asked = [text.format(value=value, channel=channel) for text in (setting.back, self.dialect.confirm) if text]
+        messages = (self.dialect.joint.join([*filled, *asked]),) if self.dialect.compound else (*filled, *asked)
+        return Job(self.name, messages, len(asked))
 
     def verify(self, reply: Reply, what: str, value: float | None = None) -> None:
         """Raise what went wrong with a setting; return when it stands as set."""
@@ -95,7 +95,8 @@ class Speaker:
 
     def reading(self, what: str) -> Job:
         reading = self.dialect.readings[what]
-        return Job(self.name, (reading.ask,), len(reading.fields))
+        messages = (self.dialect.joint.join(reading.ask),) if self.dialect.compound else reading.ask
+        return Job(self.name, messages, len(reading.fields))
 
     def values(self, reply: Reply, what: str) -> dict[str, float]:
         """The fields of a reading as numbers (nan for overload). Raises what the reply carries, or ReplyFault."""
@@ -110,7 +111,7 @@ class Speaker:
     def state(self, values: dict[str, float], name: str) -> bool:
         """Whether a status named in the dialect is set."""
         status = values["status"]
-        return not math.isnan(status) and bool(int(status) & self.dialect.status[name])
+        return not math.isnan(status) and self.dialect.status[name].hold(int(status))
 
 
 @dataclass(frozen=True, slots=True)

@@ -42,7 +42,7 @@ def description_of(inputs: Inputs, bench: OpenBench, start_utc: str, seed: int |
         "pack": {"name": pack.name, **_file(inputs.pack.document)},
         "bench": {"name": bench.file.bench.name, **_file(bench.file.bound.document)},
         "charger": bench.access.charger,
-        "instruments": [_instrument(bench, where, name) for where, name in bench.file.bench.wired()],
+        "instruments": [_instrument(bench, where, name) for where, name in _first_places(bench)],
         "hardware": dict(hardware),
         "missing_hardware": hardware.missing(),
         "deviations": inputs.deviations,
@@ -70,6 +70,14 @@ def outcome_of(
         "standin": stand_in,
         "performance": performance,
     }
+
+
+def _first_places(bench: OpenBench) -> list[tuple[str, str]]:
+    """Each instrument once, with the first place that it has in the wiring."""
+    first: dict[str, str] = {}
+    for where, name in bench.file.bench.wired():
+        first.setdefault(name, where)
+    return [(where, name) for name, where in first.items()]
 
 
 def _file(document: Document) -> dict[str, str]:

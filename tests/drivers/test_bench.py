@@ -7,7 +7,8 @@ from typing import Any
 import pytest
 from pydantic import ValidationError
 
-from drivers.bench import ROLE_AT, Bench, Certificate, CurrentPath, Hardware, Limits, Virtual
+from drivers.bench import Bench, Certificate, Hardware, Limits, Virtual
+from drivers.wiring import CurrentPath
 
 WIRING = {
     "node": {
@@ -31,7 +32,7 @@ WHOLE: dict[str, Any] = {
 
 def test_wired_says_who_plays_which_role() -> None:
     bench = Bench.model_validate(WHOLE)
-    assert dict(bench.wired()).keys() == ROLE_AT.keys()
+    assert [where for where, _ in bench.wired()] == [where for where, _, _ in bench.wiring.places()]
     assert [name for _, name in bench.wired()] == ["s", "l", "v", "c", "i", "m"]
     assert bench.wiring.node.current.shunt_ohm == 0.01
     assert bench.visa == "@py"

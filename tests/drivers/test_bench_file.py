@@ -7,7 +7,6 @@ from pathlib import Path
 
 import pytest
 
-from drivers.bench import ROLE_AT
 from drivers.bench_file import DIALECTS, BenchFile, load_bench
 from drivers.text.faults import Faults
 
@@ -31,6 +30,14 @@ REAL = (
 limits: {node: 26 V, current: 12 A, charge: 5 Ah}
 """
 )
+ROLES = {
+    "node.supply": "supply",
+    "node.load": "load",
+    "node.voltage": "meter",
+    "node.charger_voltage": "meter",
+    "node.current.meter": "meter",
+    "mains.switch": "mains switch",
+}
 Load = Callable[..., tuple[BenchFile | None, list[str]]]
 
 
@@ -53,7 +60,7 @@ def test_a_real_bench(load: Load) -> None:
     file, faults = load()
     assert faults == []
     assert file is not None
-    for where, role in ROLE_AT.items():
+    for where, role in ROLES.items():
         name, part, dialect = file.at(where)
         assert dialect.role == role
         assert part.address.startswith("TCPIP::192.0.2.")

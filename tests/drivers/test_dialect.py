@@ -9,7 +9,8 @@ import pytest
 from pydantic import ValidationError
 
 from drivers.bench_file import DIALECTS
-from drivers.dialect import NEEDS, STATUS, VALUED, Dialect, Role
+from drivers.dialect import Dialect
+from drivers.needs import NEEDS, Role
 from drivers.text.binding import bind
 from drivers.text.document import compose, read
 from drivers.text.faults import Faults
@@ -64,24 +65,24 @@ def test_the_made_up_one_is_whole() -> None:
 def test_shipped_dialects_are_whole(path: Any) -> None:
     dialect = shipped(path.stem)
     assert dialect.name == path.stem
-    assert set(dialect.settings) >= NEEDS[dialect.role][0]
+    assert set(dialect.settings) >= NEEDS[dialect.role].settings
     assert dialect.timeout <= 3.0, "at most three of the slowest scan periods, 1 s (design)"
 
 
 def test_each_role_has_a_shipped_dialect() -> None:
-    assert {shipped(path.stem).role for path in SHIPPED} == set(get_args(Role)) == set(NEEDS) == set(STATUS)
+    assert {shipped(path.stem).role for path in SHIPPED} == set(get_args(Role)) == set(NEEDS)
 
 
 @pytest.mark.parametrize("path", SHIPPED, ids=lambda path: path.stem)
 def test_shipped_commands_are_of_the_standards(path: Any) -> None:
     """SCPI-1999, volume 2: these subsystems; IEEE 488.2, 10.3 and 10.14: *CLS, *IDN?. At most 12 letters a mnemonic."""
     dialect = shipped(path.stem)
-    texts = [dialect.identity, dialect.confirm or "", *(one.ask for one in dialect.readings.values())]
-    texts += [text for one in dialect.settings.values() for text in (one.send, one.back or "")]
+    texts = [dialect.identity, dialect.confirm or "", *(text for one in dialect.readings.values() for text in one.ask)]
+    texts += [text for one in dialect.settings.values() for text in (*one.send, one.back or "")]
     for text in filter(None, (part.strip(": ") for text in texts for part in text.split(";"))):
         header = text.split()[0].rstrip("?")
         assert header in ("*IDN", "*CLS") or re.fullmatch(
-            r"(VOLT|CURR|OUTP|INP|FUNC|MEAS|READ|CONF|STAT|SYST|ROUT)(:[A-Z]{1,12})*", header
+            r"(VOLT|CURR|RES|OUTP|INP|FUNC|MEAS|READ|CONF|STAT|SYST|ROUT)(:[A-Z]{1,12})*", header
         ), text
 
 
@@ -93,7 +94,7 @@ def test_shipped_outputs_prove_that_they_switched(path: Any) -> None:
         assert dialect.settings[name].expect
 
 
-@pytest.mark.parametrize("name", sorted(NEEDS["supply"][0]))
+@pytest.mark.parametrize("name", sorted(NEEDS["supply"].settings))
 def test_a_missing_setting_is_named(name: str) -> None:
     assert f"settings.{name}" in refused(raw(settings=settings(**{name: None})))
 
@@ -104,7 +105,7 @@ def test_a_missing_field_is_named(name: str) -> None:
     assert f"readings.state.{name}" in refused(raw(readings={"state": {"ask": "A?;:B?;:C?", "fields": fields}}))
 
 
-@pytest.mark.parametrize("name", sorted(STATUS["supply"]))
+@pytest.mark.parametrize("name", sorted(NEEDS["supply"].states))
 def test_a_missing_status_is_named(name: str) -> None:
     others = {key: value for key, value in raw()["status"].items() if key != name}
     assert f"status.{name}" in refused(raw(status=others))
@@ -131,7 +132,7 @@ def test_a_format_that_no_number_fits_is_refused_before_it_is_needed(send: str) 
     assert "voltage" in refused(raw(settings=settings(voltage=send)))
 
 
-@pytest.mark.parametrize("name", sorted(VALUED & NEEDS["supply"][0]))
+@pytest.mark.parametrize("name", sorted(NEEDS["supply"].valued))
 def test_a_setting_that_drops_its_value_is_refused(name: str) -> None:
     assert f"settings.{name}" in refused(raw(settings=settings(**{name: "VOLT 5"})))
 
