@@ -35,7 +35,7 @@ def curve_of(body: str) -> Curve:
 
 
 def test_every_shipped_curve_loads_by_its_bare_name() -> None:
-    assert SHIPPED == ["ntc-10k-3435", "ntc-10k-3950", "ntc-10k-table"]
+    assert {"ntc-10k-3435", "ntc-10k-3950", "ntc-10k-table"} <= set(SHIPPED)
     for name in SHIPPED:
         faults = Faults()
         curve = load_curve(name, faults, Place("specification.yaml", 7, 22))
