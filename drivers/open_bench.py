@@ -11,7 +11,9 @@ from drivers.dialect import Dialect
 from drivers.exchange import Exchange, Inline, Job, Workers
 from drivers.roles import Hands, Load, MainsSwitch, Meter, Speaker, Supply
 from drivers.session import Library, Session
+from drivers.signal_roles import Contact, Lists, PowerContacts, Resistor, SignalLine, Signals, TapLine, Thermometer
 from drivers.trouble import BenchFault, LinkFault
+from drivers.wiring import Channel, SignalWiring
 
 OPEN_TRIES = 3
 OPEN_PAUSE_s = 0.3
@@ -49,10 +51,12 @@ class OpenBench:
     access: Access
     identities: dict[str, str] = field(default_factory=dict)
     lost: dict[str, BenchFault] = field(default_factory=dict)  # what could not be opened, by instrument
+    signals: Signals = field(default_factory=Signals)
 
     @property
     def speakers(self) -> tuple[Speaker, ...]:
-        return (self.supply, self.load, self.node_meter, self.charger_meter, self.shunt_meter, self.mains)
+        main = (self.supply, self.load, self.node_meter, self.charger_meter, self.shunt_meter, self.mains)
+        return (*main, *self.signals.speakers)
 
     @property
     def shunt_ohm(self) -> float:
@@ -125,4 +129,41 @@ def _with_roles(file: BenchFile, exchange: Exchange, hands: Hands, access: Acces
         exchange=exchange,
         clock=access.clock,
         access=access,
+        signals=_signals(file),
+    )
+
+
+def _signals(file: BenchFile) -> Signals:
+    """The small contacts' roles, as far as the bench has them."""
+    wiring = file.bench.wiring
+
+    def contact(channel: Channel) -> Contact:
+        return Contact(Speaker(channel.instrument, file.dialect(channel.instrument)), channel.channel)
+
+    def lists(channel: Channel) -> Lists:
+        return Lists(channel.instrument, file.dialect(channel.instrument))
+
+    def line(part: SignalWiring | None) -> SignalLine | None:
+        if part is None:
+            return None
+        resistor = Resistor(part.resistor, file.dialect(part.resistor))
+        return SignalLine(resistor, contact(part.contact), lists(part.sense), part.sense.channel)
+
+    power, ambient = wiring.node.contacts, wiring.ambient
+    return Signals(
+        power=None if power is None else PowerContacts(*map(contact, (power.b_plus, power.b_minus, power.precharge))),
+        id=line(wiring.id),
+        thermistor=line(wiring.thermistor),
+        taps=tuple(
+            TapLine(
+                lists(tap.supply),
+                tap.supply.channel,
+                lists(tap.meter),
+                tap.meter.channel,
+                tap.shunt_ohm,
+                contact(tap.contact),
+            )
+            for tap in wiring.taps
+        ),
+        thermometer=None if ambient is None else Thermometer(ambient.thermometer, file.dialect(ambient.thermometer)),
     )

@@ -173,10 +173,11 @@ class Deed:
     speaker: Speaker
     what: str
     value: float | None = None
+    channel: str | None = None
 
     @property
     def job(self) -> Job:
-        return self.speaker.setting(self.what, self.value)
+        return self.speaker.setting(self.what, self.value, self.channel)
 
 
 class Hands:

@@ -90,6 +90,7 @@ def to_safe_state(bench: OpenBench, alarm: Callable[[str], None] = lambda words:
     state = walk.state
     words = walk.source_away()
     if words is None:
+        walk.taps_down()
         walk.drain()
         state.verified, words = walk.outputs_off()
     else:
@@ -106,6 +107,7 @@ class _Walk:
     def __init__(self, bench: OpenBench) -> None:
         self.bench = bench
         self.state = SafeState()
+        self.taps_off = True
 
     def source_away(self) -> str | None:
         """Steps 1 to 4. Returns what to tell a person if the charger is not proven quiet."""
@@ -137,6 +139,10 @@ class _Walk:
             clock.wait_until(now_s + LOOK_EVERY_s)
             look = self._look()
 
+    def taps_down(self) -> None:
+        """Step 5: all cell taps in one exchange."""
+        self.taps_off = self._do(*(tap.off for tap in self.bench.signals.taps))
+
     def drain(self) -> None:
         """Step 6, first half: supply to zero while the load keeps a small current, until the node is low by meter."""
         bench, clock = self.bench, self.bench.clock
@@ -155,10 +161,12 @@ class _Walk:
         """Step 6, second half, and the proof: whether all is proven off, and what to tell a person if it is not."""
         bench = self.bench
         off = self._do(Deed(bench.load, "off"), Deed(bench.supply, "off"))
+        opened = self._do(*(contact.open for contact in bench.signals.contacts))
         for left in reversed(range(LAST_LOOKS)):  # one late answer must not spoil the proof
             bench.clock.wait_until(bench.clock.now() + LOOK_EVERY_s)
             look = self._look(reopen=True)
             on = _not_proven_off(look, off)
+            on += ["cell taps not proven off"] * (not self.taps_off) + ["contacts not proven open"] * (not opened)
             if not on or not left:
                 break
         self.state.words.append(f"NOT SAFE: {', '.join(on)}" if on else "safe: de-energised, not isolated")

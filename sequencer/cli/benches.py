@@ -7,14 +7,16 @@ from pathlib import Path
 import typer
 
 from drivers.bench_file import BenchFile, load_bench
-from drivers.open_bench import open_bench
+from drivers.open_bench import open_bench, open_what_answers
 from drivers.roles import LoadMode, SupplyMode
 from drivers.shipped import locate
 from drivers.text.faults import BadInput, Fault, Faults, Place
 from drivers.text.si import si
 from sequencer.cli.access import access_to, charger_for
 from sequencer.cli.answers import BENCH_FAULT
+from sequencer.cli.stopping import noted_signals
 from sequencer.engine.inputs import FOLDERS
+from sequencer.engine.loop import StopFlag
 
 _SUPPLY = {
     SupplyMode.OFF: "off",
@@ -58,17 +60,20 @@ def show_command(bench: str, charger: str | None) -> None:
 
 
 def safe_command(bench: str, charger: str | None) -> None:
-    """The safe-state order, with what was seen on the way; exit 3 where it is not proven."""
+    """The safe-state order with whatever answers, and what was seen on the way; exit 3 where it is not proven.
+
+    Ctrl-C does not cut the walk short: it would leave the bench halfway.
+    """
     from drivers.safe import to_safe_state
 
     file = _bench(bench)
-    with access_to(file, charger_for(file, charger, None), seed=1) as access:
-        opened = open_bench(file, access)
+    with access_to(file, charger_for(file, charger, None), seed=1) as access, noted_signals(StopFlag()):
+        opened = open_what_answers(file, access)
         try:
             state = to_safe_state(opened, lambda words: typer.echo(f"\aALARM: {words}", err=True))
         finally:
             opened.close()
-    for words in (*state.words, *state.troubles):
+    for words in (*map(str, opened.lost.values()), *state.words, *state.troubles):
         typer.echo(words)
     typer.echo("Safe means de-energised, not isolated: unplug the charger before touching it.")
     if not state.verified:

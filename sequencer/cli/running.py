@@ -2,11 +2,7 @@
 
 from __future__ import annotations
 
-import signal
-from collections.abc import Iterator
-from contextlib import contextmanager
 from pathlib import Path
-from types import FrameType
 
 import typer
 
@@ -15,6 +11,7 @@ from drivers.open_bench import open_bench
 from sequencer.cli.access import access_to, charger_for
 from sequencer.cli.answers import BENCH_FAULT, OUR_FAULT
 from sequencer.cli.judging import judge_and_report
+from sequencer.cli.stopping import noted_signals
 from sequencer.cli.terminal import Terminal
 from sequencer.engine.inputs import Asked, changes_of, gather
 from sequencer.engine.loop import StopFlag
@@ -42,7 +39,7 @@ def run_command(
     refuse_unless_free(folder)
     stop = StopFlag()
     terminal = Terminal(plan_of(inputs).bench_s)
-    with access_to(inputs.bench, virtual_charger, seed) as access, _signals(stop), terminal:
+    with access_to(inputs.bench, virtual_charger, seed) as access, noted_signals(stop), terminal:
         terminal.opening(inputs, access, folder)
         opened = open_bench(inputs.bench, access)
         try:
@@ -70,19 +67,3 @@ def _finish(ended: Ended, terminal: Terminal) -> int:
     if blamed_on_bench or not ended.safe.verified:
         return BENCH_FAULT
     return judged.exit_status
-
-
-@contextmanager
-def _signals(stop: StopFlag) -> Iterator[None]:
-    """Ctrl-C and SIGTERM set a flag that the scan loop reads: every way out goes through the safe state."""
-    names = {signal.SIGINT: "Ctrl-C", signal.SIGTERM: "SIGTERM"}
-
-    def note(number: int, frame: FrameType | None) -> None:
-        stop.why = f"stopped by {names[signal.Signals(number)]}"
-
-    before = {number: signal.signal(number, note) for number in names}
-    try:
-        yield
-    finally:
-        for number, handler in before.items():
-            signal.signal(number, handler)

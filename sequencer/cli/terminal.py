@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from collections.abc import Callable
 from pathlib import Path
 from types import TracebackType
@@ -79,7 +80,7 @@ class Terminal:
 
     def watching(self, now: Callable[[], float]) -> Watching:
         self._now = now
-        return Watching(self._says, self._scan, self._alarm)
+        return Watching(self._says, self._scan, self._alarm, self._confirm)
 
     def _says(self, words: str) -> None:
         self._words = words
@@ -88,6 +89,17 @@ class Terminal:
     def _alarm(self, words: str) -> None:
         self._console.bell()
         self._console.print(Text(f"ALARM: {words}", style="bold white on red"))
+
+    def _confirm(self) -> bool:
+        """Stay until a person has acted: load and supply are left as they are meanwhile. False where nobody sits."""
+        if not (self._console.is_terminal and sys.stdin.isatty()):
+            return False
+        self._live.stop()
+        try:
+            self._console.input("Press Enter once the charger's mains are unplugged: ")
+        except EOFError:
+            return False
+        return True
 
     def _scan(self, scan: Scan) -> None:
         if not self._console.is_terminal or wall_seconds() - self._drawn_s < REDRAW_s:

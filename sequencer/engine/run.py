@@ -34,6 +34,7 @@ class Watching:
     says: Callable[[str], None] = field(default=lambda words: None)
     scans: Callable[[Scan], None] = field(default=lambda scan: None)
     alarm: Callable[[str], None] = field(default=lambda words: None)
+    confirm: Callable[[], bool] = field(default=lambda: False)  # a person says that the mains are unplugged
 
 
 @dataclass(frozen=True)
@@ -179,6 +180,9 @@ def _to_safety(bench: OpenBench, loop: Loop, watching: Watching) -> SafeState:
     watching.says("going to the safe state")
     try:
         safe = to_safe_state(bench, watching.alarm)
+        while safe.alarm and watching.confirm():
+            loop.event("note", text="a person confirmed the alarm; the safe state is walked again")
+            safe = to_safe_state(bench, watching.alarm)
     except Exception as fault:  # a bug on the way to safety must be said, not lost
         safe = SafeState(words=[f"NOT SAFE: {type(fault).__name__}: {fault}"], troubles=[traceback.format_exc()])
     loop.event("safe-state", verified=safe.verified, words=safe.words, troubles=safe.troubles)

@@ -19,7 +19,7 @@ def drive_down(bench: OpenBench) -> SafeState | None:
     mains_on = bench.mains.read(bench.hands.ask(bench.mains.reading("state")))
     supply = bench.supply.read(bench.hands.ask(bench.supply.reading("state")))
     load = bench.load.read(bench.hands.ask(bench.load.reading("state")))
-    if not mains_on and supply.mode == SupplyMode.OFF and load.mode != LoadMode.ON:
+    if not mains_on and supply.mode == SupplyMode.OFF and load.mode == LoadMode.OFF:
         return None
     return to_safe_state(bench)
 

@@ -79,11 +79,11 @@ def test_shipped_commands_are_of_the_standards(path: Any) -> None:
     dialect = shipped(path.stem)
     texts = [dialect.identity, dialect.confirm or "", *(text for one in dialect.readings.values() for text in one.ask)]
     texts += [text for one in dialect.settings.values() for text in (*one.send, one.back or "")]
-    for text in filter(None, (part.strip(": ") for text in texts for part in text.split(";"))):
-        header = text.split()[0].rstrip("?")
+    for command in filter(None, (part.strip(": ") for text in texts for part in text.split(";"))):
+        header = command.split()[0].rstrip("?")
         assert header in ("*IDN", "*CLS") or re.fullmatch(
             r"(VOLT|CURR|RES|OUTP|INP|FUNC|MEAS|READ|CONF|STAT|SYST|ROUT)(:[A-Z]{1,12})*", header
-        ), text
+        ), command
 
 
 @pytest.mark.parametrize("path", SHIPPED, ids=lambda path: path.stem)
