@@ -62,8 +62,9 @@ def class_of(
     time_s: npt.ArrayLike, current_A: npt.ArrayLike, *, declared_A: Bands, no_charge_A: float = 0.010,
     pulse_A: float = 0.050, plateau_s: float = 2.0, watched_s: float = 15.0,
 ) -> Seen:  # fmt: skip
-    """The class of one insertion from the readings between the contacts' closing and the end of watching.
+    """The class of one insertion, from the contacts closed and settled to the end of watching.
 
+    An inrush of the contacts' own in the window would count as a pulse of the charger: the caller leaves it out.
     time_s, current_A : (n,), rising in time, + into the pack.    declared_A : (low, high) of each declared current.
     *charges* : over the last `plateau_s` the current has settled, and its mean is above half of the lowest declared
     current; not after two or more interruptions.    *no charge* : |mean| below no_charge_A and no single reading beyond
@@ -81,7 +82,7 @@ def class_of(
         if quiet is not None:
             return quiet
     tail = _tail(times, current, plateau_s)
-    charges_above_A = 0.5 * min((low for low, _ in declared_A), default=2.0 * pulse_A)
+    charges_above_A = 0.5 * min((low for low, _ in declared_A), default=2.0 * pulse_A)  # without any: above a pulse
     level_A = float(np.mean(current[tail]))
     if level_A > charges_above_A and _unbroken(current[tail], level_A):
         return _plateau(times, current, tail, declared_A, level_A)

@@ -151,22 +151,28 @@ class EdgeSearch:
         return middle if found.low < middle < found.high else None
 
     def told(self, seen: str, *, at: float | None = None) -> Self:
-        """The search after an answer. Raises ValueError when nothing was asked and no setting is named.
+        """The search after the answer to what was asked. Raises ValueError when nothing was asked.
 
         seen : a class; "undecided" has the same setting asked once more, then ends the search.
-        at : the setting that was really made, where it is not the one asked (a resistor has steps), or one seen beside.
+        at : the setting that was really made, where it is not the one asked: a resistor has steps.
         """
-        value = self.ask() if at is None else at
-        if value is None:
-            raise ValueError("at: nothing was asked; name the setting that was seen")
+        asked = self.ask()
+        if asked is None:
+            raise ValueError("seen: nothing was asked; what was seen besides goes to `besides`")
+        value = asked if at is None else at
         if seen == UNDECIDED:
-            shown = quantity(value, self.unit)
             unclear = self.unclear + 1
-            why = f"{shown} gave no clear answer in {TRIES} tries" if unclear >= TRIES else None
-            return replace(self, unclear=unclear, trouble=self.trouble or why)
-        before = self.interval
+            why = f"{quantity(value, self.unit)} gave no clear answer in {TRIES} tries" if unclear >= TRIES else None
+            return replace(self, unclear=unclear, trouble=why)
+        after = self.besides(value, seen)
+        return replace(after, trouble=after.trouble or after._too_coarse(value, self.interval))
+
+    def besides(self, value: float, seen: str) -> Self:
+        """The search after one more answer, at a setting that was not asked for: an end once more, a grid point."""
+        if seen == UNDECIDED:
+            return self
         after = replace(self, answers=(*self.answers, (value, seen)), unclear=0)
-        return replace(after, trouble=self.trouble or after._contradiction() or after._too_coarse(value, before))
+        return replace(after, trouble=after._contradiction() or self.trouble)
 
     def controlled(self, good: bool) -> Self:
         """The search after a control point: a good one vouches for the answers so far.

@@ -31,10 +31,10 @@ class Sizes:
     fails_from: float
 
     def words(self, unit: str) -> str:
-        certain = quantity(self.fails_from, unit, step=resolution_of(self.fails_from))
+        certain = quantity(self.fails_from, unit, step=_step_of(self.fails_from))
         if self.passes_up_to == 0.0:
             return f"an edge beyond its limit never passes; it fails for certain from {certain} beyond it"
-        hidden = quantity(self.passes_up_to, unit, step=resolution_of(self.passes_up_to))
+        hidden = quantity(self.passes_up_to, unit, step=_step_of(self.passes_up_to))
         return f"an edge up to {hidden} beyond its limit may pass; it fails for certain from {certain} beyond it"
 
 
@@ -64,7 +64,7 @@ class Trip:
 
     @property
     def words(self) -> str:
-        step = resolution_of(self.high - self.low)
+        step = _step_of(self.high - self.low)
         last, first = (quantity(value, self.unit, step=step) for value in (self.last_charging, self.first_stopped))
         return f"still charging at {last}, stopped at {first}"
 
@@ -145,7 +145,7 @@ def _reason(
     low: float, high: float, guard_band: float, limit_low: float | None, limit_high: float | None, verdict: Verdict,
     unit: str,
 ) -> str:  # fmt: skip
-    step = resolution_of(guard_band or high - low)
+    step = _step_of(guard_band or high - low)
     shown = f"{quantity(low, unit, step=step)} to {quantity(high, unit, step=step)}"
     limits = _limits(limit_low, limit_high, unit, step)
     margin = f" by the guard band of {quantity(guard_band, unit, step=step)} and more" if guard_band else ""
@@ -165,3 +165,8 @@ def _limits(limit_low: float | None, limit_high: float | None, unit: str, step: 
     if limit_high is None:
         return f"the lower limit {quantity(limit_low, unit, step=step)}"
     return f"the limits {quantity(limit_low, unit, step=step)} to {quantity(limit_high, unit, step=step)}"
+
+
+def _step_of(width: float) -> float:
+    """Step that shows two digits of a width which may have lost a hair in a subtraction: 4.24 - 4.23 is 0.01."""
+    return resolution_of(width * (1.0 + 1e-9))
