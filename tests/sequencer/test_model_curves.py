@@ -162,7 +162,7 @@ LAWS = {
     "table": TABLE,
     "beta": "beta: {resistance: 10 kΩ, at: 25 °C, beta: 3435 K}\n",
     "steinhart_hart": "steinhart_hart: {a: 8.87462844e-4, b: 2.51519885e-4, c: 1.91945042e-7}\n",
-    "steinhart_hart, c below zero": "steinhart_hart: {a: 8.2e-4, b: 2.75e-4, c: -2e-9}\n",
+    "steinhart_hart, c below zero": "steinhart_hart: {a: 1.39e-4, b: 4e-4, c: -6e-7}\nspan: [-20 °C, 125 °C]\n",
     "extended": "extended: {resistance: 10 kΩ, forward: [-14.6337, 4791.842, -115334, -3.730535e6]}\n",
     "platinum": "platinum: {resistance: 1 kΩ}\n",
 }
