@@ -66,8 +66,8 @@ class Trip(Exception):
             bound,
             why,
         )
-        reading = quantity if math.isnan(value) else f"{quantity} {si(value, unit)}"
-        passed = "" if math.isnan(bound) else f" passed its bound {si(bound, unit)}"
+        reading = quantity if math.isnan(value) else f"{quantity} {si(value, unit, 5)}"
+        passed = "" if math.isnan(bound) else f" passed its bound {si(bound, unit, 5)}"
         super().__init__(f"{reading}{passed}: {why}")
 
     def as_dict(self) -> dict[str, object]:

@@ -21,6 +21,8 @@ from sequencer.engine.stability import turning_points
 FEWEST = 5
 AFTER_END_s = 5.0
 LAG_SHARE = 1.0 / 3.0
+SURGE = 1.05  # times the first plateau: more is worth a word
+CLEAR = 0.9  # probability of the class seen, from which on a stage that is missing is missing
 FIXTURE_SHARE = 0.05  # of the drop between contacts and node: a ballast that has warmed since it was measured
 STAIRS_s = 30.0  # the last steps of the stand-in before the end
 SWING_V = 0.005  # per cell: the stand-in's own small steps stay far below
@@ -127,6 +129,15 @@ class ChargeStep:
                 return f"stand-in and charger swung against each other, from {turns_s[first]:.1f} s on"
         return None
 
+    def _missing(self, words: str) -> Found:
+        """What the charger does not show is its own doing only where the bench held and the shape is clear."""
+        trouble = self._swinging or self._condition_lost(self._window.start_s, self._window.end_s)
+        if trouble is None and self.classification.confidence < CLEAR:
+            trouble = (
+                f"the shape of the charge is clear with a probability of {self.classification.confidence:.2f} only"
+            )
+        return Found(none=words) if trouble is None else Found(trouble=f"{words}; {trouble}")
+
     # class and states
 
     def _algorithm(self) -> Found:
@@ -159,11 +170,20 @@ class ChargeStep:
 
     def _stage_current(self, number: int, plateau: Plateau | None) -> Found:
         if plateau is None:
-            return Found(none=f"no constant-current stage {number} was seen")
+            return self._missing(f"no constant-current stage {number} was seen")
         estimate = plateau.current_A
         if estimate.n < FEWEST:
             return Found(trouble=f"only {estimate.n} readings on the plateau")
-        return self._current_found(estimate, [])
+        return _with_words(self._current_found(estimate, []), self._surge(estimate) if number == 1 else "")
+
+    def _surge(self, plateau: Estimate) -> str:
+        """Said, though no limit speaks of it: a current well above the plateau, at any moment of the charge."""
+        current = self._current.within(self._evidence.begun("insert") or 0.0, self._window.end_s)
+        top = int(np.argmax(current.value))
+        if current.value[top] <= SURGE * plateau.value:
+            return ""
+        told = f"the largest single reading was {si(float(current.value[top]), 'A')}"
+        return f"{told}, at {current.time_s[top]:.1f} s, outside this plateau"
 
     def _current_found(self, estimate: Estimate, more: list[Contribution], trouble: str | None = None) -> Found:
         trouble = trouble or self._disagreement(estimate.start_s, estimate.end_s)
@@ -238,7 +258,8 @@ class ChargeStep:
             return Found(trouble=f"only {after.value.size} readings after the end")
         estimate = mean_between(after.time_s, after.value, start_s, end_s)
         lines = [*self._readings(estimate), *self._accuracy.current(estimate.value)]
-        return _found(Budget(estimate.value, "A", tuple(lines)), estimate, None)
+        found = _found(Budget(estimate.value, "A", tuple(lines)), estimate, None)
+        return _with_words(found, f"largest single reading {si(float(np.max(np.abs(after.value))), 'A')}")
 
     # voltages, per cell
 
@@ -285,9 +306,9 @@ class ChargeStep:
 
     def _threshold(self, number: int, plateau: Plateau | None) -> Found:
         if plateau is None:
-            return Found(none=f"no constant-current stage {number} was seen")
+            return self._missing(f"no constant-current stage {number} was seen")
         if plateau.threshold_V is None:
-            return Found(none=f"stage {number} did not end by a step")
+            return self._missing(f"stage {number} did not end by a step")
         estimate = plateau.threshold_V
         trouble = self._lag() or self._untrusted(estimate)
         # The node rises once more between the last reading and the end of the stage: half of it there, rectangular.
@@ -307,7 +328,7 @@ class ChargeStep:
     def _regulation(self) -> Found:
         estimate = self.reading.regulation_V
         if estimate is None:
-            return Found(none="no constant-voltage phase was seen")
+            return self._missing("no constant-voltage phase was seen")
         if estimate.n < 2 * FEWEST:
             return Found(trouble=f"only {estimate.n} readings at constant voltage")
         return self._per_cell(estimate, [], self._untrusted(estimate))

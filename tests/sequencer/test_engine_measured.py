@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import json
+import re
 from collections.abc import Callable
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -11,6 +13,7 @@ import pytest
 
 from drivers.virtual.meter import Meter
 from sequencer.engine.evidence import open_evidence
+from sequencer.engine.measured import ChargeStep
 
 QUICK = {"start": "4.00 V", "after": "20 s"}
 
@@ -64,6 +67,31 @@ def test_every_quantity_has_a_budget_that_is_its_u(rehearse: Callable[..., Any])
             assert all(line["source"] for line in budget["contributions"])
     names = {line["name"] for line in budgets["charge.stage1.current"]["contributions"]}
     assert {"shunt", "meter_shunt", "thermal EMF"} <= names
+
+
+def test_a_stage_is_missing_only_where_the_shape_is_clear(rehearse: Callable[..., Any]) -> None:
+    evidence = open_evidence(rehearse(changes=QUICK).record)
+    window = evidence.window("charge")
+    assert window is not None
+    step = ChargeStep(evidence, window)
+    step.reading = replace(step.reading, plateaus=(), regulation_V=None)
+    for name in ("charge.stage1.current", "charge.voltage"):
+        assert step.findings()[name].none is not None
+    step.classification = replace(step.classification, confidence=0.89)
+    for name in ("charge.stage1.current", "charge.voltage"):
+        found = step.findings()[name]
+        assert found.none is None
+        assert found.trouble is not None
+        assert "probability of 0.89" in found.trouble
+
+
+def test_a_short_overshoot_is_said_though_no_limit_speaks_of_it(rehearse: Callable[..., Any]) -> None:
+    done = rehearse(charger={"overshoot": "{current: 5 A, time: 1 s}"}, changes=QUICK)
+    why = done.verdict("charge.stage1.current")["why"]
+    told = re.search(r"the largest single reading was ([\d.]+) A", why)
+    assert told is not None, why
+    assert float(told[1]) == pytest.approx(5.0, rel=2e-3)
+    assert "largest single reading" not in rehearse(changes=QUICK).verdict("charge.stage1.current")["why"]
 
 
 def test_the_stand_ins_lag_makes_a_threshold_inconclusive(rehearse: Callable[..., Any], tmp_path: Any) -> None:

@@ -82,7 +82,7 @@ def test_what_is_stated_holds_what_is_true(rehearse: Callable[..., Any], ends: l
         budgets = budgets_of(rehearse(seed=seed, changes={"start": "4.00 V", "after": "10 s"}))
         true = {"charge.stage1.current": 3.0, "charge.voltage": 4.2, "charge.cutoff": ends[0][0]}
         _count(tally, budgets, true, "sprayer")
-    for seed in range(21, 24):
+    for seed in range(21, 23):
         ends.clear()
         budgets = budgets_of(rehearse(spec="lantern", seed=seed, changes={"start": "3.93 V", "after": "10 s"}))
         true = {"charge.stage1.current": 2.0, "charge.stage2.current": 1.0}
@@ -111,7 +111,7 @@ def test_a_threshold_far_from_what_is_declared_is_stated_as_honestly(
 ) -> None:
     """Away from declared events the charge is compressed: the spacing of the readings, not the meter, decides."""
     stages = "[{current: 2.0 A, until: 4.03 V}, {current: 1.0 A, until: 4.20 V}]"
-    for seed in (1, 2, 3):
+    for seed in (1, 2):
         ends.clear()
         done = rehearse(spec="lantern", charger={"stages": stages}, seed=seed, changes={"start": "3.80 V"})
         budget = budgets_of(done)["charge.stage1.threshold"]
