@@ -45,7 +45,7 @@ def description_of(inputs: Inputs, bench: OpenBench, start_utc: str, seed: int |
         "instruments": [_instrument(bench, where, name) for where, name in _first_places(bench)],
         "hardware": dict(hardware),
         "missing_hardware": hardware.missing(),
-        "deviations": inputs.deviations,
+        "deviations": [*inputs.deviations, *_overdue(bench, start_utc[:10])],
         "changes": inputs.changes,
         "environment": _environment(),
         "person": None,
@@ -97,6 +97,16 @@ def _instrument(bench: OpenBench, where: str, name: str) -> dict[str, Any]:
         "identity": bench.identities.get(name),
         "certificate": None if certificate is None else certificate.model_dump(mode="json"),
     }
+
+
+def _overdue(bench: OpenBench, today: str) -> list[str]:
+    """Certificates that had run out on the day of the run, as deviations; dates are ISO 8601 and compare as text."""
+    wired = [(name, bench.file.bench.instruments[name].certificate) for _, name in bench.file.bench.wired()]
+    return [
+        f"certificate {certificate.number} of {name} was due on {certificate.due}"
+        for name, certificate in wired
+        if certificate is not None and certificate.due < today
+    ]
 
 
 def _environment() -> dict[str, Any]:

@@ -45,3 +45,15 @@ def test_sha256() -> None:
 def test_what_protects_and_is_not_there_is_named(rehearse: Callable[..., Any]) -> None:
     done = rehearse(bench={"fuse: virtual, ": ""}, changes={"start": "4.00 V", "after": "10 s"})
     assert open_evidence(done.record).manifest["missing_hardware"] == ["fuse"]
+
+
+def test_a_certificate_that_has_run_out_is_a_deviation(rehearse: Callable[..., Any]) -> None:
+    meter = "meter_node: {address: virtual, dialect: scpi-meter"
+    certificates = {
+        f"{meter}}}": f"{meter}, certificate: {{number: C-77, due: 2020-03-01, voltage: {{range: 30 V, U: 4 mV}}}}}}",
+        "node_load: {address: virtual, dialect: scpi-load}": "node_load: {address: virtual, dialect: scpi-load, "
+        "certificate: {number: C-78, due: 9999-12-31}}",
+    }
+    done = rehearse(bench=certificates, changes={"start": "4.00 V"})
+    deviations = open_evidence(done.record).manifest["deviations"]
+    assert deviations[1:] == ["certificate C-77 of meter_node was due on 2020-03-01"]
