@@ -24,6 +24,8 @@ AGREE_DROP = 0.25  # of that drop: leads before they are measured, a warm ballas
 APART_READINGS = 3
 AGREE_SHARE = 0.02  # of the load current: ordinary readback of supply and load (0.1 % + 0.05 % of range each)
 AGREE_FLOOR_A = 0.06
+LIFTS_A = 0.05  # less than this does not lift a node that the supply holds
+NEARLY_ALL = 0.85  # of the load's current: so much at least a charger delivers that takes the node from the supply
 STALE_PERIODS = 3.0
 CONDITION_PATIENCE_s = 2.0  # the current is still read so long after the node's voltage is no longer the supply's
 LOST_READINGS = 3
@@ -88,6 +90,7 @@ class Guard:
     _lost: dict[str, int] = field(default_factory=dict)
     _condition_lost_s: float | None = None
     _apart: int = 0
+    _drawn_A: float | None = None  # what the load draws since it came on
 
     def check(self, scan: Scan, period_s: float, set_V: float | None = None) -> None:
         """Raise Trip where `scan` passes a bound; otherwise remember it. `set_V` is what the supply is set to."""
@@ -99,7 +102,15 @@ class Guard:
         self._check_agreement(scan)
         self._check_outputs(scan)
         self._count(scan)
+        self._learn_load(scan)
         self._before = scan
+
+    def _learn_load(self, scan: Scan) -> None:
+        """A load in constant current draws the same from its second scan on; later it is held against that."""
+        if scan.load.mode != LoadMode.ON or scan.load_seen.fault is not None:
+            self._drawn_A = self._drawn_A if scan.load_seen.fault is not None else None
+        elif self._drawn_A is None and self._before is not None and self._before.load.mode == LoadMode.ON:
+            self._drawn_A = scan.load.current_A
 
     def _check_links(self, scan: Scan) -> None:
         """One late answer is forgiven, LOST_READINGS in a row are a lost link; not a number trips at once."""
@@ -222,7 +233,13 @@ class Guard:
             return "the supply was in current limit in the scan before"
         if before.load.mode != LoadMode.ON:
             return "the load was not on in the scan before"
-        return None if not before.faults else f"a reading was missing in the scan before ({before.faults[0]})"
+        if before.faults:
+            return f"a reading was missing in the scan before ({before.faults[0]})"
+        return None if self._draws(before) else "the load did not draw what it drew at first"
+
+    def _draws(self, scan: Scan) -> bool:
+        margin_A = AGREE_FLOOR_A + AGREE_SHARE * (self._drawn_A or 0.0)
+        return self._drawn_A is not None and abs(scan.load.current_A - self._drawn_A) <= margin_A
 
     def _voltage_cause(self, scan: Scan) -> tuple[Cause, str]:
         wrong = self._stood()
@@ -234,6 +251,10 @@ class Guard:
             return "bench", told
         if abs(scan.supply.voltage_V - scan.node_V.value) > AGREE_V + 0.01 * scan.node_V.value:
             return "bench", "the node's meter and the supply's readback differ"
+        if not self._agree_A(scan):
+            return "bench", self._currents_differ(scan)
+        if scan.current_A.value < LIFTS_A:
+            return "bench", "no charging current flows: it is not the charger that lifts the node"
         return "charger", "outputs stood as set, and two independent readings agree"
 
     def _agree_A(self, scan: Scan) -> bool:
@@ -245,9 +266,13 @@ class Guard:
         if wrong is not None:
             return "bench", wrong
         if not self._agree_A(scan):
-            told = f"shunt {si(scan.current_A.value, 'A')}, load minus supply {si(scan.difference_A, 'A')}"
-            return "bench", f"the two ways to measure the current differ ({told})"
+            return "bench", self._currents_differ(scan)
         return "charger", "outputs stood as set, and shunt and load minus supply agree"
+
+    @staticmethod
+    def _currents_differ(scan: Scan) -> str:
+        told = f"shunt {si(scan.current_A.value, 'A')}, load minus supply {si(scan.difference_A, 'A')}"
+        return f"the two ways to measure the current differ ({told})"
 
     def _condition_cause(self, scan: Scan) -> tuple[Cause, str]:
         if scan.supply.mode == SupplyMode.CONSTANT_CURRENT:
@@ -255,5 +280,9 @@ class Guard:
         if scan.supply.mode == SupplyMode.OFF or scan.load.mode != LoadMode.ON:
             return "bench", "supply or load is not on"
         if not self._agree_A(scan):
-            return "bench", "the supply no longer sources, and the two ways to measure the current differ"
+            return "bench", f"the supply no longer sources, and {self._currents_differ(scan)}"
+        if not self._draws(scan):
+            return "bench", "the load no longer draws what it drew at first"
+        if scan.current_A.value < NEARLY_ALL * scan.load.current_A:
+            return "bench", "the supply no longer sources, and the charger does not deliver what the load draws"
         return "charger", "the charger delivers nearly all that the load draws, and shunt and load minus supply agree"

@@ -21,6 +21,10 @@ from sequencer.engine.stability import turning_points
 FEWEST = 5
 AFTER_END_s = 5.0
 LAG_SHARE = 1.0 / 3.0
+ZERO_s = 2.0  # read for so long before the mains are on, and from so long after they are off
+LAST_SCAN_s = 0.05
+LATELY_s = 10.0  # at the end of a charge that did not end
+IDLE_A = 1e-3  # what an idle charger may take from the pack: common practice, no source
 SURGE = 1.05  # times the first plateau: more is worth a word
 CLEAR = 0.9  # probability of the class seen, from which on a stage that is missing is missing
 FIXTURE_SHARE = 0.05  # of the drop between contacts and node: a ballast that has warmed since it was measured
@@ -86,6 +90,7 @@ class ChargeStep:
         self._voltage = evidence.trace("charger.voltage")
         self._current = evidence.trace("charger.current")
         self._swinging = self._swings()
+        self._zero_moved = self._zeros()
         self.classification, self.reading = self._read()
 
     def _read(self) -> tuple[Classification, ChargeReading]:
@@ -159,6 +164,9 @@ class ChargeStep:
         if reading.ended:
             words = f"the current fell from {self._shown_cutoff()} to nothing at {reading.ended_s:.1f} s"
             return Found(seen="ends", start_s=reading.ended_s, end_s=self._window.end_s, words=words)
+        trouble = self._zero_moved or self._disagreement(self._window.end_s - LATELY_s, self._window.end_s)
+        if trouble is not None:
+            return Found(trouble=trouble)
         last_A = reading.last_current_A.value if reading.last_current_A else math.nan
         words = f"still charging at {si(last_A, 'A')} when the step was given up after {self._window.end_s:.0f} s"
         return Found(seen="does not end", start_s=self._window.start_s, end_s=self._window.end_s, words=words)
@@ -186,9 +194,26 @@ class ChargeStep:
         return f"{told}, at {current.time_s[top]:.1f} s, outside this plateau"
 
     def _current_found(self, estimate: Estimate, more: list[Contribution], trouble: str | None = None) -> Found:
-        trouble = trouble or self._disagreement(estimate.start_s, estimate.end_s)
+        trouble = trouble or self._zero_moved or self._disagreement(estimate.start_s, estimate.end_s)
         lines = [*self._readings(estimate), *self._accuracy.current(estimate.value), *more]
         return _found(Budget(estimate.value, "A", tuple(lines)), estimate, trouble)
+
+    def _zeros(self) -> str | None:
+        """Why the shunt's zero is not one, with the mains off before or after the charge; None where it is."""
+        switched = self._evidence.events("mains")
+        first_on_s = next((event["t"] for event in switched if event["on"]), 0.0)
+        last_off_s = next((event["t"] for event in reversed(switched) if not event["on"]), math.inf)
+        at_rest = self._accuracy.current(0.0)
+        allowed_A = IDLE_A + math.sqrt(3.0) * sum(line.contribution for line in at_rest)
+        for when, start_s, end_s in (
+            ("before", first_on_s - ZERO_s, first_on_s - LAST_SCAN_s),
+            ("after", last_off_s + ZERO_s, math.inf),
+        ):
+            rest = self._current.within(start_s, end_s)
+            if rest.value.size >= FEWEST and abs(zero_A := float(np.mean(rest.value))) > allowed_A:
+                told = f"the current reads {si(zero_A, 'A')} with the charger's mains off {when} the charge"
+                return f"{told}; its uncertainty there is {si(allowed_A, 'A')}"
+        return None
 
     @staticmethod
     def _readings(estimate: Estimate, sensitivity: float = 1.0) -> list[Contribution]:
@@ -258,7 +283,8 @@ class ChargeStep:
             return Found(trouble=f"only {after.value.size} readings after the end")
         estimate = mean_between(after.time_s, after.value, start_s, end_s)
         lines = [*self._readings(estimate), *self._accuracy.current(estimate.value)]
-        found = _found(Budget(estimate.value, "A", tuple(lines)), estimate, None)
+        trouble = self._zero_moved or self._disagreement(start_s, end_s)
+        found = _found(Budget(estimate.value, "A", tuple(lines)), estimate, trouble)
         return _with_words(found, f"largest single reading {si(float(np.max(np.abs(after.value))), 'A')}")
 
     # voltages, per cell

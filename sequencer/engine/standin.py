@@ -20,6 +20,7 @@ NEAR_CUTOFF = 1.5  # times the declared cut-off's upper limit
 LARGEST_STEP_V = (
     0.007  # per cell and scan: how far compressed charging may move (5 to 10 mV, common practice, no source)
 )
+BELOW_BOUND_V = 0.02  # per cell
 LARGEST_MOVE_V = 0.010  # per cell and scan: how far any setting may move
 
 
@@ -111,8 +112,13 @@ class StandIn:
         target_V = self.ocv_V + self.relaxation_V + current_A * follow.Rv_ohm
         step_V = follow.gain * (target_V - self.node_V)
         most_V = LARGEST_MOVE_V * self.pack.cells
-        self.node_V += min(max(step_V, -most_V), most_V)
+        self.node_V = min(self.node_V + min(max(step_V, -most_V), most_V), self.highest_V)
         return self.node_V
+
+    @property
+    def highest_V(self) -> float:
+        """The node is never played up to the guard's own bound: what passes that is not the stand-in's doing."""
+        return self.pack.cells * (self.pack.cell_bound_V - BELOW_BOUND_V)
 
     def _relax(self, dt_s: float, current_A: float) -> None:
         branch = self.pack.relaxation

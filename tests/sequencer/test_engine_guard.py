@@ -37,9 +37,10 @@ def scan(
     true_A: float | None = None,
     supply: SupplyMode = CV,
     load: LoadMode = ON,
+    drawn_A: float = LOAD_A,
 ) -> Scan:
     """One look at a bench in order; `true_A` is the current that supply and load see, where the shunt lies."""
-    source_A = LOAD_A - (current_A if true_A is None else true_A)
+    source_A = drawn_A - (current_A if true_A is None else true_A)
     return Scan(
         time_s,
         Seen(node_V, time_s),
@@ -47,9 +48,12 @@ def scan(
         Seen(current_A, time_s),
         SupplyReading(node_V, max(source_A, 0.0), supply),
         Seen(node_V, time_s),
-        LoadReading(node_V, LOAD_A if load is ON else 0.0, load),
+        LoadReading(node_V, drawn_A if load is ON else 0.0, load),
         Seen(node_V, time_s),
     )
+
+
+STOOD = [scan(-1), scan(0)]  # two scans in which all stood: what the load draws is known
 
 
 def guard(*before: Scan, fixture_ohm: float | None = OHM) -> Guard:
@@ -87,14 +91,14 @@ def test_a_bench_in_order_passes() -> None:
 
 
 def test_a_charger_too_high_with_good_outputs() -> None:
-    trip = tripped(guard(scan(0)), scan(1, 1.0, 21.70))
+    trip = tripped(guard(*STOOD), scan(1, 1.0, 21.70))
     assert (trip.cause, trip.quantity) == ("charger", "charger voltage")
     assert trip.value == pytest.approx(21.81)
 
 
 def test_a_charger_with_too_much_current_with_good_outputs() -> None:
     high = replace(scan(1, 8.5), load=LoadReading(19.0, 11.0, ON), supply=SupplyReading(19.0, 2.5, CV))
-    assert tripped(guard(scan(0)), high).cause == "charger"
+    assert tripped(guard(*STOOD), high).cause == "charger"
 
 
 def test_a_charger_that_takes_the_node_from_the_supply() -> None:
@@ -122,9 +126,13 @@ def test_more_charge_than_the_bench_allows() -> None:
         ([], scan(1, 1.0, 21.70), "no scan before"),
         ([scan(0, supply=CC)], scan(1, 1.0, 21.70), "current limit in the scan before"),
         ([scan(0, load=LoadMode.OFF)], scan(1, 1.0, 21.70), "load was not on"),
-        ([scan(0)], scan(1, 1.0, 21.5, charger_V=22.4), "voltage meters differ"),
-        ([scan(0)], replace(scan(1, 1.0, 21.7), supply=SupplyReading(19.0, 4.6, CV)), "supply's readback differ"),
-        ([scan(0)], scan(1, 8.5, true_A=3.0), "two ways to measure"),
+        (STOOD, scan(1, 1.0, 21.5, charger_V=22.4), "voltage meters differ"),
+        (STOOD[1:], scan(1, 1.0, 21.70), "did not draw"),
+        ([*STOOD, replace(scan(0.5), load=LoadReading(19.0, 2.0, ON))], scan(1, 1.0, 21.70), "did not draw"),
+        (STOOD, scan(1, 0.4, 21.73, true_A=0.0), "two ways to measure"),
+        (STOOD, scan(1, 0.01, 21.80), "no charging current flows"),
+        (STOOD, replace(scan(1, 1.0, 21.7), supply=SupplyReading(19.0, 4.6, CV)), "supply's readback differ"),
+        (STOOD, scan(1, 8.5, true_A=3.0), "two ways to measure"),
         ([scan(0, supply=CC)], scan(1, 8.5), "current limit in the scan before"),
         ([scan(0)], scan(1, -0.3), "flows out of the pack"),
         ([scan(0)], scan(1, load=LoadMode.TRIPPED), "load tripped"),
@@ -149,10 +157,12 @@ def test_a_reading_missing_in_the_scan_before_leaves_the_cause_unknown() -> None
         ({"supply": CC}, "current limit"),
         ({"supply": SupplyMode.OFF}, "not on"),
         ({"current_A": 3.0, "true_A": 5.6}, "two ways to measure the current differ"),
+        ({"drawn_A": 2.0, "current_A": 2.0}, "no longer draws"),
+        ({"drawn_A": 0.0, "current_A": 0.0, "supply": SupplyMode.UNREGULATED}, "no longer draws"),
     ],
 )
 def test_a_voltage_condition_that_the_bench_lost(lost: dict[str, Any], why: str) -> None:
-    trip = tripped(guard(scan(0), scan(1, **lost), scan(2, **lost)), scan(3, **lost))
+    trip = tripped(guard(*STOOD, scan(1, **lost), scan(2, **lost)), scan(3, **lost))
     assert trip.cause == "bench"
     assert why in trip.why
 
@@ -299,6 +309,42 @@ def test_trouble_in_the_middle_of_a_charge(
     trip = open_evidence(done.record).trip
     assert trip is not None
     assert trip["cause"] == "bench"
+
+
+def load_draws_less(world: World) -> None:
+    world.circuit.change(lambda: setattr(world.circuit.load, "current_A", 2.0))
+
+
+def supply_gone(world: World) -> None:
+    world.circuit.change(lambda: setattr(world.circuit.supply, "on", False))
+
+
+@pytest.mark.parametrize(("happens", "why"), [(load_draws_less, "no longer draws"), (supply_gone, "no longer")])
+def test_an_output_that_no_longer_stands_as_set(
+    rehearse: Callable[..., Any], at_60_s: Callable[..., None], happens: Any, why: str
+) -> None:
+    at_60_s(happens)
+    done = rehearse()
+    assert done.ended.ended == "trip"
+    assert why in done.ended.why
+    assert done.judged.bench_trip
+    assert not done.failing
+
+
+def test_a_shunt_meter_whose_zero_moves(rehearse: Callable[..., Any], at_60_s: Callable[..., None]) -> None:
+    """0.2 A that nobody delivers would charge the stand-in on after the end, up to the guard's bound."""
+
+    def happens(world: World) -> None:
+        meter: Any = world.instruments["meter_shunt"]
+        converted = meter._converted
+        meter._converted = lambda true_V: converted(true_V + 2e-3)
+
+    at_60_s(happens)
+    done = rehearse()
+    assert not done.failing
+    assert done.verdicts["charge.cutoff"] == "inconclusive"
+    assert done.verdicts["charge.stage1.current"] == "inconclusive"
+    assert "mains off after the charge" in done.verdict("charge.stage1.current")["why"]
 
 
 def test_an_overshoot_that_lasts_is_a_fail(rehearse: Callable[..., Any]) -> None:

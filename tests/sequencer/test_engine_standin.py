@@ -138,3 +138,12 @@ def test_how_the_current_is_followed(period_s: float, scans: int) -> None:
     assert (follow.Rp_ohm, follow.Rv_ohm, follow.delay_scans) == (0.11, pytest.approx(0.14), scans)
     assert follow.lag_s == pytest.approx(period_s / follow.gain)
     assert Follow.at(0.25, 0.11, 0.35, period_s, forced=0).delay_scans == 0
+
+
+def test_the_node_is_never_played_up_to_the_guards_bound() -> None:
+    """What passes the bound is then nobody's doing but the charger's, or a meter's."""
+    stand_in = StandIn.inserted(pack_of(), 4.15)
+    for _ in range(3000):
+        stand_in.move(1.0, 3.0, AT_ONCE)
+    assert stand_in.soc > 1.2
+    assert stand_in.node_V == pytest.approx(5 * (4.35 - 0.02))
