@@ -71,6 +71,7 @@ class Limits(_Part):
     node: PositiveVolts
     current: PositiveAmperes
     charge: AmpereHours
+    tap: PositiveVolts = Field(4.6, description="highest voltage of a cell tap")
     time: Seconds = 12 * 3600.0
     equal_readings: int = Field(
         50, ge=0, description="so many readings equal to the last digit are a dead meter; 0: off"

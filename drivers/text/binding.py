@@ -13,7 +13,7 @@ from drivers.text.document import Document, Mapped, Node, Scalar, find, plain
 from drivers.text.faults import Faults, Place
 from drivers.text.nearest import unknown
 
-KINDS = dict.fromkeys(("procedure", "pack", "specification", "order", "bench", "dialect", "charger", "findings"), 1)
+KINDS = dict.fromkeys(("procedure", "pack", "specification", "order", "bench", "dialect", "charger", "findings", "curve"), 1)
 
 
 class Written(BaseModel):

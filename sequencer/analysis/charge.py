@@ -106,8 +106,13 @@ def measure_charge(
 
 
 def current_agreement(
-    time_s: npt.ArrayLike, shunt_A: npt.ArrayLike, load_A: npt.ArrayLike, supply_A: npt.ArrayLike, *,
-    start_s: float, end_s: float,
+    time_s: npt.ArrayLike,
+    shunt_A: npt.ArrayLike,
+    load_A: npt.ArrayLike,
+    supply_A: npt.ArrayLike,
+    *,
+    start_s: float,
+    end_s: float,
 ) -> Estimate:
     """Mean of shunt - (load - supply), A: two independent readings of the charger's current (I_load = I_supply + I).
 
@@ -176,9 +181,7 @@ def _rise_per_sample(time: Array, voltage: Array, top: int) -> float:
     return max(0.0, slope * float(time[top] - time[top - 1]))
 
 
-def _regulation(
-    time: Array, voltage: Array, current: Array, stages: list[Stage], last: int | None
-) -> Estimate | None:
+def _regulation(time: Array, voltage: Array, current: Array, stages: list[Stage], last: int | None) -> Estimate | None:
     held = [stage for stage in stages if stage.kind == "cv"]
     if not held:
         return None

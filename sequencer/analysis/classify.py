@@ -64,8 +64,12 @@ class Classification:
 
 
 def classify(
-    time_s: npt.ArrayLike, voltage_V: npt.ArrayLike, current_A: npt.ArrayLike, *,
-    current_u_A: float | None = None, voltage_u_V: float | None = None,
+    time_s: npt.ArrayLike,
+    voltage_V: npt.ArrayLike,
+    current_A: npt.ArrayLike,
+    *,
+    current_u_A: float | None = None,
+    voltage_u_V: float | None = None,
 ) -> Classification:
     """Reads the algorithm and its stages off a log of any scale and spacing.
 

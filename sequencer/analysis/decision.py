@@ -16,15 +16,11 @@ from typing import Literal
 
 from sequencer.analysis.wording import quantity, resolution_of
 
-Verdict = Literal[
-    "pass", "conditional pass", "conditional fail", "fail", "inconclusive", "not run", "not applicable"
-]
+Verdict = Literal["pass", "conditional pass", "conditional fail", "fail", "inconclusive", "not run", "not applicable"]
 Rule = Literal["simple", "guarded"]
 
 #: From worst to best; what is not applicable counts as nothing.
-WORST_FIRST: tuple[Verdict, ...] = (
-    "fail", "conditional fail", "inconclusive", "not run", "conditional pass", "pass"
-)
+WORST_FIRST: tuple[Verdict, ...] = ("fail", "conditional fail", "inconclusive", "not run", "conditional pass", "pass")
 
 
 @dataclass(frozen=True)

@@ -54,8 +54,10 @@ def _held_within(trace: Trace, segments: list[Segment], last: int, share: float)
     first, start = _reach_back(trace, segments, last, share)
     if start >= segments[last].stop:
         return None
-    while first < last and segments[first].kind == "flat" and (
-        _opens(trace, segments, first, last) or _is_stage(trace, segments, first)
+    while (
+        first < last
+        and segments[first].kind == "flat"
+        and (_opens(trace, segments, first, last) or _is_stage(trace, segments, first))
     ):
         first += 1
         start = segments[first].start

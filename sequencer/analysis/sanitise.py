@@ -42,9 +42,7 @@ def sanitise(time_s: npt.ArrayLike, voltage_V: npt.ArrayLike, current_A: npt.Arr
     finite = np.isfinite(columns[0]) & np.isfinite(columns[1]) & np.isfinite(columns[2])
     time, voltage, current = (column[finite] for column in columns)
     ordered = in_time_order(time)
-    return Log(
-        time[ordered], voltage[ordered], current[ordered], int(np.sum(~finite)), int(np.sum(~ordered))
-    )
+    return Log(time[ordered], voltage[ordered], current[ordered], int(np.sum(~finite)), int(np.sum(~ordered)))
 
 
 def in_time_order(time_s: Array) -> Mask:

@@ -52,8 +52,12 @@ class Stage:
     def as_dict(self) -> dict[str, Any]:
         """As in the stages of `classify --json`."""
         return {
-            "kind": self.kind, "start_s": self.start_s, "end_s": self.end_s, "current_A": self.current_A.as_dict(),
-            "voltage_V": self.voltage_V.as_dict(), "charge_Ah": self.charge_Ah,
+            "kind": self.kind,
+            "start_s": self.start_s,
+            "end_s": self.end_s,
+            "current_A": self.current_A.as_dict(),
+            "voltage_V": self.voltage_V.as_dict(),
+            "charge_Ah": self.charge_Ah,
         }
 
 

@@ -55,7 +55,12 @@ def trace_of(log: Log, *, current_u_A: float | None, voltage_u_V: float | None) 
     if scale <= least:
         scale = 0.0
     return Trace(
-        log.time_s, voltage, current, _charge(log.time_s, current), scale, noise,
+        log.time_s,
+        voltage,
+        current,
+        _charge(log.time_s, current),
+        scale,
+        noise,
         noise_of(voltage[flowing]) if int(np.sum(flowing)) >= 5 else noise_of(voltage),
         max(5.0 * noise, 3.0 * u_A, 0.005 * scale),
         math.hypot(u_A, display_step(current[flowing]) / math.sqrt(12.0)) if np.any(flowing) else u_A,

@@ -60,8 +60,14 @@ class Contribution:
 
     @classmethod
     def from_half_width(
-        cls, name: str, half_width: float, distribution: Distribution = "rectangular", *, sensitivity: float = 1.0,
-        dof: float = math.inf, source: str = "",
+        cls,
+        name: str,
+        half_width: float,
+        distribution: Distribution = "rectangular",
+        *,
+        sensitivity: float = 1.0,
+        dof: float = math.inf,
+        source: str = "",
     ) -> Self:
         """Input known to lie within ± half_width (accuracy statement, tolerance): GUM 4.3.7, rectangular by default."""
         _require_size("half_width", half_width)
@@ -70,7 +76,14 @@ class Contribution:
 
     @classmethod
     def from_expanded(
-        cls, name: str, U: float, k: float = 2.0, *, sensitivity: float = 1.0, dof: float = math.inf, source: str = "",
+        cls,
+        name: str,
+        U: float,
+        k: float = 2.0,
+        *,
+        sensitivity: float = 1.0,
+        dof: float = math.inf,
+        source: str = "",
     ) -> Self:
         """Input with a certificate that states U and k (GUM 4.3.3)."""
         _require_size("U", U)
@@ -85,7 +98,13 @@ class Contribution:
 
     @classmethod
     def from_readings(
-        cls, name: str, s: float, n_eff: float, *, sensitivity: float = 1.0, source: str = "",
+        cls,
+        name: str,
+        s: float,
+        n_eff: float,
+        *,
+        sensitivity: float = 1.0,
+        source: str = "",
     ) -> Self:
         """Mean of readings with standard deviation s, worth n_eff independent ones, n_eff > 1 (GUM 4.2.3)."""
         _require_size("s", s)
@@ -95,8 +114,13 @@ class Contribution:
     def as_dict(self) -> dict[str, Any]:
         """As in budgets.json; infinitely many degrees of freedom are null, JSON having no infinity."""
         return {
-            "name": self.name, "u": self.u, "sensitivity": self.sensitivity, "contribution": self.contribution,
-            "distribution": self.distribution, "dof": _finite_or_none(self.dof), "source": self.source,
+            "name": self.name,
+            "u": self.u,
+            "sensitivity": self.sensitivity,
+            "contribution": self.contribution,
+            "distribution": self.distribution,
+            "dof": _finite_or_none(self.dof),
+            "source": self.source,
         }
 
 
@@ -154,8 +178,14 @@ class Budget:
     def as_dict(self) -> dict[str, Any]:
         """As in budgets.json; infinitely many degrees of freedom are null."""
         return {
-            "value": self.value, "unit": self.unit, "u": self.u, "dof": _finite_or_none(self.dof), "k": self.k,
-            "U": self.U, "shape": self.shape, "contributions": [c.as_dict() for c in self.contributions],
+            "value": self.value,
+            "unit": self.unit,
+            "u": self.u,
+            "dof": _finite_or_none(self.dof),
+            "k": self.k,
+            "U": self.U,
+            "shape": self.shape,
+            "contributions": [c.as_dict() for c in self.contributions],
         }
 
 

@@ -26,9 +26,9 @@ def quantity(value: float, unit: str, *, step: float = 0.0) -> str:
 
 def _plain(value: float, step: float) -> str:
     if step <= 0.0:
-        return f"{value:.6g}"
+        return f"{value + 0.0:.6g}"
     decimals = max(0, -math.floor(math.log10(step) + 1e-9))
-    return f"{value:.{decimals}f}"
+    return f"{round(value, decimals) + 0.0:.{decimals}f}"  # + 0.0: nobody writes minus nothing
 
 
 def _prefix_power(value: float) -> int:

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from drivers.bench_file import BenchFile
 from drivers.dialect import CurrentSpan, VoltageSpan
 from sequencer.analysis.uncertainty import Contribution
-from sequencer.engine.methods import range_for
+from sequencer.engine.fixture import range_for
 
 THERMAL_V = 1e-6  # of the leads at the shunt: common practice, no source
 
@@ -90,3 +90,12 @@ class Accuracy:
                 )
             )
         return lines
+
+    def tap(self, number: int, value_V: float) -> list[Contribution]:
+        """Of the supply channel that plays a cell, reading its own output."""
+        name, _, dialect = self.file.at(f"taps.{number - 1}.supply")
+        spans = sorted(
+            (span for span in dialect.accuracy.voltage if span.range >= value_V), key=lambda span: span.range
+        )
+        source = f"accuracy, dialect {dialect.name}"
+        return self._stated(f"{name}, cell {number}", spans[0] if spans else None, value_V, 1.0, source)

@@ -7,11 +7,12 @@ from drivers.text.binding import Bound
 from drivers.text.faults import Faults
 from drivers.text.nearest import unknown
 from drivers.text.si import si
-from sequencer.engine.methods import LOAD_SHARE, SUPPLY_SHARE, load_current_A
+from sequencer.engine.fixture import LOAD_SHARE, SUPPLY_SHARE, load_current_A
 from sequencer.model.findings import definitions
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import Procedure
 from sequencer.model.specification import Specification
+from sequencer.model.steps import SWEEPS
 
 
 def check(
@@ -41,7 +42,7 @@ def check(
 
 def _check_findings(procedure: Bound[Procedure], faults: Faults) -> None:
     known = definitions()
-    made = {step.finding for step in procedure.model.steps if step.finding}
+    made = {step.finding or SWEEPS.get(step.kind) for step in procedure.model.steps}
     for number, step in enumerate(procedure.model.steps):
         if step.finding is not None and step.finding not in {name.partition(".")[0] for name in known}:
             families = {name.partition(".")[0] for name in known}
@@ -51,7 +52,9 @@ def _check_findings(procedure: Bound[Procedure], faults: Faults) -> None:
         if name not in known:
             faults.add(place, unknown(name, known, "finding"))
         elif "." in name and name.partition(".")[0] not in made:
-            faults.add(place, f"no step makes '{name}'; give a charge step 'finding: {name.partition('.')[0]}'")
+            faults.add(
+                place, f"no step makes '{name}'; give the step that shall make it 'finding: {name.partition('.')[0]}'"
+            )
 
 
 def _check_rating(specification: Bound[Specification], faults: Faults) -> None:

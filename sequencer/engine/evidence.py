@@ -19,6 +19,8 @@ from sequencer.engine.durable import RecordError
 from sequencer.engine.inputs import rebind
 from sequencer.engine.record_reader import Record
 from sequencer.engine.sealing import verify
+from sequencer.model.curves import Curve
+from sequencer.model.limits import Declared
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import Procedure, load_procedure
 from sequencer.model.specification import Specification
@@ -66,6 +68,11 @@ class Evidence:
     specification_bytes: bytes
     pack: Pack
     bench: BenchFile
+    curve: Curve | None = None
+
+    @property
+    def declared(self) -> Declared:
+        return Declared(self.specification, self.pack.cells, self.curve)
 
     @property
     def ended(self) -> str:
@@ -113,7 +120,14 @@ def open_evidence(folder: Path, specification: tuple[str, bytes] | None = None) 
         specification_bytes=content,
         pack=rebind(Pack, record.input_bytes("pack.yaml"), "pack.yaml", "pack").model,
         bench=_bench(record),
+        curve=_curve(record),
     )
+
+
+def _curve(record: Record) -> Curve | None:
+    if "curve.yaml" not in record.inputs:
+        return None
+    return rebind(Curve, record.input_bytes("curve.yaml"), "curve.yaml", "curve").model
 
 
 def _procedure(record: Record) -> Procedure:

@@ -11,7 +11,8 @@ from drivers.shipped import locate
 from drivers.text.binding import Bound, M, bind
 from drivers.text.document import Document, compose, read
 from drivers.text.faults import BadInput, Faults, Place
-from sequencer.engine import consistency
+from sequencer.engine import consistency, signal_consistency
+from sequencer.model.curves import Curve, load_curve
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import Procedure, load_procedure
 from sequencer.model.specification import Specification
@@ -46,6 +47,7 @@ class Inputs:
     pack: Bound[Pack]
     bench: BenchFile
     changes: dict[str, str]
+    curve: Bound[Curve] | None = None
 
     @property
     def deviations(self) -> list[str]:
@@ -59,6 +61,8 @@ class Inputs:
             "pack.yaml": self.pack.document,
             "bench.yaml": self.bench.bound.document,
         }
+        if self.curve is not None:
+            named["curve.yaml"] = self.curve.document
         for dialect in self.bench.dialects.values():
             named[f"dialects/{dialect.model.name}.yaml"] = dialect.document
         return named
@@ -72,11 +76,21 @@ def gather(asked: Asked) -> Inputs:
     pack = _pack(asked, specification, faults)
     bench_path = locate(asked.bench, FOLDERS["bench"], "bench", Place("--bench"), faults)
     bench = None if bench_path is None else load_bench(bench_path, faults)
+    curve = _curve(specification, faults)
     consistency.check(procedure, specification, pack, bench, faults)
+    signal_consistency.check(procedure, specification, pack, bench, curve, faults)
     faults.raise_if_any()
     if procedure is None or specification is None or pack is None or bench is None:
         raise AssertionError("a file without faults was not read")
-    return Inputs(procedure, specification, pack, bench, dict(asked.changes))
+    return Inputs(procedure, specification, pack, bench, dict(asked.changes), curve)
+
+
+def _curve(specification: Bound[Specification] | None, faults: Faults) -> Bound[Curve] | None:
+    if specification is None or specification.model.temperature is None:
+        return None
+    place = specification.place("temperature", "curve")
+    beside = Path(specification.document.name).parent
+    return load_curve(specification.model.temperature.curve, faults, place, beside)
 
 
 def _procedure(asked: Asked, faults: Faults) -> Bound[Procedure] | None:

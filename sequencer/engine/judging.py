@@ -13,13 +13,17 @@ import numpy as np
 from drivers.text.measures import Rule
 from drivers.text.si import si
 from sequencer.analysis.decision import Decision, decide, decide_class, decide_state, exit_status, overall
+from sequencer.analysis.intervals import decide_interval
 from sequencer.analysis.uncertainty import Budget
 from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.evidence import Evidence, Window, open_evidence
+from sequencer.engine.found import Found
 from sequencer.engine.judgements import changes, latest, new_judgement, write_json
 from sequencer.engine.manifest import program_version, sha256
-from sequencer.engine.measured import ChargeStep, Found, measure_charges
-from sequencer.model.findings import LimitRow, declared_elsewhere, limit_rows
+from sequencer.engine.measured import ChargeStep, measure_charges
+from sequencer.engine.swept import id_findings, start_findings
+from sequencer.engine.walked import walk_findings
+from sequencer.model.limits import LimitRow
 
 # What a trip of the charger's own doing says something about; the first of them that is declared.
 TRIP_LIMITS = {
@@ -55,7 +59,7 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
     """Judge a sealed record into a new numbered folder. Raises RecordError, BadInput; the record is not touched."""
     evidence = open_evidence(record, asked.specification)
     previous = latest(record)
-    rows = limit_rows(evidence.specification, evidence.procedure.judge, asked.rule)
+    rows = evidence.declared.rows(evidence.procedure.judge, asked.rule)
     found, classification = _findings(evidence, rows)
     verdicts = [_verdict(row, found.get(row.name) or _not_made(row, evidence)) for row in rows]
     words = [verdict["verdict"] for verdict in verdicts]
@@ -72,7 +76,7 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
 
 
 def _findings(evidence: Evidence, rows: list[LimitRow]) -> tuple[dict[str, Found], dict[str, Any] | None]:
-    found = {"charges": measure_charges(evidence)}
+    found = {"charges": measure_charges(evidence), **_signal_findings(evidence)}
     window = evidence.window("charge")
     if window is not None:
         step = ChargeStep(evidence, window)
@@ -82,6 +86,14 @@ def _findings(evidence: Evidence, rows: list[LimitRow]) -> tuple[dict[str, Found
         name, tripped = _tripped(evidence, trip, rows)
         found[name] = tripped
     return found, _unfinished(evidence)
+
+
+def _signal_findings(evidence: Evidence) -> dict[str, Found]:
+    """What sweeps and walks found; nothing where there were none."""
+    highest_V = min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
+    accuracy = Accuracy(evidence.bench, highest_V)
+    starts = start_findings(evidence, accuracy)
+    return {**id_findings(evidence, accuracy), **starts, **walk_findings(evidence, accuracy)}
 
 
 def _unfinished(evidence: Evidence) -> dict[str, Any] | None:
@@ -182,7 +194,9 @@ def _verdict(row: LimitRow, found: Found) -> dict[str, Any]:
         "low": band.low if band else None,
         "high": band.high if band else None,
         "expected": row.expected,
-        "rule": row.rule if row.kind == "quantity" else None,
+        "rule": row.rule if row.kind in ("quantity", "interval") else None,
+        "interval": None if found.interval is None or shown is None else list(found.interval),
+        "declared": row.words,
         "guard_band": decision.guard_band,
         "p_conform": decision.p_conform,
         "evidence": None if found.start_s is None else [_number(found.start_s), _number(found.end_s)],
@@ -206,11 +220,11 @@ def _decision(row: LimitRow, found: Found) -> Decision:
 
 
 def _none_seen(row: LimitRow, none: str) -> Decision:
-    """The charger shows no such thing: a declared stage or phase that is missing is a fail of its limit."""
+    """The charger shows no such thing: a declared stage, phase or trip that is missing is a fail of its limit."""
     if row.finding == "charge.current_after_end":
         return Decision("not applicable", None, None, none)
-    assert row.band is not None
-    return Decision("fail", None, None, f"{none}; declared is {row.band.text}")
+    declared = row.words or (row.band.text if row.band is not None else row.expected)
+    return Decision("fail", None, None, f"{none}; declared is {declared}")
 
 
 def _judged(row: LimitRow, found: Found) -> Decision:
@@ -224,6 +238,9 @@ def _judged(row: LimitRow, found: Found) -> Decision:
     assert found.budget is not None
     assert row.band is not None
     budget = found.budget
+    if found.interval is not None:
+        low, high = found.interval
+        return decide_interval(low, high, budget.u, budget.k, row.band.low, row.band.high, row.rule, unit=row.unit)
     return decide(budget.value, budget.u, budget.k, row.band.low, row.band.high, row.rule, unit=row.unit)
 
 
@@ -257,7 +274,7 @@ def _judgement_document(
     evidence: Evidence, asked: Rejudging, folder: Path, document: dict[str, Any], previous: Path | None, utc: str
 ) -> dict[str, Any]:
     before = None if previous is None else json.loads((previous / "verdicts.json").read_text("utf-8"))
-    elsewhere = declared_elsewhere(evidence.specification, evidence.procedure.judge)
+    elsewhere = evidence.declared.elsewhere(evidence.procedure.judge)
     return {
         "number": int(folder.name),
         "utc": utc,

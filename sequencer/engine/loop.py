@@ -17,12 +17,16 @@ from sequencer.engine.channels import SampleFlag
 from sequencer.engine.guard import Guard
 from sequencer.engine.pace import FAST_s, Pace, QUIET_s
 from sequencer.engine.scan import Scan, Scanner, Seen
-from sequencer.engine.standin import Events, Follow, StandIn
+from sequencer.engine.slow import PERIOD_s as SLOW_PERIOD_s
+from sequencer.engine.slow import SlowGroup
+from sequencer.engine.standin import Events, Follow, StandIn, tap_volts
 
 if TYPE_CHECKING:
     from sequencer.engine.journal import Journal
     from sequencer.engine.record import RecordFolder
 
+SLOW_PATIENCE_s = 1.0
+SMALLEST_TAP_MOVE_V = 0.001
 SMALLEST_MOVE_V = 0.0005  # half of the resolution of common supplies: smaller moves would not be made
 
 
@@ -68,6 +72,8 @@ class Loop:
     shares: Shares = field(default_factory=Shares)
     last: Scan | None = None
     stand_in_words: dict[str, object] | None = None
+    slow: SlowGroup | None = None
+    tap_offsets_V: tuple[float, ...] = ()  # of each cell against the mean; empty: no taps are played
     _set_V: float | None = None
     _load_A: float = 0.0
     _mains: int = 0
@@ -75,6 +81,8 @@ class Loop:
     def __post_init__(self) -> None:
         self._scanner = Scanner(self.bench)
         self._next_s = self.bench.clock.now()
+        self._slow_s = 0.0
+        self._tap_V: dict[int, float] = {}
 
     @property
     def now_s(self) -> float:
@@ -116,10 +124,18 @@ class Loop:
         elif deed.speaker is bench.load and deed.what == "current":
             self._load_A = deed.value or 0.0
             self.journal.append("set.load.current", time_s, self._load_A)
+        elif deed.what == "voltage" and (number := self._tap_of(deed)) is not None:
+            self._tap_V[number] = deed.value or 0.0
+            self.journal.append(f"set.tap{number}", time_s, self._tap_V[number])
         elif deed.speaker is bench.mains and deed.what in ("on", "off"):
             self._mains = int(deed.what == "on")
             self.journal.append("set.mains", time_s, self._mains)
             self.event("mains", on=bool(self._mains))
+
+    def _tap_of(self, deed: Deed) -> int | None:
+        """Which cell a setting of a tap supply plays, from 1."""
+        taps = enumerate(self.bench.signals.taps, 1)
+        return next((n for n, tap in taps if tap.supply is deed.speaker and tap.channel == deed.channel), None)
 
     def _one(self) -> Scan:
         begun = wall_seconds()
@@ -137,6 +153,7 @@ class Loop:
         self.shares.record_s += written - asked
         self.shares.scans += 1
         self.guard.check(scan, period_s, self._set_V)
+        self._look_around(scan)
         self._follow(scan)
         self.last = scan
         self._next_s = scan.time_s + self.pace.period_s(scan.time_s)
@@ -172,6 +189,20 @@ class Loop:
             flag = SampleFlag.GOOD if seen.good else SampleFlag.OVERLOAD
             self.journal.append(channel, seen.time_s, seen.value, flag)
 
+    def look_around_next(self) -> None:
+        """The slow group is due at the next scan, whatever its period."""
+        self._slow_s = 0.0
+
+    def _look_around(self, scan: Scan) -> None:
+        """The slow group, when it is due."""
+        if self.slow is None or not self.slow.any or scan.time_s < self._slow_s:
+            return
+        begun = wall_seconds()
+        for channel, time_s, value in self.slow.ask(wait_s=SLOW_PATIENCE_s):
+            self.journal.append(channel, time_s, value, SampleFlag.GOOD if value == value else SampleFlag.OVERLOAD)
+        self._slow_s = scan.time_s + SLOW_PERIOD_s
+        self.shares.exchange_s += wall_seconds() - begun
+
     def _follow(self, scan: Scan) -> None:
         """Pace, compression, and the next node voltage."""
         if not scan.current_A.good:
@@ -187,6 +218,27 @@ class Loop:
             self.stand_in.choose_compression(scan.time_s, scan.charger_V.value, current_A, self.events)
         if self._set_V is None or abs(node_V - self._set_V) >= SMALLEST_MOVE_V:
             self._move_node(node_V)
+        if self.tap_offsets_V and scan.charger_V.good:
+            self.move_taps(scan.charger_V.value)
+
+    def move_taps(self, pack_V: float) -> None:
+        """Set the cells that supplies play to their share of the pack's voltage and their offsets, in one exchange."""
+        taps = self.bench.signals.taps
+        volts = tap_volts(pack_V, len(self.tap_offsets_V), self.tap_offsets_V)
+        moved = [
+            Deed(taps[number - 1].supply, "voltage", value_V, channel=taps[number - 1].channel)
+            for number, value_V in enumerate(volts, 1)
+            if abs(value_V - self._tap_V.get(number, 0.0)) >= SMALLEST_TAP_MOVE_V
+        ]
+        if not moved:
+            return
+        begun = wall_seconds()
+        replies = self.bench.exchange([deed.job for deed in moved], FAST_s)
+        self.shares.exchange_s += wall_seconds() - begun
+        for deed, reply in zip(moved, replies, strict=True):
+            if not isinstance(reply.fault, LinkFault):
+                deed.speaker.verify(reply, deed.what, deed.value)
+                self._note(deed)
 
     def _move_node(self, node_V: float) -> None:
         begun = wall_seconds()

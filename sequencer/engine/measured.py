@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field, replace
+from dataclasses import replace
 from itertools import pairwise
 
 import numpy as np
@@ -15,6 +15,7 @@ from sequencer.analysis.estimates import Estimate, mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.evidence import Evidence, Window
+from sequencer.engine.found import Found
 from sequencer.engine.pace import FAST_s
 from sequencer.engine.stability import turning_points
 
@@ -32,34 +33,6 @@ STAIRS_s = 30.0  # the last steps of the stand-in before the end
 SWING_V = 0.005  # per cell: the stand-in's own small steps stay far below
 SWINGS = 6  # turns in a row, each within TURN_WITHIN of the one before: a loop, not a charger's few steps
 TURN_WITHIN = 4.0  # times (settling + one fast scan); an unstable loop turns every (2d + 1) scans
-
-
-@dataclass(frozen=True)
-class Found:
-    """One finding: a quantity with its budget, or a state or class; or why there is none.
-
-    `trouble`: it was looked for and cannot be told (inconclusive). `absent`: it was not made (not run).
-    `none`: the charger shows no such thing.
-    """
-
-    budget: Budget | None = None
-    seen: str | None = None
-    probability: float | None = None
-    n: int | None = None
-    start_s: float | None = None
-    end_s: float | None = None
-    trouble: str | None = None
-    absent: str | None = None
-    none: str | None = None
-    words: str = ""
-
-
-@dataclass(frozen=True)
-class Measured:
-    """All findings of one charge by limit name, and the classification that the figure shows."""
-
-    found: dict[str, Found] = field(default_factory=dict)
-    classification: Classification | None = None
 
 
 def measure_charges(evidence: Evidence) -> Found:
@@ -355,9 +328,10 @@ class ChargeStep:
         estimate = self.reading.regulation_V
         if estimate is None:
             return self._missing("no constant-voltage phase was seen")
-        if estimate.n < 2 * FEWEST:
-            return Found(trouble=f"only {estimate.n} readings at constant voltage")
-        return self._per_cell(estimate, [], self._untrusted(estimate))
+        trouble = self._untrusted(estimate)
+        if trouble is None and estimate.n < 2 * FEWEST:
+            trouble = f"only {estimate.n} readings at constant voltage"
+        return Found(trouble=trouble) if estimate.n < 2 * FEWEST else self._per_cell(estimate, [], trouble)
 
     def _end_voltage(self) -> Found:
         estimate = self.reading.end_voltage_V

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from sequencer.engine import methods
+from sequencer.engine import fixture, methods
 from sequencer.engine.inputs import Inputs
 from sequencer.engine.standin import Events, Follow, StandIn
 from sequencer.model.pack import Pack
@@ -47,7 +47,7 @@ def plan_of(inputs: Inputs) -> Plan:
 
 def _seconds(step: Step, stand_in: StandIn, pack: Pack, specification: Specification) -> float:
     if step.insert is not None:
-        still_s = 3 * methods.SETTLE_s + 3 * methods.MEAN_s
+        still_s = 3 * fixture.SETTLE_s + 3 * fixture.MEAN_s
         return still_s + specification.dwell.start_delay + 1.0
     if step.charge is not None:
         return charge_s(step.charge, stand_in, pack, specification)

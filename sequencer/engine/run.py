@@ -12,7 +12,8 @@ from drivers.clock import wall_seconds
 from drivers.open_bench import OpenBench
 from drivers.safe import SafeState, to_safe_state
 from drivers.trouble import BenchFault
-from sequencer.engine import methods, startup
+from sequencer.engine import fixture, methods, startup, sweeps, walks
+from sequencer.engine.channels import CHANNELS
 from sequencer.engine.guard import Bounds, Guard, Trip
 from sequencer.engine.inputs import Inputs
 from sequencer.engine.loop import Interrupted, Loop, RecordLost, StopFlag
@@ -20,9 +21,11 @@ from sequencer.engine.manifest import description_of, outcome_of
 from sequencer.engine.pace import Pace
 from sequencer.engine.record import RecordFolder
 from sequencer.engine.scan import Scan
+from sequencer.engine.site import Site
+from sequencer.engine.slow import SlowGroup, channels_of
 from sequencer.engine.standin import Events
 from sequencer.model.findings import findings_text
-from sequencer.model.procedure import Procedure, Step
+from sequencer.model.procedure import Step
 
 FAST_SHARE = 10  # one rehearsal in so many runs fast throughout, and must give the same verdicts
 
@@ -69,7 +72,8 @@ def run(inputs: Inputs, bench: OpenBench, options: Options, stop: StopFlag, watc
             record.add_input(name, document.content)
         record.add_input("findings.yaml", findings_text())
         start_utc = bench.clock.utc()
-        journal = record.start_journal(start_utc=start_utc, wall_s=wall_seconds)
+        channels = (*CHANNELS, *channels_of(bench, inputs.pack.model.cells))
+        journal = record.start_journal(start_utc=start_utc, channels=channels, wall_s=wall_seconds)
         loop = _loop(inputs, bench, options, stop, record, journal, watching)
         described = description_of(inputs, bench, start_utc, options.seed)
         record.event(0.0, "run-start", **described)
@@ -103,6 +107,7 @@ def _loop(
         stop=stop,
         events=Events.of(specification, 1.0),
         on_scan=watching.scans,
+        slow=SlowGroup(bench, pack.cells - 1),
     )
 
 
@@ -134,45 +139,55 @@ def _prepare(inputs: Inputs, loop: Loop, watching: Watching) -> None:
         if not state.verified:
             raise BenchFault("bench", "outputs were on at the start and could not be proven off")
     watching.says("fixing ranges, arming protections")
-    methods.prepare(loop.bench, inputs.pack.model, inputs.specification.model)
+    fixture.prepare(loop.bench, inputs.pack.model, inputs.specification.model)
     startup.refuse_foreign_voltage(loop.bench)
 
 
 def _steps(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> str:
+    curve = None if inputs.curve is None else inputs.curve.model
+    site = Site(loop, inputs.pack.model, inputs.specification.model, curve, options.forced_delay)
     for number, step in enumerate(inputs.procedure.model.steps, 1):
         if options.only and step.kind not in options.only and step.expect is None and step.kind != "remove":
             loop.event("step-left-out", step=number, does=step.kind)
             continue
-        words = _words(step, inputs.procedure.model)
+        words = _words(step)
         watching.says(words)
         loop.event("step-start", step=number, does=step.kind, words=words)
-        outcome = _do(step, inputs, loop, options)
+        outcome = _do(step, site)
         loop.event("step-end", step=number, outcome=outcome)
         if outcome == "does not charge":
             return "the charger does not charge a nominal pack; nothing more can be shown of it"
     return "every step was carried out"
 
 
-def _words(step: Step, procedure: Procedure) -> str:
+def _words(step: Step) -> str:
     if step.insert is not None:
         return f"inserting a pack at {step.insert.cell_voltage:g} V per cell, waiting for the charger"
     if step.charge is not None:
-        faster = (
-            f", up to {step.charge.compression:g} times faster than the pack" if step.charge.compression > 1 else ""
-        )
-        return f"charging until the charger ends it{faster}"
+        times = step.charge.compression
+        return f"charging until the charger ends it{f', up to {times:g} times faster than the pack' * (times > 1)}"
+    if step.sweep_id is not None:
+        return "sweeping ID resistances: bands, edges, open, short"
+    if step.sweep_temperature is not None:
+        return "sweeping the thermistor: where a charge starts, where it goes on, open, short"
+    if step.raise_cell is not None:
+        return "raising one cell after the other until the charge stops"
     return "taking the pack out"
 
 
-def _do(step: Step, inputs: Inputs, loop: Loop, options: Options) -> str:
-    specification = inputs.specification.model
+def _do(step: Step, site: Site) -> str:
     if step.insert is not None:
-        charges = methods.insert(loop, step.insert, inputs.pack.model, specification, options.forced_delay)
-        return "charges" if charges else "does not charge"
+        return "charges" if methods.insert(site, step.insert) else "does not charge"
     if step.charge is not None:
-        loop.events = Events.of(specification, step.charge.compression)
-        return methods.charge(loop, step.charge, specification)
-    methods.remove(loop, specification)
+        return methods.charge(site, step.charge)
+    if step.sweep_id is not None:
+        return sweeps.sweep_id(site, step.sweep_id)
+    if step.sweep_temperature is not None:
+        started = sweeps.sweep_starts(site, step.sweep_temperature)
+        return f"{started}; {walks.walk_temperatures(site, step.sweep_temperature)}"
+    if step.raise_cell is not None:
+        return walks.raise_cells(site, step.raise_cell)
+    methods.remove(site)
     return "removed"
 
 

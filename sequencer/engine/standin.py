@@ -24,6 +24,12 @@ BELOW_BOUND_V = 0.02  # per cell
 LARGEST_MOVE_V = 0.010  # per cell and scan: how far any setting may move
 
 
+def tap_volts(pack_V: float, cells: int, offsets_V: tuple[float, ...]) -> list[float]:
+    """Voltages of the cells that supplies play, lowest first; the top cell is what is left to B+."""
+    mean_V = pack_V / cells
+    return [mean_V + offset_V for offset_V in offsets_V[: cells - 1]]
+
+
 @dataclass(frozen=True)
 class Follow:
     """How the stand-in follows the current at one pace: printed, recorded, and held against the charger's response."""

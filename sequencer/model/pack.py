@@ -54,6 +54,8 @@ class Pack(Written):
     resistance: PositiveOhms = Field(description="of the whole pack, its contacts included")
     relaxation: Relaxation | None = None
     rated_current: PositiveAmperes = Field(description="largest charging current that the pack's maker allows")
+    id: PositiveOhms | None = Field(None, description="ID resistor; default: the middle of the first declared band")
+    thermistor: str | None = Field(None, description="its curve; default: the one that the specification declares")
     cell_voltage_max: PositiveVolts | None = Field(None, description="guard bound per cell; default: full OCV + 150 mV")
 
     @property

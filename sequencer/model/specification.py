@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
 from typing import Literal
 
 from pydantic import BaseModel, ConfigDict, Field, model_validator
@@ -18,6 +19,7 @@ from drivers.text.measures import (
     VoltLimit,
     refuse,
 )
+from sequencer.model.signals import IdBand, IdElsewhere, TapTrip, TemperatureWindow
 
 Algorithm = Literal["cc-cv", "stepped-cc", "stepped-cc-cv", "cc-only", "cv-only", "constant-power", "pulsed"]
 
@@ -71,10 +73,23 @@ class Specification(Written):
     dwell: Dwell
     rating_current: PositiveAmperes | None = Field(None, description="rating plate: largest current it can deliver")
     charge: Charge
+    id_bands: tuple[IdBand, ...] = Field((), description="ID resistances and the current that each selects")
+    id_elsewhere: IdElsewhere = IdElsewhere()
+    temperature: TemperatureWindow | None = None
+    tap_trip: TapTrip | None = None
+
+    @model_validator(mode="after")
+    def _bands_apart(self) -> Specification:
+        ordered = sorted(self.id_bands, key=lambda band: band.low_ohm)
+        for lower, upper in pairwise(ordered):
+            if upper.low_ohm <= lower.high_ohm:
+                raise refuse(f"id_bands: {upper.id.text} overlaps {lower.id.text}; a resistance selects one current")
+        return self
 
     @property
     def largest_declared_A(self) -> float:
-        return max(stage.current.high or 0.0 for stage in self.charge.stages)
+        by_id = [band.current.high or 0.0 for band in self.id_bands]
+        return max([*by_id, *(stage.current.high or 0.0 for stage in self.charge.stages)])
 
     @property
     def physical_current_A(self) -> float:

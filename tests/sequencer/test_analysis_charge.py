@@ -152,9 +152,7 @@ def test_current_agreement_shows_the_difference() -> None:
     rng = np.random.default_rng(1)
     time = np.arange(0.0, 100.0, 0.5)
     noise = 0.002 * rng.normal(size=(3, time.size))
-    found = current_agreement(
-        time, 3.0 + noise[0], 4.0 + noise[1], 1.03 + noise[2], start_s=10.0, end_s=90.0
-    )
+    found = current_agreement(time, 3.0 + noise[0], 4.0 + noise[1], 1.03 + noise[2], start_s=10.0, end_s=90.0)
     assert covers(found, 0.03)
     assert (found.n, found.start_s, found.end_s) == (161, 10.0, 90.0)
 

@@ -50,6 +50,7 @@ def test_what_a_judgement_holds(rehearse: Callable[..., Any]) -> None:
     folder = done.judged.folder
     verdicts = json.loads((folder / "verdicts.json").read_text("utf-8"))
     keys = "limit kind finding verdict why value unit u k n low high expected rule guard_band p_conform evidence"
+    keys += " interval declared"  # of findings that are intervals, and limits that are written in another quantity
     for verdict in verdicts["verdicts"]:
         assert set(verdict) == set(keys.split())
     assert verdicts["overall"] == "pass"

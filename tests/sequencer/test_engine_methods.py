@@ -11,8 +11,8 @@ from drivers.virtual import world
 from drivers.virtual.meter import Meter
 from drivers.virtual.trace import CHARGER, NODE, SHUNT
 from sequencer.engine.evidence import open_evidence
+from sequencer.engine.fixture import LOAD_SHARE, load_current_A, range_for
 from sequencer.engine.inputs import Asked, gather
-from sequencer.engine.methods import LOAD_SHARE, load_current_A, range_for
 
 QUICK = {"start": "4.00 V", "after": "10 s"}
 

@@ -6,7 +6,8 @@ import pytest
 
 from drivers.text.measures import Band
 from sequencer.engine.inputs import Asked, gather
-from sequencer.model.findings import declared_elsewhere, definitions, limit_rows
+from sequencer.model.findings import definitions
+from sequencer.model.limits import Declared
 from sequencer.model.specification import Specification
 
 
@@ -19,11 +20,11 @@ def test_every_measurand_says_what_where_when_and_what_makes_it_inconclusive() -
     """Terms of a measurand's definition: JCGM 200:2012, 2.3 (from memory), and what a repeat of the test needs."""
     for name, definition in definitions().items():
         assert all((definition.measures, definition.when, definition.statistic, definition.inconclusive)), name
-        assert (definition.unit != "") == (definition.kind == "quantity"), name
+        assert (definition.unit != "") == (definition.kind in ("quantity", "interval")), name
 
 
 def test_rows_follow_the_procedures_order_one_a_stage(spec: Specification) -> None:
-    rows = limit_rows(spec, ("charge.ends", "charge.stage.current", "charges"))
+    rows = Declared(spec, 5).rows(("charge.ends", "charge.stage.current", "charges"))
     stages = [f"charge.stage{number}.current" for number in range(1, len(spec.charge.stages) + 1)]
     assert [row.name for row in rows] == ["charge.ends", *stages, "charges"]
     assert rows[-1].expected == "charges"
@@ -33,12 +34,12 @@ def test_a_limits_own_rule_wins_over_the_specifications_and_a_person_over_both(s
     own = Band(None, 0.01, rule="simple", text="below 10 mA")
     changed = spec.model_copy(update={"charge": spec.charge.model_copy(update={"current_after_end": own})})
     judged = ("charge.current_after_end", "charge.end_voltage")
-    assert [row.rule for row in limit_rows(changed, judged)] == ["simple", "guarded"]
-    assert [row.rule for row in limit_rows(changed, judged, "guarded")] == ["guarded", "guarded"]
+    assert [row.rule for row in Declared(changed, 5).rows(judged)] == ["simple", "guarded"]
+    assert [row.rule for row in Declared(changed, 5).rows(judged, "guarded")] == ["guarded", "guarded"]
 
 
 def test_what_is_not_declared_is_a_row_without_a_limit(spec: Specification) -> None:
-    rows = {row.name: row for row in limit_rows(spec, tuple(definitions()))}
+    rows = {row.name: row for row in Declared(spec, 5).rows(tuple(definitions()))}
     stepped = spec.charge.algorithm == "stepped-cc"
     assert rows["charge.voltage"].declared is not stepped
     assert rows["charge.stage1.threshold"].declared is stepped
@@ -46,7 +47,7 @@ def test_what_is_not_declared_is_a_row_without_a_limit(spec: Specification) -> N
 
 def test_limits_that_the_procedure_leaves_out_are_named(spec: Specification) -> None:
     everything = tuple(definitions())
-    assert declared_elsewhere(spec, everything) == []
-    assert declared_elsewhere(spec, ("charges",)) != []
-    left = declared_elsewhere(spec, tuple(name for name in everything if name != "charge.ends"))
+    assert Declared(spec, 5).elsewhere(everything) == []
+    assert Declared(spec, 5).elsewhere(("charges",)) != []
+    left = Declared(spec, 5).elsewhere(tuple(name for name in everything if name != "charge.ends"))
     assert left == ["charge.ends"]

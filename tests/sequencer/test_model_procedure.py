@@ -36,7 +36,7 @@ def test_parameters_and_their_changes() -> None:
         (FIRST + "  - charge: {}\n    remove: {}\n", "a step does one thing"),
         (FIRST + "  - expect: charges\n", "a step does one thing"),
         (FIRST + "  - remove: {}\n    expect: charges\n", "'expect' belongs to an insert step"),
-        (FIRST + "  - remove: {}\n    finding: charge\n", "'finding' belongs to a charge step"),
+        (FIRST + "  - remove: {}\n    finding: charge\n", "'finding' belongs to a step that finds something"),
         (FIRST + FIRST, "step 2 inserts a pack while one is in"),
         (FIRST + "  - remove: {}\n  - remove: {}\n", "step 3 (remove) needs a pack"),
         ("  - charge: {}\n", "the first step must be an insert"),

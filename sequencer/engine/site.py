@@ -1,0 +1,84 @@
+"""What the methods share while a run goes on: the loop, the files, and what was measured on the way."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, field, replace
+
+from drivers.open_bench import OpenBench
+from sequencer.engine.loop import Loop
+from sequencer.model.curves import Curve
+from sequencer.model.pack import Pack
+from sequencer.model.specification import Specification
+
+Setpoint = float | str  # Ω, or "open" or "short"
+NOMINAL_C = 25.0
+
+
+@dataclass(frozen=True)
+class Situation:
+    """What the charger shall see at the pack's contacts; None: the bench does not play it."""
+
+    cell_V: float
+    id: Setpoint | None = None
+    thermistor: Setpoint | None = None
+    offsets_V: tuple[float, ...] = ()  # of each cell against the mean, lowest first; they sum to zero
+
+
+@dataclass
+class Site:
+    """One bench with one charger, one pack to play, one specification."""
+
+    loop: Loop
+    pack: Pack
+    specification: Specification
+    curve: Curve | None = None
+    forced_delay: int | None = None
+    settling_s: float | None = None
+    fixture_ohm: float | None = None
+    zero_V: float = 0.0
+    control_A: float | None = None  # of the first control; later ones must charge within 5 % of it
+    situation: Situation | None = None
+    points: int = field(default=0)
+
+    @property
+    def bench(self) -> OpenBench:
+        return self.loop.bench
+
+    def nominal(self, cell_V: float, temperature_C: float = NOMINAL_C) -> Situation:
+        """A pack that must be charged, as far as this bench plays it."""
+        signals = self.bench.signals
+        return Situation(
+            cell_V,
+            None if signals.id is None else self.nominal_id,
+            None if signals.thermistor is None else self.ohm_at(temperature_C),
+            (0.0,) * self.pack.cells if signals.taps else (),
+        )
+
+    @property
+    def nominal_id(self) -> Setpoint:
+        if self.pack.id is not None:
+            return self.pack.id
+        bands = self.specification.id_bands
+        return bands[0].middle_ohm if bands else "open"
+
+    def ohm_at(self, celsius: float) -> Setpoint:
+        return "open" if self.curve is None else self.curve.ohm_at(celsius)
+
+    def nominal_current(self) -> tuple[float, float]:
+        """Low and high of the current that a nominal pack is declared to get, A."""
+        stage = self.specification.charge.stages[0].current
+        for band in self.specification.id_bands:
+            if isinstance(self.nominal_id, float) and band.low_ohm <= self.nominal_id <= band.high_ohm:
+                stage = band.current
+        low = stage.low if stage.low is not None and stage.low > 0 else (stage.high or 0.0)
+        return low, stage.high or math.inf
+
+    def declared_currents(self) -> list[tuple[float, float]]:
+        """(low, high) of each current that an ID can select; the nominal one where none are declared."""
+        bands = [(band.current.low, band.current.high) for band in self.specification.id_bands]
+        known = [(low, high) for low, high in bands if low is not None and high is not None and low > 0]
+        return known or [self.nominal_current()]
+
+    def with_id(self, situation: Situation, ohm: Setpoint) -> Situation:
+        return replace(situation, id=ohm)

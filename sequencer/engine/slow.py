@@ -1,0 +1,120 @@
+"""The slow group: what the scanner, the tap supplies and the thermometer say, once in a while beside the fast group."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+from drivers.exchange import Job, Reply
+from drivers.open_bench import OpenBench
+from drivers.signal_roles import Lists
+from drivers.text.si import si
+from drivers.trouble import BenchFault
+from sequencer.engine.channels import Channel
+from sequencer.engine.guard import LOST_READINGS, Trip
+
+PERIOD_s = 2.0
+
+
+@dataclass(frozen=True)
+class _Question:
+    """One question, and the record's channel and factor of each of its values."""
+
+    job: Job
+    speaker: Lists
+    what: str
+    channels: tuple[str, ...]
+    names: tuple[tuple[str, float], ...]
+
+
+@dataclass
+class SlowGroup:
+    """Questions of the slow group, asked in one exchange."""
+
+    bench: OpenBench
+    taps: int
+    _lost: dict[str, int] = field(default_factory=dict)
+
+    def __post_init__(self) -> None:
+        self._questions = [*self._senses(), *self._tap_volts()]
+
+    @property
+    def any(self) -> bool:
+        return bool(self._questions) or self.bench.signals.thermometer is not None
+
+    def ask(self, wait_s: float) -> list[tuple[str, float, float]]:
+        """(channel, run time, value) of everything that answered. Raises Trip for a link lost, a tap too high."""
+        thermometer = self.bench.signals.thermometer
+        jobs = [question.job for question in self._questions]
+        jobs += [] if thermometer is None else [thermometer.reading("celsius")]
+        replies = self.bench.exchange(jobs, wait_s)
+        found: list[tuple[str, float, float]] = []
+        for question, reply in zip(self._questions, replies, strict=False):
+            found += self._read(question, reply)
+        if thermometer is not None and replies[-1].fault is None:
+            found.append(("ambient", replies[-1].time_s, thermometer.read(replies[-1])))
+        return found
+
+    def _read(self, question: _Question, reply: Reply) -> list[tuple[str, float, float]]:
+        try:
+            values = question.speaker.answers(reply, question.what, question.channels)
+        except BenchFault as fault:
+            count = self._lost.get(fault.instrument, 0) + 1
+            self._lost[fault.instrument] = count
+            if count >= LOST_READINGS:
+                raise Trip("bench", fault.instrument, float("nan"), "", float("nan"), f"lost: {fault}") from fault
+            return []
+        self._lost[question.speaker.name] = 0
+        named = [
+            (name, reply.time_s, value * factor) for (name, factor), value in zip(question.names, values, strict=True)
+        ]
+        self._check_taps(named)
+        return named
+
+    def _check_taps(self, named: list[tuple[str, float, float]]) -> None:
+        limit_V = self.bench.file.bench.limits.tap
+        for name, _, value in named:
+            if name.startswith("tap") and name.endswith("voltage") and value > limit_V:
+                why = f"{name} reads {si(value, 'V')}, above the bench's limit for a tap"
+                raise Trip("bench", name, value, "V", limit_V, why)
+
+    def _senses(self) -> list[_Question]:
+        """One question a scanner: voltages at the ID and thermistor contacts, tap currents by shunt."""
+        signals = self.bench.signals
+        wanted: list[tuple[Lists, str, str, float]] = []
+        for name, line in (("id.sense", signals.id), ("thermistor.sense", signals.thermistor)):
+            if line is not None:
+                wanted.append((line.scanner, line.sense, name, 1.0))
+        for number, tap in enumerate(signals.taps[: self.taps], 1):
+            wanted.append((tap.scanner, tap.sense, f"tap{number}.current", 1.0 / tap.shunt_ohm))
+        return _grouped(wanted)
+
+    def _tap_volts(self) -> list[_Question]:
+        taps = self.bench.signals.taps[: self.taps]
+        return _grouped([(tap.supply, tap.channel, f"tap{number}.voltage", 1.0) for number, tap in enumerate(taps, 1)])
+
+
+def _grouped(wanted: list[tuple[Lists, str, str, float]]) -> list[_Question]:
+    """One question an instrument."""
+    questions = []
+    for name in dict.fromkeys(speaker.name for speaker, *_ in wanted):
+        mine = [(speaker, channel, label, factor) for speaker, channel, label, factor in wanted if speaker.name == name]
+        speaker, channels = mine[0][0], tuple(channel for _, channel, _, _ in mine)
+        labels = tuple((label, factor) for _, _, label, factor in mine)
+        questions.append(_Question(speaker.ask("volts", channels), speaker, "volts", channels, labels))
+    return questions
+
+
+def channels_of(bench: OpenBench, cells: int) -> tuple[Channel, ...]:
+    """The record's channels for what this bench has beyond the node."""
+    signals = bench.signals
+    found = []
+    for name, line in (("id", signals.id), ("thermistor", signals.thermistor)):
+        if line is not None:
+            found += [Channel(f"set.{name}", "Ω", "setting"), Channel(f"{name}.sense", "V", "measured")]
+    for number in range(1, min(len(signals.taps), cells - 1) + 1):
+        found += [
+            Channel(f"set.tap{number}", "V", "setting"),
+            Channel(f"tap{number}.voltage", "V", "measured"),
+            Channel(f"tap{number}.current", "A", "measured"),
+        ]
+    return (*found, *([] if signals.thermometer is None else [Channel("ambient", "°C", "measured")]))

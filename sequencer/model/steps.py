@@ -1,0 +1,121 @@
+"""The kinds of step that a procedure is made of: few, and each does one thing a person could do by hand."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, model_validator
+
+from drivers.text.measures import Celsius, Measure, PositiveSeconds, PositiveVolts, Seconds, refuse
+
+MAX_COMPRESSION = 100.0
+KINDS = ("insert", "charge", "remove", "sweep_id", "sweep_temperature", "raise_cell")
+SWEEPS = {"sweep_id": "id", "sweep_temperature": "temperature", "raise_cell": "tap_trip"}  # and what they find
+
+
+class _Part(BaseModel):
+    model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+def _times(value: Any) -> float:
+    """How many times faster: a plain number from 1 to MAX_COMPRESSION."""
+    try:
+        number = float(value)
+    except (TypeError, ValueError) as reason:
+        raise refuse(f'"{value}" is not a number; expected such as 10 (ten times faster than the pack)') from reason
+    if not 1.0 <= number <= MAX_COMPRESSION:
+        raise refuse(f'"{value}" must lie between 1 and {MAX_COMPRESSION:g}')
+    return number
+
+
+# As the file may hold it: a number, or the $name of a parameter.
+_TIMES_SCHEMA = WithJsonSchema(
+    {"anyOf": [{"type": "number", "minimum": 1, "maximum": MAX_COMPRESSION}, {"type": "string"}]}
+)
+Share = Annotated[float, Measure("ratio", above=0)]
+Kelvins = Annotated[float, Measure("temperature difference", above=0)]
+
+
+class Insert(_Part):
+    """Put a pack in: its cells at this open-circuit voltage, its thermistor at this temperature."""
+
+    cell_voltage: PositiveVolts
+    temperature: Celsius = 25.0
+
+
+class FullCharge(_Part):
+    """Charge until the charger ends it."""
+
+    compression: Annotated[float, BeforeValidator(_times), _TIMES_SCHEMA] = Field(
+        1.0, description="at most so many times faster than the pack's capacity, away from declared events"
+    )
+    after: Seconds = Field(30.0, description="watched so long after the end")
+    longest: PositiveSeconds = Field(4 * 3600.0, description="given up after so long")
+
+
+class Remove(_Part):
+    """Take the pack out."""
+
+
+class SweepId(_Part):
+    """Show every declared ID band at its middle and both ends, what lies outside, open and short; find each edge.
+
+    Each point is an insertion of its own; each that must not charge stands between two controls.
+    """
+
+    cell_voltage: PositiveVolts
+    resolution: Share = Field(0.01, description="of an edge: the bracket is no wider than this share of it")
+    outside: Share = Field(0.25, description="so far beyond a band's end a point is shown that must not select it")
+
+
+class SweepTemperature(_Part):
+    """Find the limits for starting (by insertions) and for going on (while charging), and what open and short do."""
+
+    cell_voltage: PositiveVolts
+    resolution: Kelvins = Field(0.5, description="of a limit")
+    beyond: Kelvins = Field(3.0, description="so far outside a declared limit the search begins")
+
+
+class RaiseCell(_Part):
+    """Raise one cell after the other, the others lowered so that the pack's voltage stays, until the charge stops."""
+
+    cell_voltage: PositiveVolts
+    begin: PositiveVolts = Field(alias="from")
+    end: PositiveVolts = Field(alias="to")
+    by: PositiveVolts = 0.010
+
+    @model_validator(mode="after")
+    def _rises(self) -> RaiseCell:
+        if not self.cell_voltage < self.begin < self.end:
+            raise refuse("'from' must lie above 'cell_voltage' and below 'to'")
+        if (self.end - self.begin) / self.by > 200:
+            raise refuse("more than 200 steps from 'from' to 'to'; take a larger 'by'")
+        return self
+
+
+class Step(_Part):
+    """One step: exactly one kind."""
+
+    insert: Insert | None = None
+    charge: FullCharge | None = None
+    remove: Remove | None = None
+    sweep_id: SweepId | None = None
+    sweep_temperature: SweepTemperature | None = None
+    raise_cell: RaiseCell | None = None
+    expect: Literal["charges"] | None = Field(None, description="what must be seen; if not, a fail, and the run ends")
+    finding: str | None = Field(None, description="name under which the step's findings are judged")
+
+    @model_validator(mode="after")
+    def _one_kind(self) -> Step:
+        kinds = [kind for kind in KINDS if getattr(self, kind) is not None]
+        if len(kinds) != 1:
+            raise refuse(f"a step does one thing, of {', '.join(KINDS)}; this one has {kinds or 'none of them'}")
+        if self.expect and self.insert is None:
+            raise refuse("'expect' belongs to an insert step")
+        if self.finding and (self.insert is not None or self.remove is not None):
+            raise refuse("'finding' belongs to a step that finds something: a charge, a sweep, raise_cell")
+        return self
+
+    @property
+    def kind(self) -> str:
+        return next(kind for kind in KINDS if getattr(self, kind) is not None)
