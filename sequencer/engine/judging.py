@@ -21,8 +21,8 @@ from sequencer.engine.found import Found
 from sequencer.engine.judgements import changes, latest, new_judgement, write_json
 from sequencer.engine.manifest import program_version, sha256
 from sequencer.engine.measured import ChargeStep, measure_charges
-from sequencer.engine.swept import id_findings, start_findings
-from sequencer.engine.walked import walk_findings
+from sequencer.engine.swept import Points, id_findings, start_findings
+from sequencer.engine.walked import Walks, walk_findings
 from sequencer.model.limits import LimitRow
 
 # What a trip of the charger's own doing says something about; the first of them that is declared.
@@ -67,7 +67,7 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
     folder = new_judgement(record)
     (folder / "specification.yaml").write_bytes(evidence.specification_bytes)
     write_json(folder / "verdicts.json", document)
-    write_json(folder / "findings.json", _findings_document(found, classification))
+    write_json(folder / "findings.json", {**_findings_document(found, classification), **_maps(evidence)})
     write_json(folder / "budgets.json", {name: one.budget.as_dict() for name, one in found.items() if one.budget})
     write_json(folder / "judgement.json", _judgement_document(evidence, asked, folder, document, previous, utc))
     left_out = min(_left_out(evidence), words.count("not run"))
@@ -90,10 +90,22 @@ def _findings(evidence: Evidence, rows: list[LimitRow]) -> tuple[dict[str, Found
 
 def _signal_findings(evidence: Evidence) -> dict[str, Found]:
     """What sweeps and walks found; nothing where there were none."""
-    highest_V = min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
-    accuracy = Accuracy(evidence.bench, highest_V)
+    accuracy = _accuracy(evidence)
     starts = start_findings(evidence, accuracy)
     return {**id_findings(evidence, accuracy), **starts, **walk_findings(evidence, accuracy)}
+
+
+def _maps(evidence: Evidence) -> dict[str, Any]:
+    """Points and walks as data, for the figures of a report."""
+    accuracy = _accuracy(evidence)
+    points = [one for name in ("id", "temperature") for one in Points.of(evidence, accuracy, name).as_list(name)]
+    walks = Walks(evidence, accuracy).as_list() if evidence.events("walk") else []
+    return {"points": points, "walks": walks}
+
+
+def _accuracy(evidence: Evidence) -> Accuracy:
+    highest_V = min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
+    return Accuracy(evidence.bench, highest_V)
 
 
 def _unfinished(evidence: Evidence) -> dict[str, Any] | None:
@@ -119,9 +131,7 @@ def _tripped(evidence: Evidence, trip: dict[str, Any], rows: list[LimitRow]) -> 
     moment_s = float(trip["t"])
     if name == "charge.ends":
         return name, Found(seen="does not end", start_s=0.0, end_s=moment_s, words=words)
-    accuracy = Accuracy(
-        evidence.bench, min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
-    )
+    accuracy = _accuracy(evidence)
     if concerned[0] == "charge.end_voltage":
         return name, _tripped_voltage(evidence, accuracy, moment_s, words)
     return name, _tripped_current(evidence, accuracy, moment_s, words)

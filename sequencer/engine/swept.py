@@ -48,6 +48,24 @@ class Points:
         made = [event for event in evidence.events("point") if event["finding"] == finding]
         return cls(evidence, accuracy, tuple(_point(evidence, current, event) for event in made))
 
+    def as_list(self, finding: str) -> list[dict[str, Any]]:
+        """Every point as data, for the maps in a report."""
+        return [
+            {
+                "finding": finding,
+                "role": point.role,
+                "ohm": point.ohm,
+                "celsius": point.celsius,
+                "start_s": point.start_s,
+                "end_s": point.end_s,
+                "kind": point.seen.kind,
+                "current_A": None if point.seen.current is None else point.seen.current.value,
+                "void": point.void,
+                "words": point.seen.words,
+            }
+            for point in self.points
+        ]
+
     def at(self, *roles: str) -> list[Point]:
         return [point for point in self.points if point.role in roles]
 

@@ -64,6 +64,25 @@ class Walks:
             stop_s = (before_s, float(window.time_s[first]))
         return Leg(event, event["start_s"], event["end_s"], stop_s)
 
+    def as_list(self) -> list[dict[str, Any]]:
+        """Every leg as data, for the maps in a report: what was set, when, and when the charge stopped."""
+        legs = [self._leg(event) for event in self._evidence.events("walk")]
+        return [
+            {
+                "finding": leg.event["finding"],
+                "way": leg.event["way"],
+                "cell": leg.event.get("cell"),
+                "cell_V": _finite(self.cell_V(leg.event["cell"], leg)) if leg.event.get("cell") else None,
+                "celsius": leg.event.get("celsius"),
+                "ohm": leg.event.get("ohm"),
+                "start_s": leg.start_s,
+                "end_s": leg.end_s,
+                "stop_s": None if leg.stop_s is None else leg.stop_s[1],
+                "goes_on": self._goes_on(leg),
+            }
+            for leg in legs
+        ]
+
     # temperatures
 
     def temperature(self, side: str) -> Found:
@@ -184,6 +203,10 @@ def _between(last: Leg, stopped: Leg) -> str:
 
 def _mean(trace: Trace) -> float:
     return float(np.mean(trace.value)) if trace.value.size else float("nan")
+
+
+def _finite(value: float) -> float | None:
+    return value if np.isfinite(value) else None
 
 
 def walk_findings(evidence: Evidence, accuracy: Accuracy) -> dict[str, Found]:
