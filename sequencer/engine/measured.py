@@ -25,7 +25,7 @@ LAG_SHARE = 1.0 / 3.0
 ZERO_s = 2.0  # read for so long before the mains are on, and from so long after they are off
 LAST_SCAN_s = 0.05
 LATELY_s = 10.0  # at the end of a charge that did not end
-IDLE_A = 1e-3  # what an idle charger may take from the pack: common practice, no source
+IDLE_A = 10e-3  # what an idle charger may take from the pack: common practice, no source
 SURGE = 1.05  # times the first plateau: more is worth a word
 CLEAR = 0.9  # probability of the class seen, from which on a stage that is missing is missing
 FIXTURE_SHARE = 0.05  # of the drop between contacts and node: a ballast that has warmed since it was measured
@@ -177,13 +177,16 @@ class ChargeStep:
         first_on_s = next((event["t"] for event in switched if event["on"]), 0.0)
         last_off_s = next((event["t"] for event in reversed(switched) if not event["on"]), math.inf)
         at_rest = self._accuracy.current(0.0)
-        allowed_A = IDLE_A + math.sqrt(3.0) * sum(line.contribution for line in at_rest)
+        allowed_A = math.sqrt(3.0) * sum(line.contribution for line in at_rest)
         for when, start_s, end_s in (
             ("before", first_on_s - ZERO_s, first_on_s - LAST_SCAN_s),
             ("after", last_off_s + ZERO_s, math.inf),
         ):
             rest = self._current.within(start_s, end_s)
-            if rest.value.size >= FEWEST and abs(zero_A := float(np.mean(rest.value))) > allowed_A:
+            if rest.value.size < FEWEST:
+                continue
+            zero_A = float(np.mean(rest.value))
+            if not -allowed_A - IDLE_A <= zero_A <= allowed_A:
                 told = f"the current reads {si(zero_A, 'A')} with the charger's mains off {when} the charge"
                 return f"{told}; its uncertainty there is {si(allowed_A, 'A')}"
         return None
