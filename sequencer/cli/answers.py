@@ -14,6 +14,7 @@ import typer
 BAD_INPUT = 2
 BENCH_FAULT = 3
 OUR_FAULT = 70
+NOBODY_LISTENS = 141  # 128 + SIGPIPE, as a shell shows it
 TRACE = "PACKMIME_TRACE"  # set in the environment: a fault of ours shows where it happened
 P = ParamSpec("P")
 
@@ -27,6 +28,10 @@ def answers(command: Callable[P, None]) -> Callable[P, None]:
             command(*args, **kwargs)
         except (typer.Exit, typer.Abort):
             raise
+        except BrokenPipeError:
+            # Whoever read our output has gone, as `| head` does; nothing is left to be said to anybody.
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            raise typer.Exit(NOBODY_LISTENS) from None
         except KeyboardInterrupt:
             _say("stopped by Ctrl-C before anything was energised")
             raise typer.Exit(BENCH_FAULT) from None

@@ -4,11 +4,12 @@ from __future__ import annotations
 
 import sys
 from collections.abc import Callable
+from contextlib import suppress
 from pathlib import Path
 from types import TracebackType
 from typing import TYPE_CHECKING, Self
 
-from rich.console import Console
+from rich.console import Console, RenderableType
 from rich.live import Live
 from rich.table import Table
 from rich.text import Text
@@ -37,9 +38,16 @@ STYLES = {
 CAUTION = "Safe means de-energised, not isolated: unplug the charger before touching it."
 
 
+class _Console(Console):
+    """rich ends the program when nobody reads its output any more; a run must go on to its safe state."""
+
+    def on_broken_pipe(self) -> None:
+        raise BrokenPipeError
+
+
 def _console() -> Console:
-    console = Console(highlight=False)
-    return console if console.is_terminal else Console(highlight=False, width=PIPED_WIDTH)
+    console = _Console(highlight=False)
+    return console if console.is_terminal else _Console(highlight=False, width=PIPED_WIDTH)
 
 
 class Terminal:
@@ -65,7 +73,12 @@ class Terminal:
             self._live.stop()
 
     def say(self, words: str) -> None:
-        self._console.print(Text(words), soft_wrap=True)
+        self._print(Text(words), soft_wrap=True)
+
+    def _print(self, what: RenderableType, *, soft_wrap: bool = False) -> None:
+        """A run must not end because nobody reads what it says any more."""
+        with suppress(OSError):
+            self._console.print(what, soft_wrap=soft_wrap)
 
     def opening(self, inputs: Inputs, access: Access, folder: Path) -> None:
         model, procedure = inputs.specification.model.model, inputs.procedure.model
@@ -87,8 +100,9 @@ class Terminal:
         self.say(f"{self._now():8.1f} s  {words}")
 
     def _alarm(self, words: str) -> None:
-        self._console.bell()
-        self._console.print(Text(f"ALARM: {words}", style="bold white on red"))
+        with suppress(OSError):
+            self._console.bell()
+        self._print(Text(f"ALARM: {words}", style="bold white on red"))
 
     def _confirm(self) -> bool:
         """Stay until a person has acted: load and supply are left as they are meanwhile. False where nobody sits."""
@@ -122,9 +136,9 @@ class Terminal:
         for verdict in judged.document["verdicts"]:
             word = verdict["verdict"]
             table.add_row(Text(verdict["limit"]), Text(word, style=STYLES[word]), Text(verdict["why"]))
-        self._console.print(table)
+        self._print(table)
         overall = judged.document["overall"]
-        self._console.print(Text.assemble("Overall: ", (overall, STYLES[overall])))
+        self._print(Text.assemble("Overall: ", (overall, STYLES[overall])))
         if judged.document["rehearsal"]:
             self.say("This was a rehearsal: it says something about the procedure, nothing about a charger.")
         else:

@@ -126,7 +126,7 @@ def _guarded(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -
         return "bench fault", str(fault), None
     except RecordLost as lost:
         return "bench fault", f"the record cannot be written any more: {lost}", None
-    except Exception as fault:  # a bug of ours: into the record, then the safe state, then exit 70
+    except BaseException as fault:  # a bug of ours, or somebody's sys.exit: into the record, the safe state, exit 70
         loop.event("internal-fault", traceback=traceback.format_exc())
         return "internal fault", f"{type(fault).__name__}: {fault}", fault
 
@@ -198,7 +198,7 @@ def _to_safety(bench: OpenBench, loop: Loop, watching: Watching) -> SafeState:
         while safe.alarm and watching.confirm():
             loop.event("note", text="a person confirmed the alarm; the safe state is walked again")
             safe = to_safe_state(bench, watching.alarm)
-    except Exception as fault:  # a bug on the way to safety must be said, not lost
+    except BaseException as fault:  # a bug on the way to safety must be said, not lost
         safe = SafeState(words=[f"NOT SAFE: {type(fault).__name__}: {fault}"], troubles=[traceback.format_exc()])
     loop.event("safe-state", verified=safe.verified, words=safe.words, troubles=safe.troubles)
     return safe

@@ -235,3 +235,16 @@ def test_parameters_changed_on_the_command_line_are_deviations(packmime: Callabl
     judgement = json.loads((tmp_path / "r/judged/001/judgement.json").read_text("utf-8"))
     assert judgement["deviations"] == ["parameter after was set to 20 s on the command line"]
     assert "parameter after was set to 20 s" in (tmp_path / "r/report.html").read_text("utf-8")
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="closed pipes are told otherwise on Windows")
+def test_a_run_whose_output_nobody_reads_goes_on_to_its_end(command: Callable, tmp_path: Path) -> None:
+    with command("run", "acceptance", *IN_PROCESS, "--out", tmp_path / "r", cwd=tmp_path) as process:
+        assert "REHEARSAL" in process.stdout.readline()
+        process.stdout.close()  # as `packmime run ... | head -1` does
+        code = process.wait(60)
+    assert code in (0, 141)
+    record = Record.open(tmp_path / "r")
+    assert record.manifest is not None
+    assert record.manifest["ended"] == "complete"
+    assert record.manifest["safe"] is True
