@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 from pathlib import Path
-from typing import Annotated, Literal
+from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, ConfigDict, Field, model_validator
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
 
 from drivers.shipped import locate
 from drivers.text.binding import Bound, Written, bind
 from drivers.text.document import Document, read
 from drivers.text.faults import BadInput, Faults, Place
 from drivers.text.measures import (
+    Amperes,
     Flag,
     Measure,
     Ohms,
@@ -21,7 +22,8 @@ from drivers.text.measures import (
     Seconds,
     refuse,
 )
-from drivers.virtual.charger import ChargerPlan, Stage
+from drivers.virtual.charger_features import IdBandText, PinText, TapMonitorText, TemperatureText, bands_fit
+from drivers.virtual.charger_plan import TAP_DRAIN_A, ChargerPlan, FaultLatch, Stage
 
 CHARGERS = Path(__file__).parent / "chargers"
 CEILING_ABOVE_V = 0.05  # per cell, above the highest threshold, where the file says nothing
@@ -42,6 +44,10 @@ class _Cells(Measure):
 
 class _Part(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True)
+
+
+def _tuple(value: Any) -> Any:
+    return tuple(value) if isinstance(value, list) else value
 
 
 class StageText(_Part):
@@ -74,6 +80,13 @@ class ChargerFile(Written):
     source_resistance: Ohms = 0.0
     works: Flag = True
     overshoot: Surge | None = None
+    id: PinText | None = Field(None, description="how the ID resistor is read; default with 'id_bands'")
+    id_bands: Annotated[tuple[IdBandText, ...], BeforeValidator(_tuple)] = ()
+    temperature: TemperatureText | None = None
+    tap_monitor: TapMonitorText | None = None
+    tap_current: Amperes = Field(TAP_DRAIN_A, description="into each cell tap; negative: out of it")
+    fault_latch: FaultLatch = Field("none", description="what clears a fault: nothing has to, removal, or the mains")
+    clear: PositiveSeconds | None = Field(None, description="how long the pack must be gone; default: response")
 
     @model_validator(mode="after")
     def _fits_its_algorithm(self) -> ChargerFile:
@@ -88,7 +101,16 @@ class ChargerFile(Written):
         if regulated and self.ceiling is not None:
             raise refuse("the ceiling of a cc-cv charger is its 'voltage_per_cell'")
         self._stages_fit(regulated)
+        self._features_fit()
         return self
+
+    def _features_fit(self) -> None:
+        if self.id is not None and not self.id_bands:
+            raise refuse("'id' says how the ID resistor is read; 'id_bands' are missing, nothing would ever charge")
+        bands_fit(self.id_bands)
+        highest = max((self.tap_monitor.cells or (0,)) if self.tap_monitor else (0,))
+        if highest > self.cells:
+            raise refuse(f"the tap monitor looks at cell {highest}; the pack has {self.cells}")
 
     def _stages_fit(self, regulated: bool) -> None:
         count = len(self.stages)
@@ -125,6 +147,13 @@ class ChargerFile(Written):
             works=self.works,
             surge_A=surge.current if surge else 0.0,
             surge_s=surge.time if surge else 0.0,
+            id_pin=(self.id or PinText()).pin() if self.id_bands else None,
+            id_bands=tuple(band.band() for band in self.id_bands),
+            temperature=self.temperature.temperature() if self.temperature else None,
+            tap_monitor=self.tap_monitor.monitor(self.cells) if self.tap_monitor else None,
+            tap_drain_A=self.tap_current,
+            fault_latch=self.fault_latch,
+            clear_s=self.clear,
         )
 
 

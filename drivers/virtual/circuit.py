@@ -1,20 +1,22 @@
-"""One circuit: charger, leads, ballast and shunt to the node; supply and load at the node.
+"""One circuit: charger, contacts, leads, ballast and shunt to the node; supply and load at the node.
 
 Only the supply's own voltage has a time constant, so between two events every signal is a constant plus one
 exponential. The circuit goes from event to event; the moment of a crossing is a logarithm, never a step.
-There is no capacitance at the node: what is faster than the supply happens at once.
+There is no capacitance at the node: what is faster than the supply happens at once. With the power contacts open
+the node is supply and load alone, and the charger's contacts keep what the charger drives, or fade.
 """
 
 from __future__ import annotations
 
+import heapq
 import math
-from collections import deque
 from collections.abc import Callable
 from dataclasses import dataclass, field
 
 from drivers.virtual.charger import Charger, Watch
-from drivers.virtual.node import NodeLaw, Path
-from drivers.virtual.trace import CHARGER, LOAD_CURRENT, NODE, SHUNT, SUPPLY_CURRENT, Stretch, Trace
+from drivers.virtual.node import ApartLaw, Drive, NodeLaw, Path
+from drivers.virtual.terminals import OPEN
+from drivers.virtual.trace import CHARGER, LOAD_CURRENT, NODE, SHUNT, SUPPLY_CURRENT, Apart, Stretch, Trace
 
 SETTLED_TAUS = 40.0  # e^-40 of 60 V is below the last digit of a float
 MOST_EVENTS = 10_000  # in one advance without time passing: the circuit would be going round in circles
@@ -70,22 +72,25 @@ class LoadStage:
 
 
 class Circuit:
-    """The bench's physics at `now_s`. Instruments call `command`, `change`, `set_mains`; meters `value`, `mean`."""
+    """The bench's physics at `now_s`. Instruments `command`, `change`, act `later`; meters ask `value` and `mean`."""
 
     def __init__(self, constants: Constants, charger: Charger) -> None:
         self.constants = constants
         self.charger = charger
+        self.terminals = charger.terminals
         self.supply = SupplyStage()
         self.load = LoadStage()
         self.mains_on = False
         self.now_s = 0.0
         self.events = 0  # counted for ever
-        self._path = Path(charger.plan.source_ohm, constants.outer_ohm, charger.plan.drain_S)
-        self._pending: deque[tuple[float, Callable[[], None]]] = deque()
+        self._pending: list[tuple[float, int, Callable[[], None]]] = []  # a heap; the number keeps the order given
+        self._given = 0
         self._moment_s = 0.0  # of the last event or change
         self._origin_s, self._from_V, self._to_V = 0.0, 0.0, 0.0  # the supply's own voltage, an exponential
         self._at_V = 0.0  # the supply's own voltage at _moment_s
         self._next_s = math.inf
+        self._apart: Apart | None = None  # the charger's contacts while its path is open
+        self._fade_s, self._fade_V = math.inf, 0.0  # when they will have faded to a level that somebody watches
         self._held_since: dict[object, float] = {}
         nothing = (0.0,) * len(SIGNALS)
         self._trace = Trace(Stretch(0.0, 0.0, 0.0, nothing, nothing))
@@ -96,7 +101,12 @@ class Circuit:
 
     def command(self, act: Callable[[], None]) -> None:
         """Let the supply do something after its command delay, in the order of the commands."""
-        self._pending.append((self.now_s + self.constants.delay_s, act))
+        self.later(self.constants.delay_s, act)
+
+    def later(self, delay_s: float, act: Callable[[], None]) -> None:
+        """Let something happen after a delay; what is due at the same moment happens in the order given."""
+        self._given += 1
+        heapq.heappush(self._pending, (self.now_s + delay_s, self._given, act))
         self._next_s = min(self._next_s, self._pending[0][0])
 
     def change(self, act: Callable[[], None]) -> None:
@@ -168,7 +178,9 @@ class Circuit:
         else:
             self._at_V = self._own_V(moment_s)
             if self._pending and self._pending[0][0] <= moment_s:
-                self._pending.popleft()[1]()
+                heapq.heappop(self._pending)[2]()
+            elif self._fade_s <= moment_s:
+                self._apart = Apart(moment_s, math.nextafter(self._fade_V, 0.0), fades=True)
             else:
                 self._due_watch.act()
             self._changed = True
@@ -200,13 +212,39 @@ class Circuit:
             self._origin_s, self._from_V, self._to_V = self._moment_s, self._at_V, self.supply.target_V
             if self.constants.settling_s <= 0:
                 self._from_V = self._at_V = self._to_V
-        law = NodeLaw(self.charger.drive(), self._path, self.load.active_A)
-        self._law = law
+        self.terminals.record(self._moment_s)
+        seen = self._relearn_path(self.charger.drive())
+        law = self._law
         self._pushed_V = law.pushed_V()
         self._limited_V = law.limited_V(min(self.supply.limit_A, self.constants.supply_most_A))
-        self._watches = [*self.charger.watches(law), *self._protections(law)]
+        self._watches = [*self.charger.watches(seen), *self._protections(law)]
+        self._find_fade(seen)
         corners = {*law.corners, self._pushed_V, self._limited_V, *(watch.node_V for watch in self._watches)}
         self._corners = sorted(corner for corner in corners if math.isfinite(corner))
+
+    def _relearn_path(self, drive: Drive | None) -> NodeLaw | ApartLaw:
+        """Set the node's law and path; returns the law that the charger sees at its contacts."""
+        plan, contacts_ohm = self.charger.plan, self.terminals.path_ohm
+        if contacts_ohm != OPEN:
+            self._apart = None
+            self._outer_ohm = self.constants.outer_ohm + contacts_ohm
+            self._law = NodeLaw(drive, Path(plan.source_ohm, self._outer_ohm, plan.drain_S), self.load.active_A)
+            return self._law
+        at_V = self._apart.value(self._moment_s) if self._apart else self._trace.value(CHARGER, self._moment_s)
+        self._apart = Apart(self._moment_s, drive.limit_V if drive else at_V, fades=drive is None)
+        self._outer_ohm = 0.0
+        self._law = NodeLaw(None, Path(0.0, 0.0, 0.0), self.load.active_A)
+        return ApartLaw(self._apart.level_V)
+
+    def _find_fade(self, seen: NodeLaw | ApartLaw) -> None:
+        """When the charger's open contacts will have faded to the next level that the charger watches."""
+        self._fade_s = math.inf
+        if self._apart is None or isinstance(seen, NodeLaw):
+            return
+        below_V = [level_V for level_V in seen.levels_V if 0.0 < level_V < self._apart.level_V]
+        if below_V:
+            self._fade_V = max(below_V)
+            self._fade_s = self._apart.reach_s(self._fade_V)
 
     def _protections(self, law: NodeLaw) -> list[Watch]:
         supply, load, found = self.supply, self.load, []
@@ -237,7 +275,7 @@ class Circuit:
         swing_V = self._from_V - self._to_V if follows else 0.0
         level_V = self._to_V if follows else node_V
         (c0, c1), (l0, l1) = self._law.charger_line(node_V), self._law.load_line(node_V)
-        outer, shunt = self._path.outer_ohm, self.constants.shunt_ohm
+        outer, shunt = self._outer_ohm, self.constants.shunt_ohm
         charger_A, charger_dA = c0 + c1 * level_V, c1 * swing_V
         load_A, load_dA = l0 + l1 * level_V, l1 * swing_V
         sourcing = node_V > self._pushed_V
@@ -245,12 +283,12 @@ class Circuit:
         level = (level_V, level_V + charger_A * outer, charger_A * shunt, supply[0], load_A)
         swing = (swing_V, swing_V + charger_dA * outer, charger_dA * shunt, supply[1], load_dA)
         tau_s = self.constants.settling_s if swing_V else 0.0
-        self._trace.append(Stretch(self._moment_s, self._origin_s, tau_s, level, swing))
+        self._trace.append(Stretch(self._moment_s, self._origin_s, tau_s, level, swing, self._apart))
 
     def _find_next(self, node_V: float, ahead_V: float) -> None:
         """Set the moment and kind of the next event."""
         self._cross_V, self._cross_s = ahead_V, self._reach_s(ahead_V)
-        self._next_s = min(self._cross_s, self._pending[0][0] if self._pending else math.inf)
+        self._next_s = min(self._cross_s, self._fade_s, self._pending[0][0] if self._pending else math.inf)
         held_since, due_s = {}, math.inf
         for watch in self._watches:
             if watch.holds(node_V):

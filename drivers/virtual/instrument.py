@@ -35,7 +35,7 @@ class Instrument:
     """Base of the virtual instruments."""
 
     family: ClassVar[str]
-    tree: ClassVar[Tree]
+    tree: Tree  # of the family, or of the individual where its channels are its own
 
     def __init__(self, name: str, circuit: Circuit) -> None:
         self.name = name

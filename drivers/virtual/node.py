@@ -127,3 +127,25 @@ class NodeLaw:
     def node_at_need(self, current_A: float) -> float:
         """The node voltage from which the supply gives more than `current_A`; inf if it never does."""
         return self._reaches(math.nextafter(current_A, math.inf))
+
+
+class ApartLaw:
+    """What a charger sees whose contacts hang on nothing: what stands there does not depend on the node.
+
+    It answers as NodeLaw does: a node voltage that always holds, or one that never does. `levels_V`: what was asked.
+    """
+
+    def __init__(self, contacts_V: float) -> None:
+        self._contacts_V = contacts_V
+        self.levels_V: list[float] = []
+
+    def node_at_contacts(self, level_V: float) -> float:
+        self.levels_V.append(level_V)
+        return -math.inf if self._contacts_V >= level_V else math.inf
+
+    node_at_regulation = node_at_contacts
+
+    @staticmethod
+    def node_at_current_below(current_A: float) -> float:
+        """No current flows."""
+        return -math.inf

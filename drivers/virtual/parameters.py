@@ -20,7 +20,7 @@ MAX_DIGITS, MAX_EXPONENT = 255, 32000  # IEEE 488.2, 7.7.2.4.1
 _UNITS = {
     unit: {f"{prefix}{unit}": factor for prefix, factor in (("", 1.0), ("K", 1e3), ("M", 1e-3), ("U", 1e-6))}
     for unit in ("V", "A", "S")
-}
+} | {"OHM": {"OHM": 1.0, "KOHM": 1e3, "MOHM": 1e6}}  # before OHM and HZ, M is mega (IEEE 488.2, 7.7.3.4)
 
 
 def short_form(mnemonic: str) -> str:

@@ -6,26 +6,57 @@ import math
 from collections import deque
 from typing import NamedTuple
 
+FADE_TAU_s = 0.1  # an output capacitor and its bleeder; common practice, no source
 KEPT_s = 10.0  # longest aperture and delay of a meter, with room
 
 NODE, CHARGER, SHUNT, SUPPLY_CURRENT, LOAD_CURRENT = range(5)
 
 
+class Apart(NamedTuple):
+    """The charger's contacts alone, V: `level_V`, or what is left there and fades away from `origin_s` on."""
+
+    origin_s: float
+    level_V: float
+    fades: bool
+
+    def value(self, t_s: float) -> float:
+        return self.level_V * math.exp(-(t_s - self.origin_s) / FADE_TAU_s) if self.fades else self.level_V
+
+    def integral(self, from_s: float, to_s: float) -> float:
+        if not self.fades:
+            return self.level_V * (to_s - from_s)
+        return -self.value(from_s) * FADE_TAU_s * math.expm1(-(to_s - from_s) / FADE_TAU_s)
+
+    def reach_s(self, level_V: float) -> float:
+        """When the contacts have faded to a level below where they are; inf if never."""
+        if not self.fades or not 0.0 < level_V < self.level_V:
+            return math.inf
+        return self.origin_s + FADE_TAU_s * math.log(self.level_V / level_V)
+
+
 class Stretch(NamedTuple):
-    """From `start_s` on, signal k is level[k] + swing[k] exp(-(t - origin_s) / tau_s); tau 0: no swing."""
+    """From `start_s` on, signal k is level[k] + swing[k] exp(-(t - origin_s) / tau_s); tau 0: no swing.
+
+    `apart`: where the charger hangs on nothing, its contacts have a time of their own.
+    """
 
     start_s: float
     origin_s: float
     tau_s: float
     level: tuple[float, ...]
     swing: tuple[float, ...]
+    apart: Apart | None = None
 
     def value(self, k: int, t_s: float) -> float:
+        if k == CHARGER and self.apart is not None:
+            return self.apart.value(t_s)
         if not self.tau_s:
             return self.level[k]
         return self.level[k] + self.swing[k] * math.exp(-(t_s - self.origin_s) / self.tau_s)
 
     def integral(self, k: int, from_s: float, to_s: float) -> float:
+        if k == CHARGER and self.apart is not None:
+            return self.apart.integral(from_s, to_s)
         area = self.level[k] * (to_s - from_s)
         if self.tau_s and self.swing[k]:
             decay = math.exp(-(from_s - self.origin_s) / self.tau_s)
@@ -65,7 +96,7 @@ class Trace:
         if to_s <= from_s:
             return self.value(k, to_s)
         last = self._stretches[-1]
-        if last.start_s <= from_s and not last.tau_s:
+        if last.start_s <= from_s and not last.tau_s and last.apart is None:
             return last.level[k]
         return self._integral(k, from_s, to_s) / (to_s - from_s)
 

@@ -8,21 +8,15 @@ from typing import TYPE_CHECKING
 
 from drivers.virtual.charger import Charger
 from drivers.virtual.circuit import Circuit, Constants
-from drivers.virtual.imperfection import generator
-from drivers.virtual.instrument import Instrument
-from drivers.virtual.load import Load
-from drivers.virtual.mains import MainsSwitch
-from drivers.virtual.meter import Meter
 from drivers.virtual.plan import Plan, plan_of
-from drivers.virtual.supply import Supply
-from drivers.virtual.trace import CHARGER, NODE, SHUNT
+from drivers.virtual.terminals import Terminals
+from drivers.virtual.wire import Wirer, drawn_ohm, made_taps, wired_signals
 
 if TYPE_CHECKING:
     from drivers.bench import Bench
     from drivers.virtual.charger_file import ChargerFile
 
 TICKS_PER_s = 1_000_000_000  # time is counted in whole nanoseconds: ten steps of 0.1 s are one second exactly
-_LEADS_ON = {"node.voltage": NODE, "node.charger_voltage": CHARGER, "node.current.meter": SHUNT}
 
 
 def _no_stopwatch() -> float:
@@ -39,9 +33,11 @@ class World:
         self.busy_s = 0.0
         self._ticks = 0
         self._stopwatch = stopwatch
-        self.charger = Charger(plan.charger)
+        taps = made_taps(plan, seed)
+        terminals = Terminals(plan.precharge_ohm, wired_signals(plan), taps[: plan.charger.cells - 1])
+        self.charger = Charger(plan.charger, terminals)
         self.circuit = Circuit(_constants(plan, seed), self.charger)
-        self.instruments = {name: self._instrument(where, name) for where, name in plan.places}
+        self.instruments = Wirer(plan, seed, self.circuit, taps).instruments()
         self.circuit.catch_up()
 
     @classmethod
@@ -72,22 +68,10 @@ class World:
         self.busy_s += self._stopwatch() - begun_s
         return self.now
 
-    def _instrument(self, where: str, name: str) -> Instrument:
-        """One virtual family a role; whatever the bench file's dialect is called, it must make itself understood."""
-        plan, seed, circuit = self.plan, self.seed, self.circuit
-        if where == "node.supply":
-            return Supply(name, circuit, seed, plan.errors, plan.node_offset_V)
-        if where == "node.load":
-            return Load(name, circuit, seed, plan.errors)
-        if where == "mains.switch":
-            return MainsSwitch(name, circuit)
-        return Meter(name, circuit, _LEADS_ON[where], seed, plan.errors, plan.line_Hz, plan.meter_delay_s)
-
 
 def _constants(plan: Plan, seed: int) -> Constants:
-    """What is soldered; the shunt as this individual bench has it, within its tolerance."""
-    drawn = float(generator(seed, "shunt", "resistance").uniform(-1.0, 1.0))
-    shunt_ohm = plan.shunt_ohm * (1.0 + drawn * plan.shunt_tolerance * min(plan.errors, 1.0)) * plan.shunt_factor
+    """What is soldered; the shunt as this individual bench has it."""
+    shunt_ohm = drawn_ohm(plan, seed, "shunt", plan.shunt_ohm, plan.shunt_tolerance) * plan.shunt_factor
     return Constants(
         leads_ohm=plan.leads_ohm,
         ballast_ohm=plan.ballast_ohm,

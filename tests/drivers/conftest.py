@@ -8,7 +8,7 @@ from typing import Any
 
 import pytest
 
-from drivers.virtual.charger import ChargerPlan, Stage
+from drivers.virtual.charger_plan import ChargerPlan, Stage
 from drivers.virtual.plan import Plan
 from drivers.virtual.world import World
 

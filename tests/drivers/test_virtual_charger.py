@@ -8,7 +8,8 @@ from dataclasses import replace
 
 import pytest
 
-from drivers.virtual.charger import Charger, ChargerPlan, Stage
+from drivers.virtual.charger import Charger
+from drivers.virtual.charger_plan import ChargerPlan, Stage
 from drivers.virtual.circuit import Circuit, Constants
 from drivers.virtual.trace import CHARGER, NODE, SHUNT
 

@@ -8,8 +8,8 @@ import pytest
 
 from drivers.text.document import compose
 from drivers.text.faults import Faults
-from drivers.virtual.charger import Stage
 from drivers.virtual.charger_file import CHARGERS, load_charger, read_charger
+from drivers.virtual.charger_plan import Stage
 
 GOOD = """packmime: charger 1
 name: hedge trimmer charger

@@ -9,7 +9,8 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from drivers.virtual.charger import Charger, ChargerPlan, Stage
+from drivers.virtual.charger import Charger
+from drivers.virtual.charger_plan import ChargerPlan, Stage
 from drivers.virtual.circuit import Circuit, Constants
 from drivers.virtual.trace import CHARGER, LOAD_CURRENT, NODE, SHUNT, SUPPLY_CURRENT
 
