@@ -5,9 +5,9 @@ from __future__ import annotations
 import re
 from pathlib import Path
 
-import procedures
 import pytest
 
+import procedures
 from drivers.bench import Bench
 from drivers.dialect import Dialect
 from drivers.text.binding import bind

@@ -13,7 +13,17 @@ from drivers.text.document import Document, Mapped, Node, Scalar, find, plain
 from drivers.text.faults import Faults, Place
 from drivers.text.nearest import unknown
 
-KINDS = dict.fromkeys(("procedure", "pack", "specification", "order", "bench", "dialect", "charger", "findings", "curve"), 1)
+KINDS = {  # and the newest version of each that is read
+    "procedure": 1,
+    "specification": 1,
+    "pack": 1,
+    "order": 1,
+    "bench": 1,
+    "dialect": 1,
+    "charger": 1,
+    "findings": 1,
+    "curve": 1,
+}
 
 
 class Written(BaseModel):

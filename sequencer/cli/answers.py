@@ -58,7 +58,9 @@ def _answer(reason: Exception) -> int:
     if isinstance(reason, BenchFault):
         _say(f"bench fault: {reason}")
         return BENCH_FAULT
-    _say(f"a fault of packmime itself: {type(reason).__name__}: {reason}")
+    first, *more = str(reason).splitlines() or [""]
+    hint = f" ({TRACE}=1 in the environment shows more)" if more else ""
+    _say(f"a fault of packmime itself: {type(reason).__name__}: {first}{hint}")
     if os.environ.get(TRACE):
         traceback.print_exception(reason)
     return OUR_FAULT

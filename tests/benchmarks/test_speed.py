@@ -33,7 +33,9 @@ def test_help_answers_at_once() -> None:
     bare_s = best_of(5, sys.executable, "-c", "pass")
     typer_s = best_of(5, sys.executable, "-c", "import typer")
     help_s = best_of(5, *PACKMIME, "--help")
-    print(f"bare Python {bare_s * 1e3:.0f} ms, import typer {typer_s * 1e3:.0f} ms, packmime --help {help_s * 1e3:.0f} ms")
+    print(
+        f"bare Python {bare_s * 1e3:.0f} ms, import typer {typer_s * 1e3:.0f} ms, packmime --help {help_s * 1e3:.0f} ms"
+    )
     assert help_s < 0.3
     assert help_s < 3 * typer_s  # nothing but typer is imported
 

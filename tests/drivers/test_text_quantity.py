@@ -73,7 +73,9 @@ def test_prefixes_are_those_of_the_si(dimension: str) -> None:
 @given(st.floats(-1e6, 1e6, allow_nan=False), st.sampled_from(sorted(UNITS)), st.data())
 def test_number_times_factor(number: float, dimension: str, data: st.DataObject) -> None:
     unit = data.draw(st.sampled_from(sorted(UNITS[dimension])))
-    assert parse(f"{number!r} {unit}", dimension) == pytest.approx(number * UNITS[dimension][unit], rel=1e-12, abs=1e-300)
+    assert parse(f"{number!r} {unit}", dimension) == pytest.approx(
+        number * UNITS[dimension][unit], rel=1e-12, abs=1e-300
+    )
 
 
 @given(st.text(max_size=20), st.sampled_from(sorted(UNITS)))

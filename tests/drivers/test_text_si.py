@@ -46,6 +46,8 @@ def test_intervals_and_times() -> None:
 @given(st.floats(1e-9, 1e8), st.sampled_from(["V", "A", "Ω"]))
 def test_what_is_shown_is_the_value(value: float, unit: str) -> None:
     number, shown = si(value, unit, 6).split(" ")
-    factor = {"p": 1e-12, "n": 1e-9, "µ": 1e-6, "m": 1e-3, "": 1.0, "k": 1e3, "M": 1e6, "G": 1e9}[shown.removesuffix(unit)]
+    factor = {"p": 1e-12, "n": 1e-9, "µ": 1e-6, "m": 1e-3, "": 1.0, "k": 1e3, "M": 1e6, "G": 1e9}[
+        shown.removesuffix(unit)
+    ]
     assert float(number) * factor == pytest.approx(value, rel=1e-5)
     assert 0.999 < abs(float(number)) < 1000.1
