@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 from drivers.bench_file import BenchFile
 from drivers.text.binding import Bound
 from drivers.text.faults import Faults
@@ -31,6 +33,8 @@ def check(
         _check_start(procedure, pack, faults)
     if specification is not None and pack is not None:
         _check_thresholds(specification, pack, faults)
+    if procedure is not None and specification is not None and pack is not None:
+        _check_room(procedure, specification.model, pack.model, faults)
     if bench is None or not all(name in bench.dialects for _, name in bench.bench.wired()):
         return  # a place in the wiring is empty, which is a fault of its own
     _check_accuracy(bench, faults)
@@ -72,6 +76,22 @@ def _check_start(procedure: Bound[Procedure], pack: Bound[Pack], faults: Faults)
         if step.insert is not None and not low_V <= step.insert.cell_voltage <= high_V:
             told = f"{si(step.insert.cell_voltage, 'V')} lies outside the pack's table, {low_V:g} V to {high_V:g} V"
             faults.add(procedure.place("steps", number, "insert", "cell_voltage"), told)
+
+
+def _check_room(procedure: Bound[Procedure], specification: Specification, pack: Pack, faults: Faults) -> None:
+    """A full charge must begin below everything that is declared to end its first stage."""
+    stages = specification.charge.stages
+    if not stages or not specification.events_V:
+        return
+    first_A, low_V = stages[0].current.high or 0.0, specification.events_V[0][0]
+    ohm = pack.resistance + (pack.relaxation.resistance if pack.relaxation is not None else 0.0)
+    drop_V = first_A * ohm / pack.cells
+    for number, (step, following) in enumerate(pairwise(procedure.model.steps)):
+        if step.insert is None or following.charge is None or step.insert.cell_voltage + drop_V < low_V:
+            continue
+        told = f"{si(step.insert.cell_voltage, 'V')} and {si(drop_V, 'V')} of drop at {si(first_A, 'A')} reach"
+        told += f" the declared {si(low_V, 'V')}: the first stage would be over at once"
+        faults.add(procedure.place("steps", number, "insert", "cell_voltage"), told)
 
 
 def _check_thresholds(specification: Bound[Specification], pack: Bound[Pack], faults: Faults) -> None:

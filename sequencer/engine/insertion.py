@@ -57,9 +57,8 @@ def place(site: Site, situation: Situation) -> None:
         site.zero_V = fixture.measure_rest(loop, stand_in.node_V)
     site.situation = situation
     assert site.settling_s is not None
-    loop.follow_at(
-        site.settling_s, site.fixture_ohm or fixture.declared_ohm(loop), site.pack.resistance, site.forced_delay
-    )
+    # Until what lies between is measured nothing is added: too much would lift the charger over a threshold.
+    loop.follow_at(site.settling_s, site.fixture_ohm or site.pack.resistance, site.pack.resistance, site.forced_delay)
     loop.stand_in = stand_in
     loop.tap_offsets_V = situation.offsets_V
     if first or _mains_are_contact(site):

@@ -82,6 +82,7 @@ ONE_FAULT = [
     (PACK, "[0 %, 3.00 V]", "[1 %, 3.00 V]", PACK, "ocv", "from 0 % to 100 %"),
     (PACK, "cells: 5", "cells: 5.5", PACK, "cells", "not a whole number"),
     (PROCEDURE, "3.70 V", "4.70 V", PROCEDURE, "cell_voltage", "outside the pack's table"),
+    (PROCEDURE, "3.70 V", "4.07 V", PROCEDURE, "cell_voltage", "the first stage would be over at once"),
     (PROCEDURE, '"20"', '"0.5"', PROCEDURE, "compression", "between 1 and 100"),
     # what the bench lacks or may not
     (BENCH, "load: node_load", "load: node_lod", BENCH, "load", "did you mean 'node_load'?"),

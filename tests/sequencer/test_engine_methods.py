@@ -105,3 +105,12 @@ def test_the_load_takes_more_than_the_charger_can_deliver() -> None:
 def test_the_smallest_range_that_holds_what_may_come(most_V: float, range_V: float) -> None:
     inputs = gather(Asked("acceptance", bench="virtual-in-process"))
     assert range_for(inputs.bench.dialect("meter_node"), most_V) == range_V
+
+
+def test_long_leads_do_not_lift_the_charger_over_a_threshold_before_they_are_measured(
+    rehearse: Callable[..., Any],
+) -> None:
+    """37 mΩ that nobody has measured yet are 25 mV per cell at 2 A."""
+    long_leads = {"leads: 8 mΩ": "leads: 37 mΩ"}
+    done = rehearse(spec="lantern", bench=long_leads, changes={"start": "3.94 V", "compression": "5"})
+    assert done.judged.exit_status == 0, done.verdicts

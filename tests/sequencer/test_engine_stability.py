@@ -140,7 +140,7 @@ def taper_of(evidence: Evidence, plateau_A: float) -> Trace:
 def test_a_slow_supply_does_not_swing(
     rehearse: Callable[..., Any], large_pack: str, large: bool, options: dict[str, bool]
 ) -> None:
-    pack = {"pack": large_pack, "changes": {"start": "3.8 V"}} if large else {}
+    pack = {"pack": large_pack, "changes": {"start": "3.75 V"}} if large else {}
     done = rehearse(bench=SLOW, **pack, **options)
     evidence = open_evidence(done.record)
     standin = evidence.manifest["standin"]
@@ -155,7 +155,7 @@ def test_a_slow_supply_does_not_swing(
 
 
 def test_with_the_rule_for_no_delay_the_same_charger_swings(rehearse: Callable[..., Any], large_pack: str) -> None:
-    done = rehearse(bench=SLOW, pack=large_pack, changes={"start": "3.8 V"}, forced_delay=0, always_fast=True)
+    done = rehearse(bench=SLOW, pack=large_pack, changes={"start": "3.75 V"}, forced_delay=0, always_fast=True)
     evidence = open_evidence(done.record)
     assert evidence.manifest["standin"]["gain"] > largest_gain(4.0, 4)  # settled within 0.5 s at the best
     current = taper_of(evidence, 3.0)
