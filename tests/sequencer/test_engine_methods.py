@@ -7,9 +7,9 @@ from typing import Any
 
 import pytest
 
-from drivers.virtual import world
 from drivers.virtual.meter import Meter
 from drivers.virtual.trace import CHARGER, NODE, SHUNT
+from drivers.virtual.world import World
 from sequencer.engine.evidence import open_evidence
 from sequencer.engine.fixture import LOAD_SHARE, load_current_A, range_for
 from sequencer.engine.inputs import Asked, gather
@@ -19,8 +19,17 @@ QUICK = {"start": "4.00 V", "after": "10 s"}
 
 @pytest.fixture
 def miswired(monkeypatch: pytest.MonkeyPatch) -> Callable[[dict[str, int]], None]:
-    def wire(places: dict[str, int]) -> None:
-        monkeypatch.setattr(world, "_LEADS_ON", {**world._LEADS_ON, **places})
+    """Put a meter's leads somewhere else: miswired({"meter_charger": NODE})."""
+
+    def wire(leads: dict[str, int]) -> None:
+        made = World.__init__
+
+        def making(world: World, *arguments: Any, **named: Any) -> None:
+            made(world, *arguments, **named)
+            for meter, signal in leads.items():
+                vars(world.instruments[meter])["_signal"] = signal
+
+        monkeypatch.setattr(World, "__init__", making)
 
     return wire
 
@@ -29,7 +38,7 @@ def test_the_charger_meter_on_the_wrong_side_of_the_ballast(
     rehearse: Callable[..., Any], miswired: Callable[[dict[str, int]], None]
 ) -> None:
     """It would read 0.35 V too little: a charger in order would fail by 70 mV per cell."""
-    miswired({"node.charger_voltage": NODE})
+    miswired({"meter_charger": NODE})
     done = rehearse(changes=QUICK)
     assert done.ended.ended == "bench fault"
     assert "meter_charger" in done.ended.why
@@ -42,7 +51,7 @@ def test_a_charger_meter_whose_lead_is_open(
     rehearse: Callable[..., Any], miswired: Callable[[dict[str, int]], None]
 ) -> None:
     """Found before the charger's mains are on."""
-    miswired({"node.charger_voltage": SHUNT})
+    miswired({"meter_charger": SHUNT})
     done = rehearse(changes=QUICK)
     assert done.ended.ended == "bench fault"
     assert "with no current flowing" in done.ended.why
@@ -50,7 +59,7 @@ def test_a_charger_meter_whose_lead_is_open(
 
 
 def test_meters_changed_over(rehearse: Callable[..., Any], miswired: Callable[[dict[str, int]], None]) -> None:
-    miswired({"node.charger_voltage": NODE, "node.voltage": CHARGER})
+    miswired({"meter_charger": NODE, "meter_node": CHARGER})
     done = rehearse(changes=QUICK)
     assert done.ended.ended in ("bench fault", "trip")
     assert not done.failing

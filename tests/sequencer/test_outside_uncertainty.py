@@ -17,6 +17,7 @@ import pytest
 from scipy.special import stdtr
 
 from drivers.virtual.circuit import Circuit
+from drivers.virtual.trace import CHARGER, SHUNT
 
 DRAWS = 400_000
 
@@ -28,12 +29,11 @@ def ends(monkeypatch: pytest.MonkeyPatch) -> Iterator[list[tuple[float, float]]]
     event = Circuit._event
 
     def watched(circuit: Circuit, moment_s: float) -> None:
-        drive, before = circuit.charger.drive(), (circuit.charger.state, circuit.charger.stage)
+        before = (circuit.charger.state, circuit.charger.stage)
         event(circuit, moment_s)
-        if drive is not None and before != (circuit.charger.state, circuit.charger.stage):
-            path, node_V = circuit._path, circuit._at_V
-            current_A = min(drive.current_A, (drive.limit_V - node_V) / path.total_ohm)
-            seen.append((current_A, node_V + current_A * path.outer_ohm))
+        if before[0] == "charging" and before != (circuit.charger.state, circuit.charger.stage):
+            shunt_V, contacts_V = (circuit._trace.value(signal, moment_s - 1e-6) for signal in (SHUNT, CHARGER))
+            seen.append((shunt_V / circuit.constants.shunt_ohm, contacts_V))
 
     monkeypatch.setattr(Circuit, "_event", watched)
     return seen
