@@ -84,6 +84,7 @@ class Guard:
     bounds: Bounds
     ballast_ohm: float
     fixture_ohm: float | None = None  # all between contacts and node, once it has been measured
+    connected: bool = True  # charger and node: False while B+ is open, when their meters may show anything
     charge_Ah: float = 0.0
     _before: Scan | None = None
     _equal: dict[str, tuple[float, int, float]] = field(default_factory=dict)
@@ -185,7 +186,11 @@ class Guard:
 
     def _check_agreement(self, scan: Scan) -> None:
         """Without it a charger's meter that stands still would be a charger that regulates wrong."""
-        if self.fixture_ohm is None or not (scan.node_V.good and scan.charger_V.good and scan.current_A.good):
+        if (
+            not self.connected
+            or self.fixture_ohm is None
+            or not (scan.node_V.good and scan.charger_V.good and scan.current_A.good)
+        ):
             return
         apart_V = self._apart_V(scan)
         self._apart = 0 if apart_V is None else self._apart + 1

@@ -28,6 +28,7 @@ OPEN_V = 0.5  # an open B+ lets the charger's contacts stand so far from the nod
 PROOF_V = 0.3
 SENSE_V = 0.02  # an open signal contact leaves no more than this on the bench's side
 TAP_LIMIT_A = 0.1
+MARGIN_s = 0.5  # watched longer than must be, for the first reading comes a scan late
 
 
 @dataclass(frozen=True)
@@ -142,12 +143,12 @@ def watch(site: Site) -> Watched:
         note(scan)
         return scan.current_A.good and scan.current_A.value > FIRST_CURRENT * lowest_A
 
-    began = loop.observe(watch_s, begins)
+    began = loop.observe(watch_s + MARGIN_s, begins)
     if began:
         loop.observe(SETTLE_s, note)
         loop.look_closely()
         loop.observe(MEAN_s, note)
-    seen = class_of(times_s, current_A, declared_A=declared, watched_s=min(watch_s, 0.999 * (loop.now_s - start_s)))
+    seen = class_of(times_s, current_A, declared_A=declared, watched_s=watch_s)
     return Watched(start_s, loop.now_s, seen, began, watch_s)
 
 

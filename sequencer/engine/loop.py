@@ -83,6 +83,7 @@ class Loop:
         self._next_s = self.bench.clock.now()
         self._slow_s = 0.0
         self._tap_V: dict[int, float] = {}
+        self.guard.connected = self.bench.signals.power is None
 
     @property
     def now_s(self) -> float:
@@ -127,6 +128,9 @@ class Loop:
         elif deed.what == "voltage" and (number := self._tap_of(deed)) is not None:
             self._tap_V[number] = deed.value or 0.0
             self.journal.append(f"set.tap{number}", time_s, self._tap_V[number])
+        elif deed.what in ("close", "open") and deed in _power(bench):
+            self.guard.connected = deed.what == "close"
+            self.event("contact", name="b_plus", closed=self.guard.connected)
         elif deed.speaker is bench.mains and deed.what in ("on", "off"):
             self._mains = int(deed.what == "on")
             self.journal.append("set.mains", time_s, self._mains)
@@ -256,3 +260,9 @@ class Loop:
         self.follow = {
             period_s: Follow.at(pack_ohm, fixture_ohm, settling_s, period_s, forced) for period_s in (FAST_s, QUIET_s)
         }
+
+
+def _power(bench: OpenBench) -> tuple[Deed, ...]:
+    """The deeds that close and open B+ itself."""
+    power = bench.signals.power
+    return () if power is None else (power.b_plus.close, power.b_plus.open)

@@ -162,8 +162,7 @@ class Points:
 def _point(evidence: Evidence, current: Any, event: dict[str, Any]) -> Point:
     window = current.within(event["start_s"], event["end_s"])
     declared = declared_currents(evidence)
-    watched_s = min(float(event["watched_s"]), 0.999 * (event["end_s"] - event["start_s"]))
-    seen = class_of(window.time_s, window.value, declared_A=declared, watched_s=watched_s)
+    seen = class_of(window.time_s, window.value, declared_A=declared, watched_s=float(event["watched_s"]))
     ohm = event.get("ohm")
     return Point(
         role=event["role"],
