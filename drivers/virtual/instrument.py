@@ -35,6 +35,7 @@ class Instrument:
     """Base of the virtual instruments."""
 
     family: ClassVar[str]
+    answer_s: ClassVar[float] = 0.0  # how long it takes to answer, in wall time
     tree: Tree  # of the family, or of the individual where its channels are its own
 
     def __init__(self, name: str, circuit: Circuit) -> None:

@@ -8,6 +8,8 @@ Clock port, line by line: "advance 0.1" and "now" answer the bench's time, "stat
 
 from __future__ import annotations
 
+import contextlib
+import heapq
 import json
 import os
 import selectors
@@ -25,6 +27,7 @@ from drivers.virtual.world import World
 
 HOST = "127.0.0.1"
 RECEIVE = 65_536
+QUICK_ACK: int | None = getattr(socket, "TCP_QUICKACK", None)  # else a client's second bare message waits 40 ms
 MOST_LINE = 1_000  # bytes of a line on the clock port
 
 
@@ -39,6 +42,8 @@ class Server:
         self._running = True
         self._clients: dict[str, socket.socket] = {}
         self._half_line = b""
+        self._owed: list[tuple[float, int, socket.socket, bytes]] = []  # answers of slow instruments, a heap
+        self._count = 0
 
     # -- listening --------------------------------------------------------------------------------------------
 
@@ -97,6 +102,8 @@ class Server:
         try:
             data = client.recv(RECEIVE)
             if data:
+                if QUICK_ACK is not None:
+                    client.setsockopt(socket.IPPROTO_TCP, QUICK_ACK, 1)  # it does not last beyond one reception
                 heard(client, data)
                 return True
         except BlockingIOError:
@@ -110,8 +117,23 @@ class Server:
         if self._clock is not None:
             self._follow(self._clock)
         answer = instrument.stream(data)
-        if answer:
+        if answer and self._clock is not None and instrument.answer_s:
+            self._count += 1
+            due_s = self._clock() + instrument.answer_s * max(answer.count(b"\n"), 1)
+            heapq.heappush(self._owed, (due_s, self._count, client, answer))
+        elif answer:
             _say(client, answer)
+
+    def _say_owed(self) -> float | None:
+        """Say what slow instruments owe by now, and return how long the next one takes; None: nothing is owed."""
+        while self._owed and self._clock is not None:
+            left_s = self._owed[0][0] - self._clock()
+            if left_s > 0:
+                return left_s
+            _, _, client, answer = heapq.heappop(self._owed)
+            with contextlib.suppress(OSError):  # the client has left, or does not take its answers: it will be seen
+                _say(client, answer)
+        return None
 
     def _follow(self, clock: Callable[[], float]) -> None:
         """Bring the bench's time up to the wall clock."""
@@ -160,7 +182,7 @@ class Server:
         """Serve until told to stop, then let every port go."""
         select = self._selector.select
         while self._running:
-            for key, _ in select():
+            for key, _ in select(self._say_owed()):
                 if key.fileobj.fileno() >= 0:  # type: ignore[union-attr]  # dropped earlier in this round
                     key.data()
         for key in list(self._selector.get_map().values()):

@@ -20,7 +20,7 @@ SINK_A = 0.05  # what a channel absorbs by its bleeder; common practice, no sour
 
 
 @dataclass
-class _Output:
+class Output:
     """One channel: what it was told, its cell, how wrong its meter and its programming are."""
 
     cell: Cell
@@ -38,7 +38,7 @@ class TapSupply(Instrument):
         """`cells`: what each channel plays."""
         super().__init__(name, circuit)
         self._outputs = {
-            channel: _Output(
+            channel: Output(
                 cell,
                 Imperfect((SPAN,), seed, name, f"voltage {channel}", scale),
                 Imperfect((SPAN,), seed, name, f"set voltage {channel}", scale),
@@ -71,7 +71,7 @@ class TapSupply(Instrument):
             output.on = on
             self._later(output.cell, "on", on)
 
-    def _of(self, channels: tuple[int, ...]) -> list[_Output]:
+    def _of(self, channels: tuple[int, ...]) -> list[Output]:
         return [self._outputs[channel] for channel in channels]
 
     def _later(self, cell: Cell, what: str, value: float) -> None:
@@ -81,7 +81,7 @@ class TapSupply(Instrument):
         self.circuit.catch_up()
         return ",".join(nr3(self._measure(output)) for output in self._of(channels))
 
-    def _measure(self, output: _Output) -> float:
+    def _measure(self, output: Output) -> float:
         true_V = self.circuit.terminals.standing_V(output.cell)
         return output.meter.read(true_V, self.circuit.now_s)
 

@@ -13,6 +13,7 @@ from drivers.virtual.instrument import Instrument
 from drivers.virtual.load import Load
 from drivers.virtual.mains import MainsSwitch
 from drivers.virtual.meter import Meter
+from drivers.virtual.plain_power import PlainLoad, PlainSupply, PlainTapSupply
 from drivers.virtual.plan import Plan
 from drivers.virtual.resistor import Resistor
 from drivers.virtual.scanner import Scanner, Source
@@ -63,22 +64,25 @@ class Wirer:
         return {name: self._instrument(where, name) for name, where in first_places.items()}
 
     def _instrument(self, where: str, name: str) -> Instrument:
-        """One virtual instrument a role; whatever dialect the bench file names must make itself understood."""
+        """One virtual instrument a role and family; whatever the dialect holds must make itself understood."""
         plan, seed, circuit = self.plan, self.seed, self.circuit
         if where in _LEADS_ON:
             return Meter(name, circuit, _LEADS_ON[where], seed, plan.errors, plan.line_Hz, plan.meter_delay_s)
         match where.split(".")[-1]:
             case "supply" if where == "node.supply":
-                return Supply(name, circuit, seed, plan.errors, plan.node_offset_V)
+                return (PlainSupply if name in plan.plain else Supply)(
+                    name, circuit, seed, plan.errors, plan.node_offset_V
+                )
             case "load":
-                return Load(name, circuit, seed, plan.errors)
+                return (PlainLoad if name in plan.plain else Load)(name, circuit, seed, plan.errors)
             case "switch":
                 return MainsSwitch(name, circuit)
             case "resistor":
                 signal = circuit.terminals.signals[where.split(".")[0]]
                 return Resistor(name, circuit, signal, seed, plan.errors, plan.glitch_s)
             case "supply":
-                return TapSupply(name, circuit, self._at(name, self._cell), seed, plan.errors)
+                cells = self._at(name, self._cell)
+                return (PlainTapSupply if name in plan.plain else TapSupply)(name, circuit, cells, seed, plan.errors)
             case "meter" | "sense":
                 return Scanner(name, circuit, self._at(name, self._source), seed, plan.errors, plan.line_Hz)
             case "thermometer":
