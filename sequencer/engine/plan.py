@@ -6,12 +6,16 @@ from dataclasses import dataclass
 
 from sequencer.engine import fixture, methods
 from sequencer.engine.inputs import Inputs
+from sequencer.engine.plan_sweeps import Sweeping, Times
 from sequencer.engine.standin import Events, Follow, StandIn
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import FullCharge, Step
 from sequencer.model.specification import Specification
 
 STEP_s = 1.0
+FIRST_s = (
+    fixture.SETTLE_s + 2 * fixture.MEAN_s + 0.5
+)  # the first insertion also settles, reads zeros, measures the fixture
 
 
 @dataclass(frozen=True)
@@ -32,26 +36,36 @@ def plan_of(inputs: Inputs) -> Plan:
     """Predict a run from the specification's dwell times and an ideal charger that keeps it."""
     pack, specification, bench = inputs.pack.model, inputs.specification.model, inputs.bench
     stand_in = StandIn.inserted(pack, pack.ocv[0][1])
-    steps: list[tuple[str, float]] = []
+    steps: list[tuple[str, Times]] = []
+    first = True
     for step in inputs.procedure.model.steps:
         if step.insert is not None:
             stand_in = StandIn.inserted(pack, step.insert.cell_voltage)
-        steps.append((step.kind, _seconds(step, stand_in, pack, specification)))
+        steps.append((step.kind, _times(step, stand_in, Sweeping(specification, pack), first)))
+        first = first and step.insert is None
+    roles = {name: (where, name, bench.dialect(name).name) for where, name in reversed(bench.bench.wired())}
     return Plan(
-        roles=tuple((where, name, bench.dialect(name).name) for where, name in bench.bench.wired()),
-        steps=tuple(steps),
-        insertions=sum(1 for step in inputs.procedure.model.steps if step.insert is not None),
+        roles=tuple(roles[name] for name in bench.bench.used()),
+        steps=tuple((kind, times.seconds) for kind, times in steps),
+        insertions=sum(times.insertions for _, times in steps),
         notes=tuple(_notes(inputs)),
     )
 
 
-def _seconds(step: Step, stand_in: StandIn, pack: Pack, specification: Specification) -> float:
+def _times(step: Step, stand_in: StandIn, sweeping: Sweeping, first: bool) -> Times:
+    specification, pack = sweeping.specification, sweeping.pack
     if step.insert is not None:
-        still_s = 3 * fixture.SETTLE_s + 3 * fixture.MEAN_s
-        return still_s + specification.dwell.start_delay + 1.0
+        taken_out = Times(0, -2 * specification.dwell.clear)  # that is the 'remove' step's
+        return sweeping.charging + taken_out + (Times(0, FIRST_s) if first else Times())
     if step.charge is not None:
-        return charge_s(step.charge, stand_in, pack, specification)
-    return 2 * specification.dwell.clear
+        return Times(0, charge_s(step.charge, stand_in, pack, specification))
+    if step.sweep_id is not None:
+        return sweeping.sweep_id(step.sweep_id)
+    if step.sweep_temperature is not None:
+        return sweeping.sweep_temperature(step.sweep_temperature)
+    if step.raise_cell is not None:
+        return sweeping.raise_cells(step.raise_cell)
+    return Times(0, 2 * specification.dwell.clear)
 
 
 def charge_s(step: FullCharge, stand_in: StandIn, pack: Pack, specification: Specification) -> float:

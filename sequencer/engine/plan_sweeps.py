@@ -1,0 +1,108 @@
+"""How long sweeps and walks take: counted insertion by insertion, from the specification's dwell times.
+
+A search is taken to be refused at every second setting. What is counted is what the methods do; what the charger
+will do is what its specification declares.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from drivers.text.measures import Band
+from sequencer.analysis.edges import expected_steps
+from sequencer.engine import insertion, walks
+from sequencer.engine.sweeps import ends
+from sequencer.model.pack import Pack
+from sequencer.model.specification import Specification
+from sequencer.model.steps import RaiseCell, SweepId, SweepTemperature
+
+PLACE_s = 0.3 + insertion.SIGNALS_s + insertion.PRECHARGE_s  # node, load, contacts; of an insertion after the first
+APPROACH_s = 0.3
+
+
+@dataclass(frozen=True)
+class Times:
+    """Insertions and seconds of one step."""
+
+    insertions: int = 0
+    seconds: float = 0.0
+
+    def __add__(self, other: Times) -> Times:
+        return Times(self.insertions + other.insertions, self.seconds + other.seconds)
+
+    def __mul__(self, count: float) -> Times:
+        return Times(round(self.insertions * count), self.seconds * count)
+
+
+@dataclass(frozen=True)
+class Sweeping:
+    """Times of insertions with one specification."""
+
+    specification: Specification
+    pack: Pack
+
+    @property
+    def charging(self) -> Times:
+        """A point that charges: place, start delay, settle, mean, take out."""
+        dwell = self.specification.dwell
+        return Times(1, PLACE_s + dwell.start_delay + insertion.SETTLE_s + insertion.MEAN_s + 2 * dwell.clear)
+
+    @property
+    def refused(self) -> Times:
+        """A point that does not charge, watched to the end, and the control after it."""
+        dwell = self.specification.dwell
+        watch_s = max(insertion.START_DELAYS * dwell.start_delay, insertion.SHORTEST_WATCH_s) + insertion.MARGIN_s
+        return Times(1, PLACE_s + watch_s + 2 * dwell.clear) + self.charging
+
+    def search(self, steps: int) -> Times:
+        return self.charging * (steps - steps // 2) + self.refused * (steps // 2)
+
+    def sweep_id(self, step: SweepId) -> Times:
+        times = self.charging + self.refused * 2
+        for band in self.specification.id_bands:
+            times += self.charging * 3
+            for near, far in (
+                (band.low_ohm, band.low_ohm / (1 + step.outside)),
+                (band.high_ohm, band.high_ohm * (1 + step.outside)),
+            ):
+                times += self.refused + self.search(expected_steps(*sorted((near, far)), step.resolution))
+        return times
+
+    def sweep_temperature(self, step: SweepTemperature) -> Times:
+        window = self.specification.temperature
+        assert window is not None
+        times = self.charging + self.refused * 2
+        for cold, band in zip((True, False), window.start or (), strict=False):
+            low, high = sorted(ends(band, cold, step))
+            times += self.charging + self.refused
+            times += self.search(expected_steps(low, high, step.resolution, "arithmetic"))
+        for cold, band in zip((True, False), window.run or (), strict=False):
+            times += self.charging + Times(0, self._walk_s(step, cold, band))
+        return times + self.charging
+
+    def _walk_s(self, step: SweepTemperature, cold: bool, band: Band) -> float:
+        dwell = self.specification.dwell
+        inner_C, outer_C = ends(band, cold, step)
+        expected_C = band.nominal if band.nominal is not None else (inner_C + outer_C) / 2
+        legs = abs(expected_C - inner_C) / step.resolution + 1
+        back = 1.0 if self._goes_on else walks.RELEASE_SPAN_K / walks.RELEASE_STEP_K
+        back_s = back * (dwell.start_delay + walks.DWELLS * dwell.response)
+        return legs * walks.DWELLS * dwell.response + back_s
+
+    @property
+    def _goes_on(self) -> bool:
+        """Whether a stopped charge is declared to go on by itself."""
+        trip = self.specification.tap_trip
+        return trip is not None and trip.release == "resumes"
+
+    def raise_cells(self, step: RaiseCell) -> Times:
+        dwell = self.specification.dwell
+        trip = self.specification.tap_trip
+        band = None if trip is None else trip.voltage
+        expected_V = step.end if band is None or band.low is None or band.high is None else (band.low + band.high) / 2
+        legs = max(0.0, (expected_V - step.begin) / step.by) + 1
+        approach_s = APPROACH_s * max(0.0, (step.begin - step.cell_voltage) / walks.APPROACH_V - 1)
+        watch_s = max(insertion.START_DELAYS * dwell.start_delay, insertion.SHORTEST_WATCH_s)
+        release_s = dwell.start_delay + insertion.MEAN_s if self._goes_on else watch_s
+        walk = Times(0, approach_s + legs * walks.DWELLS * dwell.response + release_s)
+        return (self.charging + walk) * self.pack.cells + self.charging
