@@ -6,9 +6,20 @@ Every threshold here is the true one, at which this charger switches; what its m
 from __future__ import annotations
 
 from itertools import pairwise
-from typing import Annotated, Any
+from typing import Annotated, Any, ClassVar
 
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    GetCoreSchemaHandler,
+    GetJsonSchemaHandler,
+    model_validator,
+)
+from pydantic.json_schema import JsonSchemaValue
+from pydantic_core import CoreSchema, core_schema
 
 from drivers.text.measures import Flag, PositiveAmperes, PositiveOhms, PositiveSeconds, PositiveVolts, Seconds, refuse
 from drivers.text.quantity import QuantityFault, parse
@@ -78,19 +89,53 @@ class IdBandText(Part):
         return IdBand(*self.id, self.current)
 
 
-def _hysteresis(value: Any) -> tuple[float, float]:
-    """A share of the resistance, or ohms: (share, ohms)."""
-    if isinstance(value, tuple):
-        return value
-    text = str(value)
-    try:
-        ohms = any(text.rstrip().endswith(unit) for unit in ("Ω", "ohm"))
-        found = (0.0, parse(text, "resistance")) if ohms else (parse(text, "ratio"), 0.0)
-    except QuantityFault as fault:
-        raise refuse(f'{fault}; a hysteresis is a share such as "5 %", or a resistance such as "300 Ω"') from fault
-    if min(found) < 0 or found[0] >= 1:
-        raise refuse(f'"{text}": a hysteresis lies between 0 and 100 %, or is a resistance')
-    return found
+class _Read:
+    """A type that reads what people write by `read`, and says in the JSON Schema what that is."""
+
+    schema: ClassVar[JsonSchemaValue]
+
+    def read(self, value: Any) -> Any:
+        raise NotImplementedError
+
+    def __get_pydantic_core_schema__(self, source: Any, handler: GetCoreSchemaHandler) -> CoreSchema:
+        return core_schema.no_info_plain_validator_function(self.read)
+
+    def __get_pydantic_json_schema__(self, schema: CoreSchema, handler: GetJsonSchemaHandler) -> JsonSchemaValue:
+        return dict(self.schema)
+
+
+class _Hysteresis(_Read):
+    """Reads a share of the resistance, or ohms, into (share, ohms)."""
+
+    schema: ClassVar[JsonSchemaValue] = {"type": "string", "examples": ["5 %", "300 Ω"]}
+
+    def read(self, value: Any) -> tuple[float, float]:
+        if isinstance(value, tuple):
+            return value
+        text = str(value)
+        try:
+            ohms = text.rstrip().endswith(("Ω", "ohm"))
+            found = (0.0, parse(text, "resistance")) if ohms else (parse(text, "ratio"), 0.0)
+        except QuantityFault as fault:
+            raise refuse(f'{fault}; a hysteresis is a share such as "5 %", or a resistance such as "300 Ω"') from fault
+        if min(found) < 0 or found[0] >= 1:
+            raise refuse(f'"{text}": a hysteresis lies between 0 and 100 %, or is a resistance')
+        return found
+
+
+class _Cells(_Read):
+    """Reads "all" (None) or a list of cells, counted from B-."""
+
+    schema: ClassVar[JsonSchemaValue] = {
+        "anyOf": [{"const": "all"}, {"type": "array", "items": {"type": "integer", "minimum": 1}, "minItems": 1}]
+    }
+
+    def read(self, value: Any) -> tuple[int, ...] | None:
+        if value is None or value == "all":
+            return None
+        if isinstance(value, list) and value and all(str(item).isdecimal() and int(item) > 0 for item in value):
+            return tuple(sorted({int(item) for item in value}))
+        raise refuse('expected "all", or a list of cells such as [1, 2], counted from B-')
 
 
 class TemperatureText(PinText):
@@ -98,7 +143,7 @@ class TemperatureText(PinText):
 
     start: FallingOhms
     run: FallingOhms
-    hysteresis: Annotated[tuple[float, float], BeforeValidator(_hysteresis)] = (0.05, 0.0)
+    hysteresis: Annotated[tuple[float, float], _Hysteresis()] = (0.05, 0.0)
 
     @model_validator(mode="after")
     def _fits(self) -> TemperatureText:
@@ -117,16 +162,6 @@ class TemperatureText(PinText):
         return Temperature(self.pin(), Window(*self.start), Window(*self.run), self._release())
 
 
-def _cells(value: Any) -> Any:
-    if value == "all":
-        return None
-    if isinstance(value, list) and value and all(str(item).isdecimal() and int(item) > 0 for item in value):
-        return tuple(sorted({int(item) for item in value}))
-    if value is None or isinstance(value, tuple):
-        return value
-    raise refuse('expected "all", or a list of cells such as [1, 2], counted from B-')
-
-
 class TapMonitorText(Part):
     """Any monitored cell above `threshold` for `filter` stops the charge; `latch`: until the fault is cleared."""
 
@@ -134,7 +169,7 @@ class TapMonitorText(Part):
     filter: Seconds = 0.5
     hysteresis: PositiveVolts = 0.05
     latch: Flag = False
-    cells: Annotated[tuple[int, ...] | None, BeforeValidator(_cells)] = None
+    cells: Annotated[tuple[int, ...] | None, _Cells()] = None
 
     def monitor(self, count: int) -> TapMonitor:
         cells = self.cells or tuple(range(1, count + 1))

@@ -76,7 +76,7 @@ class Plan:
 def plan_of(bench: Bench, charger: ChargerFile) -> Plan:
     """The numbers of a bench and a charger.
 
-    Raises ValueError for a bench without a 'virtual' section, and for a channel that is no number.
+    Raises ValueError for a bench without a 'virtual' section, and BadInput for a channel that is no number.
     """
     virtual, node = bench.virtual, bench.wiring.node
     if virtual is None:
@@ -103,7 +103,7 @@ def plan_of(bench: Bench, charger: ChargerFile) -> Plan:
         tap_ohm=virtual.tap_resistance,
         contact_walk_ohm=virtual.contact_walk,
         glitch_s=virtual.resistor_glitch,
-        welded=(virtual.welded.instrument, _number(virtual.welded)) if virtual.welded else None,
+        welded=(virtual.welded.instrument, _number(bench.name, virtual.welded)) if virtual.welded else None,
         ambient_C=virtual.ambient,
     )
 
@@ -117,12 +117,15 @@ def _tolerance(shunt: Shunt) -> float:
 def _channels(bench: Bench) -> Iterator[tuple[str, int]]:
     for where, what, _ in bench.wiring.places():
         if not isinstance(what, str):
-            yield where, _number(what)
+            yield where, _number(bench.name, what)
 
 
-def _number(channel: Channel) -> int:
+def _number(bench: str, channel: Channel) -> int:
+    from drivers.text.faults import BadInput, Fault, Place
+
     if not channel.channel.isdecimal() or not 0 < int(channel.channel) <= MOST_CHANNEL:
-        raise ValueError(f"'{channel}': the channels of a virtual instrument are numbers from 1 to {MOST_CHANNEL}")
+        told = f"'{channel}': the channels of a virtual instrument are numbers from 1 to {MOST_CHANNEL}"
+        raise BadInput([Fault(Place(f"bench '{bench}'"), told)])
     return int(channel.channel)
 
 
