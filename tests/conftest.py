@@ -59,7 +59,7 @@ def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
     count = 0
 
     def rehearsing(
-        procedure: str = "acceptance",
+        procedure: str = "charge-profile",
         *,
         spec: str = "sprayer",
         pack: str | None = None,
@@ -73,14 +73,14 @@ def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
     ) -> Rehearsed:
         nonlocal count
         count += 1
-        bench_text = (FOLDERS["bench"] / "virtual-in-process.yaml").read_text("utf-8")
+        bench_text = (FOLDERS["bench"] / "virtual-mains-in-process.yaml").read_text("utf-8")
         for old, new in (bench or {}).items():
             assert old in bench_text, old
             bench_text = bench_text.replace(old, new)
         bench_path = tmp_path / f"bench-{count}.yaml"
         bench_path.write_text(bench_text, "utf-8")
         charger_path = tmp_path / f"charger-{count}.yaml"
-        charger_path.write_text(changed_charger(Path(spec).stem, charger or {}), "utf-8")
+        charger_path.write_text(changed_charger(f"{Path(spec).stem}-power", charger or {}), "utf-8")
         inputs = gather(Asked(procedure, spec, pack, str(bench_path), changes or {}, seed))
         record = tmp_path / f"record-{count}"
         with access_to(inputs.bench, charger_for(inputs.bench, str(charger_path), spec), seed) as access:

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from pathlib import Path
 from typing import Any
 
@@ -58,6 +59,7 @@ def read(path: Path, *, name: str | None = None) -> Document:
     return compose(content, shown)
 
 
+@lru_cache(maxsize=64)  # a dialect is read once for each instrument that speaks it; documents do not change
 def compose(content: bytes, name: str) -> Document:
     """Compose YAML text. Raises BadInput for what is not UTF-8, not YAML, or uses anchors."""
     if len(content) > MAX_BYTES:

@@ -16,7 +16,7 @@ from sequencer.cli import app
 
 @pytest.fixture
 def packmime(monkeypatch: pytest.MonkeyPatch) -> Callable[..., Result]:
-    """packmime("check", "acceptance") -> result with exit_code, output, stderr."""
+    """packmime("check", "charge-profile") -> result with exit_code, output, stderr."""
     monkeypatch.setenv("COLUMNS", "100")
     monkeypatch.setenv("TERMINAL_WIDTH", "100")
 

@@ -14,9 +14,9 @@ DIALECTS = Path(__import__("drivers.dialect").__file__).parent / "dialects"
 
 
 def test_a_sound_procedure_is_planned(packmime: Callable) -> None:
-    result = packmime("check", "acceptance")
+    result = packmime("check", "charge-profile")
     assert result.exit_code == 0
-    assert "acceptance: sound. 1 insertion" in result.output
+    assert "charge-profile: sound. 1 insertion" in result.output
     assert "node.supply            node_supply (scpi-supply)" in result.output
     assert "compressed charge" in result.output
 

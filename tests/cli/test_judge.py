@@ -24,7 +24,7 @@ def record(packmime: Callable, tmp_path: Path) -> Path:
     limits = (FOLDERS["specification"] / "sprayer.yaml").read_text("utf-8")
     spec.write_text(limits.replace("4.20 V ± 25 mV", "[4.10 V, 4.2001 V]"), "utf-8")
     words = ("--spec", spec, "--pack", "sprayer", "--charger", chargers, "--bench", "virtual-in-process")
-    assert packmime("run", "acceptance", *words, "--out", tmp_path / "r").exit_code == 5
+    assert packmime("run", "charge-profile", *words, "--out", tmp_path / "r").exit_code == 5
     return tmp_path / "r"
 
 

@@ -26,8 +26,8 @@ def verdicts(record: Path) -> dict[str, str]:
 
 def test_sockets_and_process_give_the_same_samples_byte_for_byte(packmime: Callable, tmp_path: Path) -> None:
     over, inside = tmp_path / "sockets", tmp_path / "process"
-    first = packmime("run", "acceptance", "--seed", 7, "--out", over)
-    second = packmime("run", "acceptance", "--seed", 7, "--out", inside, *IN_PROCESS)
+    first = packmime("run", "charge-profile", "--seed", 7, "--out", over)
+    second = packmime("run", "charge-profile", "--seed", 7, "--out", inside, *IN_PROCESS)
     assert (first.exit_code, second.exit_code) == (0, 0), first.output + second.output
     assert (over / "data/samples.parquet").read_bytes() == (inside / "data/samples.parquet").read_bytes()
     assert "Overall: pass" in first.output
@@ -42,7 +42,7 @@ def test_sockets_and_process_give_the_same_samples_byte_for_byte(packmime: Calla
 
 def test_another_seed_gives_other_samples(packmime: Callable, tmp_path: Path) -> None:
     for seed in (1, 2):
-        assert packmime("run", "acceptance", "--seed", seed, "--out", tmp_path / str(seed), *IN_PROCESS).exit_code == 0
+        assert packmime("run", "charge-profile", "--seed", seed, "--out", tmp_path / str(seed), *IN_PROCESS).exit_code == 0
     assert (tmp_path / "1/data/samples.parquet").read_bytes() != (tmp_path / "2/data/samples.parquet").read_bytes()
 
 
@@ -53,7 +53,7 @@ def test_hostile_text_in_every_free_field_is_text(packmime: Callable, tmp_path: 
     for kind, name, key in (
         ("specification", "sprayer", "model"),
         ("pack", "sprayer", "name"),
-        ("procedure", "acceptance", "purpose"),
+        ("procedure", "charge-profile", "purpose"),
     ):
         lines = (FOLDERS[kind] / f"{name}.yaml").read_text("utf-8").splitlines()
         lines = [f"{key}: {quoted}" if line.startswith(f"{key}:") else line for line in lines]
@@ -82,10 +82,10 @@ def test_bad_input_lists_all_faults_and_touches_nothing(packmime: Callable, tmp_
     )
     bench = tmp_path / "bench.yaml"
     bench.write_text(
-        (FOLDERS["bench"] / "virtual.yaml").read_text("utf-8").replace("node: 26 V", "node: 16 V"), "utf-8"
+        (FOLDERS["bench"] / "virtual-mains.yaml").read_text("utf-8").replace("node: 26 V", "node: 16 V"), "utf-8"
     )
     result = packmime(
-        "run", "acceptance", "--spec", spec, "--pack", "sprayer", "--bench", bench, "--out", tmp_path / "r"
+        "run", "charge-profile", "--spec", spec, "--pack", "sprayer", "--bench", bench, "--out", tmp_path / "r"
     )
     assert result.exit_code == 2
     assert "nothing was touched" in result.stderr
@@ -99,12 +99,12 @@ def test_bad_input_lists_all_faults_and_touches_nothing(packmime: Callable, tmp_
     ("words", "said"),
     [
         (("aceptance",), "did you mean 'acceptance'"),
-        (("acceptance", "--spec", "nowhere.yaml"), "there is no specification file 'nowhere.yaml'"),
-        (("acceptance", "--set", "comprssion=2"), "did you mean 'compression'"),
-        (("acceptance", "--set", "compression=2000"), "must lie between 1 and 100"),
-        (("acceptance", "--set", "compression"), "NAME=VALUE was expected"),
-        (("acceptance", "--charger", "sprinkler"), "unknown charger 'sprinkler'"),
-        (("acceptance", "--bench", "bay-1"), "unknown bench 'bay-1'"),
+        (("charge-profile", "--spec", "nowhere.yaml"), "there is no specification file 'nowhere.yaml'"),
+        (("charge-profile", "--set", "comprssion=2"), "did you mean 'compression'"),
+        (("charge-profile", "--set", "compression=2000"), "must lie between 1 and 100"),
+        (("charge-profile", "--set", "compression"), "NAME=VALUE was expected"),
+        (("charge-profile", "--charger", "sprinkler"), "unknown charger 'sprinkler'"),
+        (("charge-profile", "--bench", "bay-1"), "unknown bench 'bay-1'"),
     ],
 )
 def test_bad_words(packmime: Callable, tmp_path: Path, words: tuple[str, ...], said: str) -> None:
@@ -116,14 +116,14 @@ def test_bad_words(packmime: Callable, tmp_path: Path, words: tuple[str, ...], s
 
 def test_a_folder_that_holds_something_is_refused(packmime: Callable, tmp_path: Path) -> None:
     (tmp_path / "mine.txt").write_text("mine", "utf-8")
-    result = packmime("run", "acceptance", "--out", tmp_path)
+    result = packmime("run", "charge-profile", "--out", tmp_path)
     assert result.exit_code == 2
     assert "not empty" in result.stderr
     assert [path.name for path in tmp_path.iterdir()] == ["mine.txt"]
 
 
 def test_an_address_that_refuses_is_named_within_ten_seconds(packmime: Callable, tmp_path: Path) -> None:
-    text = (FOLDERS["bench"] / "virtual.yaml").read_text("utf-8").partition("virtual:\n  transport")[0]
+    text = (FOLDERS["bench"] / "virtual-mains.yaml").read_text("utf-8").partition("virtual:\n  transport")[0]
     while "address: virtual" in text:
         with socket.socket() as taken:  # a port that was free a moment ago and that nobody serves
             taken.bind(("127.0.0.1", 0))
@@ -132,7 +132,7 @@ def test_an_address_that_refuses_is_named_within_ten_seconds(packmime: Callable,
     bench = tmp_path / "bench.yaml"
     bench.write_text(text, "utf-8")
     begun = wall_seconds()
-    result = packmime("run", "acceptance", "--bench", bench, "--out", tmp_path / "r")
+    result = packmime("run", "charge-profile", "--bench", bench, "--out", tmp_path / "r")
     assert wall_seconds() - begun < 10
     assert result.exit_code == 3
     assert "node_supply: nobody answers at TCPIP::127.0.0.1" in result.stderr
@@ -147,7 +147,7 @@ def test_a_fault_of_ours_is_70_and_leaves_a_safe_bench(
         raise ZeroDivisionError("a bug on purpose")
 
     monkeypatch.setattr(methods, "charge", broken)
-    result = packmime("run", "acceptance", "--out", tmp_path / "r", *IN_PROCESS)
+    result = packmime("run", "charge-profile", "--out", tmp_path / "r", *IN_PROCESS)
     assert result.exit_code == 70
     assert "a fault of packmime itself: ZeroDivisionError: a bug on purpose" in result.output
     assert "Traceback" not in result.output
@@ -161,7 +161,7 @@ def test_a_fault_of_ours_is_70_and_leaves_a_safe_bench(
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
 def test_an_interrupted_charge_ends_safe_sealed_and_judgeable(command: Callable, tmp_path: Path, number: int) -> None:
     slow = ("--set", "compression=1", "--set", "start=3.1 V")
-    with command("run", "acceptance", *slow, "--out", tmp_path / "r", cwd=tmp_path) as process:
+    with command("run", "charge-profile", *slow, "--out", tmp_path / "r", cwd=tmp_path) as process:
         said = ""
         for line in process.stdout:
             said += line
@@ -214,9 +214,9 @@ def test_a_users_own_conftest_and_procedures_change_nothing(command: Callable, t
     for name in ("procedures", "reports", "drivers", "sequencer"):
         (tmp_path / name).mkdir()
         (tmp_path / name / "__init__.py").write_text("raise SystemExit('the user’s folder was imported')\n", "utf-8")
-        (tmp_path / name / "acceptance.yaml").write_text("not: ours\n", "utf-8")
+        (tmp_path / name / "charge-profile.yaml").write_text("not: ours\n", "utf-8")
     with command(
-        "run", "acceptance", *IN_PROCESS, "--out", "r", cwd=tmp_path, PYTEST_ADDOPTS="--no-such-option"
+        "run", "charge-profile", *IN_PROCESS, "--out", "r", cwd=tmp_path, PYTEST_ADDOPTS="--no-such-option"
     ) as process:
         said = process.stdout.read()
     assert process.returncode == 0, said
@@ -224,13 +224,13 @@ def test_a_users_own_conftest_and_procedures_change_nothing(command: Callable, t
 
 
 def test_only_leaves_out_on_purpose(packmime: Callable, tmp_path: Path) -> None:
-    result = packmime("run", "acceptance", "--only", "insert", "--out", tmp_path / "r", *IN_PROCESS)
+    result = packmime("run", "charge-profile", "--only", "insert", "--out", tmp_path / "r", *IN_PROCESS)
     assert verdicts(tmp_path / "r")["charge.ends"] == "not run"
     assert result.exit_code == 0, result.output
 
 
 def test_parameters_changed_on_the_command_line_are_deviations(packmime: Callable, tmp_path: Path) -> None:
-    result = packmime("run", "acceptance", "--set", "after=20 s", "--out", tmp_path / "r", *IN_PROCESS)
+    result = packmime("run", "charge-profile", "--set", "after=20 s", "--out", tmp_path / "r", *IN_PROCESS)
     assert result.exit_code == 0
     judgement = json.loads((tmp_path / "r/judged/001/judgement.json").read_text("utf-8"))
     assert judgement["deviations"] == ["parameter after was set to 20 s on the command line"]
@@ -239,7 +239,7 @@ def test_parameters_changed_on_the_command_line_are_deviations(packmime: Callabl
 
 @pytest.mark.skipif(sys.platform == "win32", reason="closed pipes are told otherwise on Windows")
 def test_a_run_whose_output_nobody_reads_goes_on_to_its_end(command: Callable, tmp_path: Path) -> None:
-    with command("run", "acceptance", *IN_PROCESS, "--out", tmp_path / "r", cwd=tmp_path) as process:
+    with command("run", "charge-profile", *IN_PROCESS, "--out", tmp_path / "r", cwd=tmp_path) as process:
         assert "REHEARSAL" in process.stdout.readline()
         process.stdout.close()  # as `packmime run ... | head -1` does
         code = process.wait(60)

@@ -20,7 +20,7 @@ from drivers.virtual.instrument import serial_number
 from drivers.virtual.library import BenchLibrary
 from drivers.virtual.world import World
 
-SHIPPED = Path(session.__file__).parents[1] / "procedures" / "benches" / "virtual-in-process.yaml"
+SHIPPED = Path(session.__file__).parents[1] / "procedures" / "benches" / "virtual-mains-in-process.yaml"
 NAMES = ["node_supply", "node_load", "meter_node", "meter_charger", "meter_shunt", "mains"]
 
 
@@ -34,7 +34,7 @@ def virtual(tmp_path: Path) -> Callable[..., tuple[BenchFile, Access, World]]:
             assert old in text
             text = text.replace(old, new)
         (tmp_path / "bench.yaml").write_text(text, "utf-8")
-        file, charger = load_bench(tmp_path / "bench.yaml", faults), load_charger("sprayer", faults)
+        file, charger = load_bench(tmp_path / "bench.yaml", faults), load_charger("sprayer-power", faults)
         faults.raise_if_any()
         assert file is not None
         assert charger is not None

@@ -29,7 +29,7 @@ from drivers.virtual.library import BenchLibrary
 from drivers.virtual.trace import LOAD_CURRENT, NODE, SHUNT, SUPPLY_CURRENT
 from drivers.virtual.world import World
 
-SHIPPED = Path(safe.__file__).parents[1] / "procedures" / "benches" / "virtual-in-process.yaml"
+SHIPPED = Path(safe.__file__).parents[1] / "procedures" / "benches" / "virtual-mains-in-process.yaml"
 NAMES = ("node_supply", "node_load", "meter_node", "meter_charger", "meter_shunt", "mains")
 SUPPLY, LOAD, NODE_METER, CHARGER_METER, SHUNT_METER, MAINS = NAMES
 NAN = "9.91E37"  # SCPI-1999, volume 1, 7.2.1.5
@@ -118,7 +118,7 @@ class Stage:
 @cache
 def files() -> tuple[BenchFile, ChargerFile]:
     faults = Faults()
-    file, charger = load_bench(SHIPPED, faults), load_charger("sprayer", faults)
+    file, charger = load_bench(SHIPPED, faults), load_charger("sprayer-power", faults)
     faults.raise_if_any()
     assert file is not None
     assert charger is not None

@@ -7,7 +7,7 @@ from drivers.text.faults import Faults
 from sequencer.engine.inputs import FOLDERS
 from sequencer.model.pack import Pack
 
-GOOD = (FOLDERS["bench"] / "virtual.yaml").read_text("utf-8")
+GOOD = (FOLDERS["bench"] / "virtual-mains.yaml").read_text("utf-8")
 
 
 def _faults(text: str, model: type = Bench, kind: str = "bench") -> list[str]:
@@ -22,7 +22,7 @@ def test_a_sound_file_has_none() -> None:
 
 def test_all_faults_at_once() -> None:
     text = (
-        GOOD.replace("ballast: 100", "balast: 100").replace("node: 26 V", "node: 26 A").replace("name: virtual\n", "")
+        GOOD.replace("ballast: 100", "balast: 100").replace("node: 26 V", "node: 26 A").replace("name: virtual, mains the only contact\n", "")
     )
     said = "\n".join(_faults(text))
     assert "unknown key 'balast'; did you mean 'ballast'?" in said

@@ -48,7 +48,7 @@ def bench() -> Bench:
 
 
 def plan() -> Plan:
-    charger = load_charger("sprayer", Faults())
+    charger = load_charger("sprayer-power", Faults())
     assert charger is not None
     return plan_of(bench(), charger.model)
 
@@ -66,7 +66,7 @@ def test_plan_survives_json() -> None:
 
 
 def test_world_is_built_from_bench_and_charger(ask: Ask) -> None:
-    charger = load_charger("lantern", Faults())
+    charger = load_charger("lantern-power", Faults())
     assert charger is not None
     world = World.build(bench(), charger.model, 3)
     assert list(world.instruments) == ["s", "l", "v", "c", "i", "m"]
@@ -75,7 +75,7 @@ def test_world_is_built_from_bench_and_charger(ask: Ask) -> None:
 
 
 def test_bench_without_virtual_section_cannot_be_played(virtual_plan: Callable[..., Plan]) -> None:
-    charger = load_charger("sprayer", Faults())
+    charger = load_charger("sprayer-power", Faults())
     assert charger is not None
     real = bench().model_copy(update={"virtual": None})
     with pytest.raises(ValueError, match="no 'virtual' section"):

@@ -23,14 +23,14 @@ from drivers.virtual.charger_file import load_charger
 from drivers.virtual.plan import plan_of
 from drivers.virtual.remote import VirtualServer
 
-SHIPPED = Path(session.__file__).parents[1] / "procedures" / "benches" / "virtual-in-process.yaml"
+SHIPPED = Path(session.__file__).parents[1] / "procedures" / "benches" / "virtual-mains-in-process.yaml"
 TIMEOUT_s = 0.5  # shorter than the shipped 3 s, for silence is waited for here
 
 
 @pytest.fixture
 def server() -> Iterator[VirtualServer]:
     faults = Faults()
-    file, charger = load_bench(SHIPPED, faults), load_charger("sprayer", faults)
+    file, charger = load_bench(SHIPPED, faults), load_charger("sprayer-power", faults)
     assert file is not None, faults.found
     assert charger is not None, faults.found
     quick = replace(plan_of(file.bench, charger.model), charger=replace(charger.model.plan(), start_delay_s=0.3))

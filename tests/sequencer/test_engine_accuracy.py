@@ -19,7 +19,7 @@ def bench_with(tmp_path: Path) -> object:
     """A bench file with some texts replaced, and its meters' dialect with some of its own."""
 
     def made(replacing: dict[str, str] | None = None, meter: dict[str, str] | None = None) -> BenchFile:
-        text = (FOLDERS["bench"] / "virtual-in-process.yaml").read_text("utf-8")
+        text = (FOLDERS["bench"] / "virtual-mains-in-process.yaml").read_text("utf-8")
         dialect = (DIALECTS / "scpi-meter.yaml").read_text("utf-8")
         for old, new in (meter or {}).items():
             assert old in dialect, old

@@ -12,7 +12,7 @@ from sequencer.engine.inputs import FOLDERS, Asked, gather
 
 
 def faults_of(tmp_path: Path, spec: dict[str, str], pack: dict[str, str], bench: dict[str, str]) -> list[str]:
-    names = {"specification": ("sprayer", spec), "pack": ("sprayer", pack), "bench": ("virtual-in-process", bench)}
+    names = {"specification": ("sprayer", spec), "pack": ("sprayer", pack), "bench": ("virtual-mains-in-process", bench)}
     paths = {}
     for kind, (name, changes) in names.items():
         text = (FOLDERS[kind] / f"{name}.yaml").read_text("utf-8")
@@ -22,7 +22,7 @@ def faults_of(tmp_path: Path, spec: dict[str, str], pack: dict[str, str], bench:
         paths[kind] = tmp_path / f"{kind}.yaml"
         paths[kind].write_text(text, "utf-8")
     with pytest.raises(BadInput) as bad:
-        gather(Asked("acceptance", *(str(paths[kind]) for kind in names)))
+        gather(Asked("charge-profile", *(str(paths[kind]) for kind in names)))
     return [str(fault).replace(f"{tmp_path}/", "") for fault in bad.value.faults]
 
 

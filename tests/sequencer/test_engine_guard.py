@@ -73,7 +73,7 @@ def tripped(made: Guard, one: Scan, period_s: float = 1.0, set_V: float | None =
 
 
 def test_bounds_are_the_lower_of_bench_and_pack() -> None:
-    inputs = gather(Asked("acceptance", bench="virtual-in-process"))
+    inputs = gather(Asked("charge-profile", bench="virtual-mains-in-process"))
     pack, limits = inputs.pack.model, inputs.bench.bench.limits
     assert Bounds.of(limits, pack).node_V == pytest.approx(5 * 4.35)
     assert Bounds.of(limits, pack).current_A == pytest.approx(8.0)

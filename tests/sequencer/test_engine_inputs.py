@@ -13,7 +13,7 @@ import pytest
 from drivers.text.faults import BadInput, Fault
 from sequencer.engine.inputs import FOLDERS, Asked, Inputs, changes_of, gather
 
-NAMES = {"procedure": "acceptance", "specification": "sprayer", "pack": "sprayer", "bench": "virtual-in-process"}
+NAMES = {"procedure": "charge-profile", "specification": "sprayer", "pack": "sprayer", "bench": "virtual-in-process"}
 
 
 class Files:
@@ -107,7 +107,7 @@ ONE_FAULT = [
     # versions, kinds, YAML itself
     (SPEC, "specification 1", "specification 2", SPEC, "specification 2", "version 2"),
     (PACK, "pack 1", "bench 1", PACK, "bench 1", "a pack file was expected"),
-    (PROCEDURE, "name: acceptance", "name: a\nname: b", PROCEDURE, "name: b", "stands twice"),
+    (PROCEDURE, "name: charge-profile", "name: a\nname: b", PROCEDURE, "name: b", "stands twice"),
     (PROCEDURE, "steps:", "steps: [", PROCEDURE, "- insert", "not YAML"),
 ]
 
@@ -147,11 +147,11 @@ def test_all_faults_of_all_files_at_once(files: Files) -> None:
 @pytest.mark.parametrize(
     ("asked", "place"),
     [
-        (Asked("no-such.yaml", bench="virtual-in-process"), "PROCEDURE"),
-        (Asked("acceptence", bench="virtual-in-process"), "PROCEDURE"),
-        (Asked("acceptance", "no-such", bench="virtual-in-process"), "--spec"),
-        (Asked("acceptance", pack="no-such", bench="virtual-in-process"), "--pack"),
-        (Asked("acceptance", bench="no-such"), "--bench"),
+        (Asked("no-such.yaml", bench="virtual-mains-in-process"), "PROCEDURE"),
+        (Asked("acceptence", bench="virtual-mains-in-process"), "PROCEDURE"),
+        (Asked("charge-profile", "no-such", bench="virtual-mains-in-process"), "--spec"),
+        (Asked("charge-profile", pack="no-such", bench="virtual-mains-in-process"), "--pack"),
+        (Asked("charge-profile", bench="no-such"), "--bench"),
     ],
 )
 def test_a_file_that_is_missing(asked: Asked, place: str) -> None:
@@ -192,7 +192,7 @@ def test_changes_that_cannot_be_read(texts: list[str], said: str) -> None:
 
 def test_every_file_that_was_read_goes_into_the_record_byte_for_byte(files: Files) -> None:
     documents = files.gather().documents()
-    assert {name.partition("/")[0] for name in documents} == {f"{kind}.yaml" for kind in NAMES} | {"dialects"}
+    assert {name.partition("/")[0] for name in documents} == {f"{kind}.yaml" for kind in NAMES} | {"dialects", "curve.yaml"}
     for kind in NAMES:
         assert documents[f"{kind}.yaml"].content == files.path(kind).read_bytes()
 

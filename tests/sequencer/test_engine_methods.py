@@ -106,13 +106,13 @@ def test_a_charger_that_begins_late_is_waited_for_and_one_that_never_does_is_not
 
 
 def test_the_load_takes_more_than_the_charger_can_deliver() -> None:
-    inputs = gather(Asked("acceptance", bench="virtual-in-process"))
+    inputs = gather(Asked("charge-profile", bench="virtual-mains-in-process"))
     assert load_current_A(inputs.specification.model) == pytest.approx(LOAD_SHARE * 4.5)
 
 
 @pytest.mark.parametrize(("most_V", "range_V"), [(0.05, 0.1), (0.1, 0.1), (0.12, 1.0), (21.0, 100.0), (5000.0, 1000.0)])
 def test_the_smallest_range_that_holds_what_may_come(most_V: float, range_V: float) -> None:
-    inputs = gather(Asked("acceptance", bench="virtual-in-process"))
+    inputs = gather(Asked("charge-profile", bench="virtual-mains-in-process"))
     assert range_for(inputs.bench.dialect("meter_node"), most_V) == range_V
 
 

@@ -20,7 +20,7 @@ CV, CC, PUSHED = SupplyMode.CONSTANT_VOLTAGE, SupplyMode.CONSTANT_CURRENT, Suppl
 
 @pytest.fixture
 def bench() -> Iterator[OpenBench]:
-    inputs = gather(Asked("acceptance", bench="virtual-in-process"))
+    inputs = gather(Asked("charge-profile", bench="virtual-mains-in-process"))
     with access_to(inputs.bench, charger_for(inputs.bench, None, "sprayer"), 1) as access:
         opened = open_bench(inputs.bench, access)
         yield opened

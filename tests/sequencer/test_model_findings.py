@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import pytest
 
+from drivers.text.faults import Faults, Place
 from drivers.text.measures import Band
 from sequencer.engine.inputs import Asked, gather
+from sequencer.model.curves import load_curve
 from sequencer.model.findings import definitions
 from sequencer.model.limits import Declared
 from sequencer.model.specification import Specification
@@ -13,7 +15,13 @@ from sequencer.model.specification import Specification
 
 @pytest.fixture(params=["sprayer", "lantern"])
 def spec(request: pytest.FixtureRequest) -> Specification:
-    return gather(Asked("acceptance", request.param, bench="virtual-in-process")).specification.model
+    return gather(Asked("charge-profile", request.param, bench="virtual-mains-in-process")).specification.model
+
+
+def declared(specification: Specification) -> Declared:
+    bound = load_curve("ntc-10k-3435", Faults(), Place("test"))
+    assert bound is not None
+    return Declared(specification, 5, bound.model)
 
 
 def test_every_measurand_says_what_where_when_and_what_makes_it_inconclusive() -> None:
@@ -24,7 +32,7 @@ def test_every_measurand_says_what_where_when_and_what_makes_it_inconclusive() -
 
 
 def test_rows_follow_the_procedures_order_one_a_stage(spec: Specification) -> None:
-    rows = Declared(spec, 5).rows(("charge.ends", "charge.stage.current", "charges"))
+    rows = declared(spec).rows(("charge.ends", "charge.stage.current", "charges"))
     stages = [f"charge.stage{number}.current" for number in range(1, len(spec.charge.stages) + 1)]
     assert [row.name for row in rows] == ["charge.ends", *stages, "charges"]
     assert rows[-1].expected == "charges"
@@ -34,12 +42,12 @@ def test_a_limits_own_rule_wins_over_the_specifications_and_a_person_over_both(s
     own = Band(None, 0.01, rule="simple", text="below 10 mA")
     changed = spec.model_copy(update={"charge": spec.charge.model_copy(update={"current_after_end": own})})
     judged = ("charge.current_after_end", "charge.end_voltage")
-    assert [row.rule for row in Declared(changed, 5).rows(judged)] == ["simple", "guarded"]
-    assert [row.rule for row in Declared(changed, 5).rows(judged, "guarded")] == ["guarded", "guarded"]
+    assert [row.rule for row in declared(changed).rows(judged)] == ["simple", "guarded"]
+    assert [row.rule for row in declared(changed).rows(judged, "guarded")] == ["guarded", "guarded"]
 
 
 def test_what_is_not_declared_is_a_row_without_a_limit(spec: Specification) -> None:
-    rows = {row.name: row for row in Declared(spec, 5).rows(tuple(definitions()))}
+    rows = {row.name: row for row in declared(spec).rows(tuple(definitions()))}
     stepped = spec.charge.algorithm == "stepped-cc"
     assert rows["charge.voltage"].declared is not stepped
     assert rows["charge.stage1.threshold"].declared is stepped
@@ -47,7 +55,7 @@ def test_what_is_not_declared_is_a_row_without_a_limit(spec: Specification) -> N
 
 def test_limits_that_the_procedure_leaves_out_are_named(spec: Specification) -> None:
     everything = tuple(definitions())
-    assert Declared(spec, 5).elsewhere(everything) == []
-    assert Declared(spec, 5).elsewhere(("charges",)) != []
-    left = Declared(spec, 5).elsewhere(tuple(name for name in everything if name != "charge.ends"))
+    assert declared(spec).elsewhere(everything) == []
+    assert declared(spec).elsewhere(("charges",)) != []
+    left = declared(spec).elsewhere(tuple(name for name in everything if name != "charge.ends"))
     assert left == ["charge.ends"]

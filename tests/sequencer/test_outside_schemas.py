@@ -66,7 +66,7 @@ def test_the_table_of_findings_fits_its_schema(schema_of: Any) -> None:
     ],
 )
 def test_a_fault_does_not_fit(schema_of: Any, kind: str, old: str, new: str) -> None:
-    name = "acceptance" if kind == "procedure" else "sprayer"
+    name = "charge-profile" if kind == "procedure" else "sprayer"
     text = (FOLDERS[kind] / f"{name}.yaml").read_text("utf-8")
     assert old in text
     assert fits(schema_of(kind), loaded(text.replace(old, new))) != []
