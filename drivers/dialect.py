@@ -8,7 +8,7 @@ from __future__ import annotations
 import string
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, model_validator
 
 from drivers.needs import NEEDS, Role
 from drivers.text.binding import Written
@@ -54,7 +54,10 @@ def _texts(value: Any) -> Any:
     return (value,) if isinstance(value, str) else tuple(value) if isinstance(value, list) else value
 
 
-Texts = Annotated[tuple[str, ...], BeforeValidator(_texts), Field(min_length=1)]
+_TEXTS_SCHEMA: dict[str, Any] = {
+    "anyOf": [{"type": "string"}, {"type": "array", "items": {"type": "string"}, "minItems": 1}]
+}
+Texts = Annotated[tuple[str, ...], BeforeValidator(_texts), Field(min_length=1), WithJsonSchema(_TEXTS_SCHEMA)]
 
 
 class Setting(BaseModel):
@@ -93,6 +96,24 @@ class Setting(BaseModel):
 
 def _setting(value: Any) -> Any:
     return {"send": value} if isinstance(value, (str, list)) else value
+
+
+_SETTING_SCHEMA: dict[str, Any] = {
+    "anyOf": [
+        *_TEXTS_SCHEMA["anyOf"],
+        {
+            "type": "object",
+            "properties": {
+                "send": _TEXTS_SCHEMA,
+                "back": {"type": "string"},
+                "expect": {"type": "array", "items": {"type": ["string", "number", "boolean"]}},
+            },
+            "required": ["send"],
+            "additionalProperties": False,
+        },
+    ]
+}
+SettingText = Annotated[Setting, BeforeValidator(_setting), WithJsonSchema(_SETTING_SCHEMA)]
 
 
 class Reading(BaseModel):
@@ -175,6 +196,20 @@ class Accuracy(BaseModel):
     resistance: tuple[OhmSpan, ...] = ()
 
 
+_BITS_SCHEMA: dict[str, Any] = {
+    "anyOf": [
+        {"type": "integer", "minimum": 1},
+        {
+            "type": "object",
+            "properties": {"mask": {"type": "integer", "minimum": 1}, "when": {"enum": ["set", "clear"]}},
+            "required": ["mask"],
+            "additionalProperties": False,
+        },
+    ]
+}
+_SETTABLE_SCHEMA = WithJsonSchema({"type": "string", "examples": ["60 V", "15 A", "1 MΩ"]})
+
+
 class Dialect(Written):
     """How one family of instruments is spoken to."""
 
@@ -188,11 +223,15 @@ class Dialect(Written):
     joint: str = Field(";:", description="what joins commands in one message")
     sessions: Literal["one", "several"] = "one"
     timeout: PositiveSeconds = 3.0
-    settings: dict[str, Annotated[Setting, BeforeValidator(_setting)]]
+    settings: dict[str, SettingText]
     readings: dict[str, Reading]
-    status: dict[str, Annotated[Bits, BeforeValidator(_bits)]] = Field(default_factory=dict)
+    status: dict[str, Annotated[Bits, BeforeValidator(_bits), WithJsonSchema(_BITS_SCHEMA)]] = Field(
+        default_factory=dict
+    )
     accuracy: Accuracy = Accuracy()
-    settable: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value))]] = Field(default_factory=dict)
+    settable: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value)), _SETTABLE_SCHEMA]] = Field(
+        default_factory=dict
+    )
 
     @model_validator(mode="after")
     def _complete(self) -> Dialect:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Annotated, Any, Literal
 
-from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, model_validator
+from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema, model_validator
 
 from drivers.shipped import locate
 from drivers.text.binding import Bound, Written, bind
@@ -68,7 +68,7 @@ class ChargerFile(Written):
     """A virtual charger. Without termination (`ends: false`) it stays at its voltage limit for ever."""
 
     name: str
-    cells: Annotated[int, _Cells("ratio")]
+    cells: Annotated[int, _Cells("ratio"), WithJsonSchema({"type": "integer", "minimum": 1, "maximum": 20})]
     algorithm: Algorithm
     stages: Annotated[tuple[StageText, ...], Field(min_length=1)]
     voltage_per_cell: PositiveVolts | None = Field(None, description="cc-cv: regulation")

@@ -23,6 +23,7 @@ def _models() -> dict[str, type[Written]]:
     from drivers.bench import Bench
     from drivers.dialect import Dialect
     from drivers.virtual.charger_file import ChargerFile
+    from sequencer.model.curves import Curve
     from sequencer.model.findings import Findings
     from sequencer.model.pack import Pack
     from sequencer.model.procedure import Procedure
@@ -35,6 +36,7 @@ def _models() -> dict[str, type[Written]]:
         "bench": Bench,
         "dialect": Dialect,
         "charger": ChargerFile,
+        "curve": Curve,
         "findings": Findings,
     }
 

@@ -65,7 +65,8 @@ class Sweeping:
                 (band.low_ohm, band.low_ohm / (1 + step.outside)),
                 (band.high_ohm, band.high_ohm * (1 + step.outside)),
             ):
-                times += self.refused + self.search(expected_steps(*sorted((near, far)), step.resolution))
+                steps = expected_steps(min(near, far), max(near, far), step.resolution)
+                times += self.refused + self.search(steps)
         return times
 
     def sweep_temperature(self, step: SweepTemperature) -> Times:

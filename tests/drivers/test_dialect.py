@@ -73,7 +73,9 @@ def test_each_role_has_a_shipped_dialect() -> None:
     assert {shipped(path.stem).role for path in SHIPPED} == set(get_args(Role)) == set(NEEDS)
 
 
-@pytest.mark.parametrize("path", SHIPPED, ids=lambda path: path.stem)
+@pytest.mark.parametrize(
+    "path", [path for path in SHIPPED if path.stem.startswith("scpi-")], ids=lambda path: path.stem
+)
 def test_shipped_commands_are_of_the_standards(path: Any) -> None:
     """SCPI-1999, volume 2: these subsystems; IEEE 488.2, 10.3 and 10.14: *CLS, *IDN?. At most 12 letters a mnemonic."""
     dialect = shipped(path.stem)

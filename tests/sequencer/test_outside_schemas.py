@@ -10,18 +10,17 @@ from typing import Any
 import pytest
 from ruamel.yaml import YAML
 
+from drivers.bench_file import DIALECTS
+from drivers.virtual.charger_file import CHARGERS
 from sequencer.cli.checking import print_schema
 from sequencer.engine.inputs import FOLDERS
+from sequencer.model.curves import CURVES
 from sequencer.model.findings import findings_text
 
 jsonschema = pytest.importorskip("jsonschema")
 
-SHIPPED = [
-    (kind, path)
-    for kind, folder in FOLDERS.items()
-    for path in sorted(folder.glob("*.yaml"))
-    if not path.name.startswith("bench-")
-]
+ALL = {**FOLDERS, "dialect": DIALECTS, "charger": CHARGERS, "curve": CURVES}
+SHIPPED = [(kind, path) for kind, folder in ALL.items() for path in sorted(folder.glob("*.yaml"))]
 
 
 @pytest.fixture
