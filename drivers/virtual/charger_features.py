@@ -30,8 +30,11 @@ class Part(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True, populate_by_name=True)
 
 
-def _tuple(value: Any) -> Any:
-    return tuple(value) if isinstance(value, list) else value
+def _two(value: Any) -> Any:
+    """A list of two as a tuple of two."""
+    if not isinstance(value, (list, tuple)) or len(value) != 2:
+        raise refuse('two resistances were expected, such as ["2.45 kΩ", "3.70 kΩ"]')
+    return tuple(value)
 
 
 def _rises(value: tuple[float, float]) -> tuple[float, float]:
@@ -47,7 +50,7 @@ def _falls(value: tuple[float, float]) -> tuple[float, float]:
     return value
 
 
-_Pair = Annotated[tuple[PositiveOhms, PositiveOhms], BeforeValidator(_tuple)]
+_Pair = Annotated[tuple[PositiveOhms, PositiveOhms], BeforeValidator(_two)]
 RisingOhms = Annotated[_Pair, AfterValidator(_rises)]
 FallingOhms = Annotated[_Pair, AfterValidator(_falls)]
 
