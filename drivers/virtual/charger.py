@@ -51,6 +51,7 @@ class Charger:
         if self._temperature:
             self._filters["thermistor"] = self._temperature.pin.filter_s
         self._read_ohm = dict.fromkeys(self._filters, OPEN)  # behind the filter
+        self._dead = False  # latched for good
         self._over = False  # a cell stands too high, behind the filter
         self._band: IdBand | None = None  # as read at insertion
         self._connect_pins()
@@ -73,7 +74,10 @@ class Charger:
         self._read_ohm = dict.fromkeys(self._filters, OPEN)
         self._over = False
         if not on:
+            self._dead |= self.state == "fault" and self.plan.fault_latch == "for good"
             self._enter("off")
+        elif self.state == "off" and self._dead:
+            self._enter("fault")
         elif self.state == "off" and self.plan.works:
             self._enter("waiting")
 
@@ -196,7 +200,7 @@ class Charger:
         found = []
         if self.state == "paused" and self._may_resume():
             found.append(self._watch("resume", present_V, True, self.plan.response_s, self._charge))
-        if self.state == "fault" and self._latch == "mains":
+        if self.state == "fault" and self._latch != "removal":
             return found
         clear_s = self.plan.response_s if self.plan.clear_s is None else self.plan.clear_s
         if self._id_is_gone():

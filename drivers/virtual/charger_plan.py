@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Any, Literal, TypeAlias
 
-FaultLatch: TypeAlias = Literal["none", "removal", "mains"]
+FaultLatch: TypeAlias = Literal["none", "removal", "mains", "for good"]
 IDLE_DRAIN_A = 0.2e-3  # what the divider of an idle charger takes from a full pack; common practice, no source
 TAP_DRAIN_A = 20e-6  # what the divider of one cell tap takes; common practice, no source
 

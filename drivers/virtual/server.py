@@ -102,8 +102,6 @@ class Server:
         try:
             data = client.recv(RECEIVE)
             if data:
-                if QUICK_ACK is not None:
-                    client.setsockopt(socket.IPPROTO_TCP, QUICK_ACK, 1)  # it does not last beyond one reception
                 heard(client, data)
                 return True
         except BlockingIOError:
@@ -123,6 +121,8 @@ class Server:
             heapq.heappush(self._owed, (due_s, self._count, client, answer))
         elif answer:
             _say(client, answer)
+        elif QUICK_ACK is not None:  # a command without an answer: acknowledge it now (it lasts for this one only)
+            client.setsockopt(socket.IPPROTO_TCP, QUICK_ACK, 1)
 
     def _say_owed(self) -> float | None:
         """Say what slow instruments owe by now, and return how long the next one takes; None: nothing is owed."""

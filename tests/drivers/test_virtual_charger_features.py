@@ -77,7 +77,7 @@ def test_what_is_left_out_is_not_looked_at() -> None:
         ("[4, 1]", "[5]", "the tap monitor looks at cell 5; the pack has 4"),
         ("for: 1 ms", "for: 10 ms", "'for' must be shorter than 'every'"),
         ("every: 10 ms, ", "", "'every' is missing"),
-        ("fault_latch: mains", "fault_latch: always", "\"always\" is none of 'none', 'removal' or 'mains'"),
+        ("fault_latch: mains", "fault_latch: always", "\"always\" is none of 'none', 'removal', 'mains' or 'for good'"),
         ("clear: 2 s", "clear: 2 V", '"2 V" is a voltage; expected a time'),
         ("latch: true, ", "latsh: true, ", "unknown key 'latsh'; did you mean 'latch'?"),
         ("threshold: 4.24 V, ", "", "'threshold' is missing"),

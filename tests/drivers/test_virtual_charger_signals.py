@@ -170,6 +170,22 @@ def test_fault_that_only_the_mains_clear(breadth_world: Make, ask: Ask, insert: 
     assert world.charger.state == "charging"
 
 
+def test_fault_for_good_survives_removal_and_mains(breadth_world: Make, ask: Ask, insert: Insert) -> None:
+    world = after_insertion(breadth_world, insert, id_ohm=1500.0, charger={"fault_latch": "for good"})
+    for name in ("relays", "mains"):
+        ask(world, name, "ROUT:OPEN (@1)")
+        world.advance(10.0)
+        insert(world)
+        world.advance(5.0)
+        assert world.charger.state == "fault"
+    whole = after_insertion(breadth_world, insert, charger={"fault_latch": "for good"})
+    ask(whole, "mains", "ROUT:OPEN (@1)")
+    whole.advance(1.0)
+    ask(whole, "mains", "ROUT:CLOS (@1)")
+    whole.advance(3.0)
+    assert whole.charger.state == "charging"
+
+
 # -- cell taps ----------------------------------------------------------------------------------------------------
 
 
