@@ -85,7 +85,9 @@ class ChargerFile(Written):
     temperature: TemperatureText | None = None
     tap_monitor: TapMonitorText | None = None
     tap_current: Amperes = Field(TAP_DRAIN_A, description="into each cell tap; negative: out of it")
-    fault_latch: FaultLatch = Field("none", description="what clears a fault: nothing has to, removal, the mains; for good: nothing")
+    fault_latch: FaultLatch = Field(
+        "none", description="what clears a fault: nothing has to, removal, the mains; for good: nothing"
+    )
     clear: PositiveSeconds | None = Field(None, description="how long the pack must be gone; default: response")
 
     @model_validator(mode="after")
