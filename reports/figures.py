@@ -2,16 +2,13 @@
 
 from __future__ import annotations
 
-import io
-import re
-import warnings
-from collections.abc import Iterator, Mapping
-from contextlib import contextmanager
+from collections.abc import Mapping
 from typing import TYPE_CHECKING, Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
+from reports.canvas import BAND, BAND_TOO, CURRENT, INK, MUTED, PAPER, TRIP, VOLTAGE, frame, save_figure, settings
 from reports.profile import Level, Profile, Stage, charge_profile
 from reports.wording import sentence
 
@@ -20,12 +17,7 @@ if TYPE_CHECKING:
     from matplotlib.figure import Figure
 
 Floats = NDArray[np.float64]
-
-# One colour, one meaning; each hex value occurs once, so that a page can put its own (light or dark) in its place.
-INK, MUTED, GRID, BAND, BAND_TOO = "#1b2126", "#5c6770", "#dfe3e6", "#f1f3f5", "#e4e9ed"
-VOLTAGE, CURRENT, TRIP, PAPER = "#1d4f91", "#9a4a00", "#b3122e", "#fffffe"
-_PAGE = {INK: "ink", MUTED: "muted", GRID: "grid", BAND: "band", BAND_TOO: "band-too"}
-_PAGE |= {VOLTAGE: "voltage", CURRENT: "current", TRIP: "trip", PAPER: "paper"}
+__all__ = ["charge_figure", "draw", "save_figure"]
 
 
 class _Flagged(NamedTuple):
@@ -52,33 +44,11 @@ def charge_figure(
     return draw(profile, title=sentence(title))
 
 
-def save_figure(figure: Figure, path: str, kind: str) -> None:
-    """Write a figure as "png", "svg" or "pdf", the same bytes each time."""
-    nothing = {"svg": {"Date": None, "Creator": None}, "pdf": {"CreationDate": None}, "png": {"Software": None}}
-    with _settings({"svg.hashsalt": "packmime", "svg.fonttype": "none"}):
-        figure.savefig(path, format=kind, dpi=160, metadata=nothing[kind])
-
-
-@contextmanager
-def _settings(settings: Mapping[str, Any]) -> Iterator[None]:
-    """matplotlib's defaults and ours: a person's own matplotlibrc shall not reach a report.
-
-    A letter that the face lacks is drawn as a box, or by the page's faces; no one needs a warning of it.
-    """
-    import matplotlib
-
-    with warnings.catch_warnings(), matplotlib.rc_context():
-        warnings.filterwarnings("ignore", message="Glyph", category=UserWarning)
-        matplotlib.rcdefaults()
-        matplotlib.rcParams.update(settings)
-        yield
-
-
 def draw(profile: Profile, *, title: str = "", width_in: float = 8.6, height_in: float = 4.7) -> Figure:
     """Voltage at the charger's contacts above, current into the pack below, one axis of time."""
     from matplotlib.figure import Figure
 
-    with _settings({"font.size": 9}):
+    with settings({"font.size": 9}):
         figure = Figure(figsize=(width_in, height_in), facecolor=PAPER)
         left, right, top = 0.62 / width_in, 1 - 0.12 / width_in, 1 - (0.62 if title else 0.32) / height_in
         upper, lower = figure.subplots(
@@ -92,8 +62,8 @@ def draw(profile: Profile, *, title: str = "", width_in: float = 8.6, height_in:
             # parse_math off: a dollar sign in outside text is a dollar sign.
             figure.text(left, 1 - 0.12 / height_in, title, va="top", fontsize=11, color=INK, parse_math=False)
         factor_s, unit = _clock(profile.window)
-        _frame(upper, "voltage / V")
-        _frame(lower, "current / A")
+        frame(upper, "voltage / V")
+        frame(lower, "current / A")
         _traces(profile, upper, lower, factor_s)
         for axes in (upper, lower):
             _bands(axes, profile.stages, factor_s)
@@ -115,16 +85,6 @@ def _clock(window: tuple[float, float]) -> tuple[float, str]:
     if span_s > 6 * 3600:
         return 3600.0, "h"
     return (60.0, "min") if span_s > 300 else (1.0, "s")
-
-
-def _frame(axes: Axes, label: str) -> None:
-    axes.set_facecolor(PAPER)
-    axes.set_ylabel(label, color=INK)
-    axes.grid(True, color=GRID, linewidth=0.6)
-    axes.set_axisbelow(False)
-    axes.tick_params(colors=MUTED, labelcolor=INK, length=3)
-    axes.spines[["top", "right"]].set_visible(False)
-    axes.spines[["left", "bottom"]].set_color(MUTED)
 
 
 def _traces(profile: Profile, upper: Axes, lower: Axes, factor_s: float) -> None:
@@ -199,28 +159,3 @@ def _trips(upper: Axes, lower: Axes, profile: Profile, factor_s: float) -> None:
             color=TRIP,
             parse_math=False,
         )
-
-
-def svg_for_page(figure: Figure, *, salt: str, label: str) -> str:
-    """A figure as an `<svg>` element for a page: the page's colours and fonts, no ids but its own, no scripts.
-
-    salt : tells the ids of two figures on one page apart. label : what the figure shows, for those who do not see it;
-    fixed text of ours, without markup.
-    """
-    text = io.StringIO()
-    with _settings({"svg.hashsalt": salt, "svg.fonttype": "none"}):
-        figure.savefig(text, format="svg", metadata={"Date": None, "Creator": None})
-    svg = text.getvalue()
-    svg = svg[svg.index("<svg") :]
-    svg = re.sub(r"<metadata>.*?</metadata>", "", svg, flags=re.DOTALL)
-    svg = re.sub(r"<defs>\s*<style.*?</style>\s*</defs>", "", svg, flags=re.DOTALL)
-    svg = re.sub(r' id="[a-zA-Z0-9.]+_\d+"', "", svg)
-    svg = re.sub(r'font: ([\d.]+px) [^;"]*', r"font-size: \1", svg)
-    svg = re.sub(r"<!--.*?-->", "", svg, flags=re.DOTALL)
-    svg = svg.replace(" xlink:href=", " href=")  # SVG 2; needs no namespace inside HTML
-    for colour, name in _PAGE.items():
-        svg = svg.replace(colour, f"var(--{name})")
-    head = re.match(r'<svg [^>]*viewBox="([^"]*)"[^>]*>', svg)
-    assert head is not None
-    opening = f'<svg xmlns="http://www.w3.org/2000/svg" viewBox="{head[1]}" role="img" aria-label="{label}">'
-    return re.sub(r"\s*\n\s*", "\n", opening + svg[head.end() :])

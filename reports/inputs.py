@@ -1,4 +1,4 @@
-"""What a record's own input files say that a report needs: the measurands, and the number of cells."""
+"""What a record's own input files say that a report needs: measurands, cells, declared bands, thermistor curve."""
 
 from __future__ import annotations
 
@@ -8,6 +8,8 @@ from typing import TYPE_CHECKING, TypeVar
 
 if TYPE_CHECKING:
     from drivers.text.binding import Written
+    from sequencer.model.curves import Curve
+    from sequencer.model.specification import Specification
 
     M = TypeVar("M", bound=Written)
 
@@ -41,6 +43,20 @@ def cells(content: bytes) -> int | None:
 
     bound = _bound(Pack, content, "pack.yaml", "pack")
     return None if bound is None else bound.cells
+
+
+def specification(content: bytes) -> Specification | None:
+    """The declared behaviour in a specification.yaml; None where this program cannot read it."""
+    from sequencer.model.specification import Specification
+
+    return _bound(Specification, content, "specification.yaml", "specification")
+
+
+def curve(content: bytes) -> Curve | None:
+    """The thermistor's curve in a record's curve.yaml; None where this program cannot read it."""
+    from sequencer.model.curves import Curve
+
+    return _bound(Curve, content, "curve.yaml", "curve")
 
 
 def _bound(model: type[M], content: bytes, name: str, kind: str) -> M | None:

@@ -1,4 +1,4 @@
-"""Draws one value against its limits as a small bar: limits, guard bands, value with its uncertainty."""
+"""Draws one finding against its limits as a small bar: limits, guard bands, value or bracket, its uncertainty."""
 
 from __future__ import annotations
 
@@ -18,7 +18,8 @@ class Bar:
 
     inside : from low to high limit (a side without a limit ends at the edge of the box).
     guards : strips of the guard bands inside the limits, outside : their mirror outside.
-    value, left, right : value and value -/+ U.   beyond : -1, 0 or 1, the side on which the value leaves the box.
+    value : the value, or the middle of a bracket.   left, right : value (or the bracket's ends) -/+ U.
+    bracket : both ends of an interval, None for a value.   beyond : -1, 0 or 1, the side on which the value leaves.
     """
 
     inside: tuple[float, float]
@@ -29,16 +30,21 @@ class Bar:
     left: float
     right: float
     beyond: int
+    bracket: tuple[float, float] | None = None
 
 
-def limit_bar(value: float, U: float, low: float | None, high: float | None, guard: float) -> Bar | None:
-    """The bar of a value; all in one unit.
+def limit_bar(
+    value: float | tuple[float, float], U: float, low: float | None, high: float | None, guard: float
+) -> Bar | None:
+    """The bar of a value, or of an interval (low end, high end) in which it lies; all in one unit.
 
     None where there is no limit, no finite value, or no room between them that arithmetic could show.
     """
-    if (low is None and high is None) or not math.isfinite(value):
+    first, last = value if isinstance(value, tuple) else (value, value)
+    middle = first + (last - first) / 2
+    if (low is None and high is None) or not math.isfinite(middle):
         return None
-    start, stop = _window(value, U, low, high, guard)
+    start, stop = _window(middle, U + (last - first) / 2, low, high, guard)
     if not stop - start > max(_SMALLEST, 1e-9 * max(abs(start), abs(stop))):
         return None
     scale = WIDTH / (stop - start)
@@ -57,10 +63,11 @@ def limit_bar(value: float, U: float, low: float | None, high: float | None, gua
         guards=tuple(strip(edge, edge + sign * room) for edge, sign in sides if edge is not None and guard > 0),
         outside=tuple(strip(edge, edge - sign * guard) for edge, sign in sides if edge is not None and guard > 0),
         edges=tuple(place(edge) for edge in (low, high) if edge is not None),
-        value=place(value),
-        left=place(value - U),
-        right=place(value + U),
-        beyond=(value > stop) - (value < start),
+        value=place(middle),
+        left=place(first - U),
+        right=place(last + U),
+        beyond=(middle > stop) - (middle < start),
+        bracket=strip(first, last) if isinstance(value, tuple) else None,
     )
 
 

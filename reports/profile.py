@@ -99,7 +99,7 @@ def charge_profile(
         return None
     stages = stages_of(classification)
     body = _body(stages, events, voltage.time_s)
-    window = _window(body, voltage.time_s)
+    window = _window(body, voltage.time_s, events)
     volts, dropped = _good(voltage, window)
     amps, dropped_too = _good(current, window)
     return Profile(
@@ -140,10 +140,15 @@ def _spans(event: Mapping[str, Any]) -> bool:
     return event.get("start_s") is not None and event.get("end_s") is not None
 
 
-def _window(body: tuple[float, float], time_s: Floats) -> tuple[float, float]:
-    """The body with a margin, within the record."""
+def _window(body: tuple[float, float], time_s: Floats, events: Sequence[Mapping[str, Any]]) -> tuple[float, float]:
+    """The body with a margin, within the record, without the margin where another insertion would reach into it."""
     margin = 0.02 * (body[1] - body[0])
     start, stop = max(body[0] - margin, float(time_s[0])), min(body[1] + margin, float(time_s[-1]))
+    others = [event for event in events if event.get("event") in ("point", "control", "walk") and _spans(event)]
+    if any(start < event["end_s"] <= body[0] for event in others):
+        start = max(body[0], float(time_s[0]))
+    if any(body[1] <= event["start_s"] < stop for event in others):
+        stop = min(body[1], float(time_s[-1]))
     return (start, stop) if stop > start else (float(time_s[0]), float(time_s[-1]))
 
 

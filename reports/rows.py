@@ -4,12 +4,18 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from reports import wording
 from reports.inputs import Measurand
+from reports.insertions import bracket_of
 from reports.limit_bar import Bar, limit_bar
+from reports.limit_words import limit_words
+from reports.temperature_map import celsius_span
 from reports.wording import Word, clean, si
+
+if TYPE_CHECKING:
+    from sequencer.model.curves import Curve
 
 Json = Mapping[str, Any]
 
@@ -20,9 +26,11 @@ class VerdictRow:
 
     node: str
     limit: str
+    words: str
     verdict: Word
     why: str
     result: str
+    also: str
     per: str
     coverage: str
     demanded: str
@@ -75,28 +83,42 @@ class Pair:
     text: str
 
 
-def verdict_row(number: int, verdict: Json, measurands: Mapping[str, Measurand]) -> VerdictRow:
+def verdict_row(
+    number: int, verdict: Json, measurands: Mapping[str, Measurand], curve: Curve | None = None
+) -> VerdictRow:
     """The row of one entry of verdicts.json; ValueError for a verdict that is none of the seven words."""
     unit = str(verdict.get("unit") or "")
     U = expanded(verdict)
     value, low, high = verdict.get("value"), verdict.get("low"), verdict.get("high")
     number_like = isinstance(value, int | float) and not isinstance(value, bool)
+    ends = bracket_of(verdict)
+    shown = ends or (float(value) if number_like and value is not None else None)
     guard = float(verdict.get("guard_band") or 0.0)
     k, evidence = verdict.get("k"), verdict.get("evidence")
     finding = measurands.get(str(verdict.get("finding")))
     return VerdictRow(
         node=node_name(number),
         limit=clean(verdict["limit"]),
+        words=limit_words(verdict),
         verdict=wording.verdict_word(verdict["verdict"]),
         why=clean(verdict.get("why")),
-        result=wording.measured(value, U, unit),
+        result=wording.measured(value, U, unit) if ends is None else wording.bracket(*ends, U, unit),
+        also=_temperatures(verdict, ends, curve),
         per="per cell" if number_like and finding is not None and finding.per_cell else "",
         coverage=f"k = {k:.2f}" if U is not None and k is not None else "",
-        demanded=wording.limits(low, high, verdict.get("expected"), unit),
-        bar=limit_bar(float(value), U or 0.0, low, high, guard) if number_like and value is not None else None,
+        demanded=wording.limits(low, high, verdict.get("expected"), unit, verdict.get("declared")),
+        bar=None if shown is None else limit_bar(shown, U or 0.0, low, high, guard),
         basis=_basis(verdict, unit),
         evidence=_span(*evidence) if evidence else "",
     )
+
+
+def _temperatures(verdict: Json, ends: tuple[float, float] | None, curve: Curve | None) -> str:
+    """A limit of the thermistor, judged in ohms, as temperatures by the declared curve; empty for any other."""
+    if ends is None or verdict.get("unit") != "Ω" or not str(verdict.get("finding")).startswith("temperature."):
+        return ""
+    span = celsius_span(curve, *ends)
+    return "" if span is None else f"that is {wording.celsius(*span)}"
 
 
 def measurand_rows(verdicts: Sequence[Json], measurands: Mapping[str, Measurand]) -> tuple[Pair, ...]:

@@ -6,12 +6,16 @@ import json
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Any, Protocol
+from typing import TYPE_CHECKING, Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
 
-from reports.inputs import Measurand, cells, measurands
+from reports.inputs import Measurand, cells, curve, measurands, specification
+
+if TYPE_CHECKING:
+    from sequencer.model.curves import Curve
+    from sequencer.model.specification import Specification
 
 Floats = NDArray[np.float64]
 
@@ -35,7 +39,8 @@ class Source:
     """The parsed JSON of a judgement and its record, nothing selected, nothing rounded.
 
     notes : what the reading of the record found torn, changed or unsealed. measurands : by finding.
-    cells : of the pack, None where unknown. series : channel name -> its Series; None for a channel that is not there.
+    cells : of the pack, specification : as it was judged by, curve : of the thermistor; None where unknown.
+    series : channel name -> its Series; None for a channel that is not there.
     """
 
     name: str
@@ -49,6 +54,8 @@ class Source:
     series: Callable[[str], Series | None]
     measurands: Mapping[str, Measurand] = field(default_factory=dict)
     cells: int | None = None
+    specification: Specification | None = None
+    curve: Curve | None = None
 
 
 def read_json(path: Path) -> Any:
@@ -70,6 +77,7 @@ def read_judgement(folder: Path) -> Source:
     held = {channel.name for channel in record.channels}
     parts = {name: read_json(folder / f"{name}.json") for name in ("verdicts", "findings", "budgets", "judgement")}
     given = set(record.inputs)
+    judged_by = folder / "specification.yaml"
     return Source(
         name=folder.name,
         manifest=record.manifest or {},
@@ -78,5 +86,7 @@ def read_judgement(folder: Path) -> Source:
         series=lambda name: record.series(name) if name in held else None,
         measurands=measurands(record.input_bytes("findings.yaml")) if "findings.yaml" in given else {},
         cells=cells(record.input_bytes("pack.yaml")) if "pack.yaml" in given else None,
+        specification=specification(judged_by.read_bytes()) if judged_by.is_file() else None,
+        curve=curve(record.input_bytes("curve.yaml")) if "curve.yaml" in given else None,
         **parts,
     )

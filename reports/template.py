@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
+from functools import partial
 from typing import Any
 
 from reports.view import View
@@ -45,18 +46,45 @@ def css_text(text: str) -> str:
     return re.sub(r"[^A-Za-z0-9 .]", lambda found: f"\\{ord(found[0]):06x}", text)
 
 
-def _figures(view: View) -> list[tuple[str, Any]]:
-    """The charge figure twice: for a page's width, and for a hand-held screen, where its letters would be too small."""
-    from reports.figures import draw, svg_for_page
+def _figures(view: View) -> dict[str, list[tuple[str, Any]]]:
+    """Each figure twice: for a page's width, and for a hand-held screen, where its letters would be too small."""
+    from reports.canvas import svg_for_page
 
-    if view.profile is None:
-        return []
-    label = "Charge profile: voltage at the charger's contacts and current over time"
-    sizes = (("wide", 8.6, 4.7), ("narrow", 4.3, 4.9))
-    return [
-        (name, _ours(svg_for_page(draw(view.profile, width_in=width, height_in=height), salt=name, label=label)))
-        for name, width, height in sizes
-    ]
+    return {
+        name: [
+            (size, _ours(svg_for_page(drawn, salt=f"{name}-{size}", label=label)))
+            for size, drawn in (("wide", draw(8.6)), ("narrow", draw(4.3)))
+        ]
+        for name, label, draw in _drawings(view)
+    }
+
+
+def _drawings(view: View) -> Iterator[tuple[str, str, Callable[[float], Any]]]:
+    """Name, label and drawing by width (inches) of each figure that has something to show."""
+    if view.profile is not None and view.has_charge:
+        from reports.figures import draw
+
+        profile = view.profile
+        label = "Charge profile: voltage at the charger's contacts and current over time"
+        yield "charge", label, lambda wide: draw(profile, width_in=wide, height_in=4.7 if wide > 6 else 4.9)
+    if view.id_map is not None:
+        from reports.id_figure import draw_id_map
+
+        yield "id", "ID map: charger current over ID resistance", partial(_sized, draw_id_map, view.id_map)
+    if view.temperature_map is not None:
+        from reports.temperature_figure import draw_temperature_map
+
+        label = "Temperature window: where a charge starts and goes on"
+        yield "temperature", label, partial(_sized, draw_temperature_map, view.temperature_map)
+    if view.cell_map is not None:
+        from reports.cell_figure import draw_cell_map
+
+        label = "Cell taps: the voltage of each cell at which the charge stops"
+        yield "cells", label, partial(_sized, draw_cell_map, view.cell_map)
+
+
+def _sized(draw: Callable[..., Any], shown: object, width_in: float) -> Any:
+    return draw(shown, width_in=width_in)
 
 
 def _ours(markup: str) -> Any:

@@ -9,9 +9,13 @@ from typing import Any
 import numpy as np
 
 from reports import header, rows, wording
+from reports.cell_map import CellMap, cell_map
+from reports.families import Family, Summary, counted, families, summary
+from reports.id_map import IdMap, id_map
 from reports.profile import Profile, charge_profile
 from reports.rows import Budget, Pair, StageRow, VerdictRow
 from reports.source import Source
+from reports.temperature_map import TemperatureMap, temperature_map
 from reports.wording import Word, clean
 
 
@@ -39,6 +43,13 @@ class View:
     deviations: tuple[str, ...]
     changed: tuple[str, ...]
     verdicts: tuple[VerdictRow, ...]
+    families: tuple[Family, ...]
+    summary: Summary
+    elsewhere: tuple[str, ...]
+    id_map: IdMap | None
+    temperature_map: TemperatureMap | None
+    cell_map: CellMap | None
+    has_charge: bool
     algorithm: str
     algorithm_note: str
     profile: Profile | None
@@ -66,6 +77,9 @@ def build(source: Source) -> View:
     """
     manifest, judgement = source.manifest, source.judgement
     verdicts = source.verdicts["verdicts"]
+    judged = tuple(
+        rows.verdict_row(number, one, source.measurands, source.curve) for number, one in enumerate(verdicts, 1)
+    )
     classification = source.findings.get("classification") or {}
     profile = _profile(source, classification)
     return View(
@@ -88,7 +102,12 @@ def build(source: Source) -> View:
         way_to_safety=header.way_to_safety(source.events),
         deviations=header.unique(judgement.get("deviations"), manifest.get("deviations")),
         changed=header.unique(judgement.get("changed")),
-        verdicts=tuple(rows.verdict_row(number, one, source.measurands) for number, one in enumerate(verdicts, 1)),
+        verdicts=judged,
+        families=families(judged),
+        summary=summary(judged),
+        elsewhere=counted(judgement.get("not_part_of_procedure") or ()),
+        **_maps(source),
+        has_charge=_has_charge(source),
         algorithm=_algorithm(classification),
         algorithm_note=clean(classification.get("why")) if classification.get("why") else "",
         profile=profile,
@@ -108,6 +127,23 @@ def build(source: Source) -> View:
         cautions=wording.CAUTIONS,
         not_covered=wording.NOT_COVERED,
     )
+
+
+def _maps(source: Source) -> dict[str, Any]:
+    """What the figures of sweeps and walks show; None for each that was not made."""
+    verdicts, findings, declared = source.verdicts["verdicts"], source.findings, source.specification
+    return {
+        "id_map": id_map(findings.get("points") or (), verdicts, declared),
+        "temperature_map": temperature_map(findings, verdicts, declared, source.curve),
+        "cell_map": cell_map(findings.get("walks") or (), verdicts, declared),
+    }
+
+
+def _has_charge(source: Source) -> bool:
+    """Whether the record holds a charge, or at least nothing else that a figure could show in its place."""
+    begun = any(event.get("event") == "step-start" and event.get("does") == "charge" for event in source.events)
+    shown = source.findings.get("points") or source.findings.get("walks")
+    return bool(begun or source.findings.get("classification") or not shown)
 
 
 def _profile(source: Source, classification: Mapping[str, Any]) -> Profile | None:

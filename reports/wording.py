@@ -103,10 +103,29 @@ def measured(value: object, uncertainty: float | None, unit: str) -> str:
     return pm(value, uncertainty, unit)
 
 
-def limits(low: float | None, high: float | None, expected: object, unit: str) -> str:
-    """What was demanded, in words."""
+def bracket(low: float, high: float, uncertainty: float | None, unit: str) -> str:
+    """The interval in which a finding lies, and the expanded uncertainty of its ends: "3.98 kΩ to 4.02 kΩ, U 4.2 Ω"."""
+    from sequencer.analysis.wording import quantity, resolution_of
+
+    width = max(high - low, uncertainty or 0.0)
+    # A hair more, for a difference may fall short of a round step: 4.25 - 4.24 is 0.0099999...
+    step = resolution_of(width * (1.0 + 1e-9)) if 0.0 < width < 1e300 else 0.0
+    ends = f"{quantity(low, unit, step=step)} to {quantity(high, unit, step=step)}"
+    return f"{ends}, U {si(uncertainty, unit, 2)}" if uncertainty else ends
+
+
+def celsius(low: float, high: float) -> str:
+    """A span of temperatures as people read it."""
+    decimals = 1 if high - low >= 1 else 2
+    return f"{low:.{decimals}f} °C to {high:.{decimals}f} °C"
+
+
+def limits(low: float | None, high: float | None, expected: object, unit: str, declared: object = None) -> str:
+    """What was demanded, in words; beside it how the specification writes it, where that is another quantity."""
     if low is None and high is None:
         return NOTHING if expected is None else clean(expected)
+    if declared is not None:
+        return f"{clean(declared)}, that is {interval(low, high, unit, 4)}"
     return interval(low, high, unit)
 
 
@@ -134,5 +153,18 @@ def utc(stamp: object) -> str:
     return f"{found[1]} {found[2]} UTC" if found else clean(stamp)
 
 
-__all__ = ["CAUTIONS", "NOTHING", "NOT_COVERED", "RULES", "STAGES", "VERDICTS", "Word", "clean", "clock_time", "limits"]
+__all__ = [
+    "CAUTIONS",
+    "NOTHING",
+    "NOT_COVERED",
+    "RULES",
+    "STAGES",
+    "VERDICTS",
+    "Word",
+    "bracket",
+    "celsius",
+    "clean",
+    "clock_time",
+    "limits",
+]
 __all__ += ["measured", "probability", "sentence", "si", "since_start", "stage_words", "tally", "utc", "verdict_word"]

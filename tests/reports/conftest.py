@@ -9,6 +9,10 @@ from typing import Any
 import numpy as np
 import pytest
 
+from reports.inputs import curve, specification
+from sequencer.model.curves import Curve
+from sequencer.model.specification import Specification
+
 Json = dict[str, Any]
 
 CELLS = 5
@@ -27,6 +31,25 @@ capacity: 2 Ah
 ocv: [[0 %, 3.0 V], [50 %, 3.7 V], [100 %, 4.2 V]]
 resistance: 150 mΩ
 rated_current: 4 A
+"""
+SPECIFICATION = """packmime: specification 1
+model: greenhouse sprayer charger, 5 cells
+pack: sprayer
+rule: guarded
+dwell: {start_delay: 2 s, clear: 2 s, response: 1 s}
+charge: {algorithm: cc-cv, stages: [{current: 2.0 A ± 5 %}]}
+id_bands:
+  - {id: [0.90 kΩ, 1.10 kΩ], current: 1.5 A ± 5 %}
+  - {id: [2.70 kΩ, 3.30 kΩ], current: 3.0 A ± 5 %}
+  - {id: [9.0 kΩ, 11.0 kΩ], current: 4.0 A ± 5 %}
+temperature: {curve: ntc-10k-3435, start: [3 °C ± 2 °C, 45 °C ± 2 °C], run: [0 °C ± 2 °C, 50 °C ± 2 °C]}
+tap_trip: {voltage: [4.20 V, 4.28 V], stop_time: {below: 2 s}, release: resumes, rule: simple}
+"""
+CURVE = """packmime: curve 1
+name: ntc-10k-3435
+source: invented for this record
+span: [-40 °C, 110 °C]
+beta: {resistance: 10 kΩ, at: 25 °C, beta: 3435 K}
 """
 LONG = "verylongwordwithoutanybreak" * 12
 
@@ -57,6 +80,20 @@ def parts() -> Json:
     return content
 
 
+def breadth_parts() -> Json:
+    """An acceptance with everything in it: the same charge, and ID bands, temperatures, cell taps (breadth.json).
+
+    Every value is invented: an edge inside its band, a shorted ID that pulses, a cell that stops nothing, a void point.
+    """
+    content, more = parts(), json.loads(Path(__file__).with_name("breadth.json").read_text(encoding="utf-8"))
+    content["verdicts"]["verdicts"] += more["verdicts"]
+    content["findings"]["findings"] += more["findings"]
+    content["findings"] |= {"points": more["points"], "walks": more["walks"]}
+    content["budgets"] |= more["budgets"]
+    content["judgement"]["not_part_of_procedure"] = ["balancing.cell1.current"]
+    return content
+
+
 def added_everywhere(value: Any, text: str) -> Any:
     """The same document with a text added to each free field; words of closed lists, hashes and times stay."""
     closed = {
@@ -71,6 +108,8 @@ def added_everywhere(value: Any, text: str) -> Any:
         "utc",
         "sha256",
         "unit",
+        "way",
+        "role",
     }
     if isinstance(value, dict):
         return {
@@ -91,6 +130,7 @@ def write_record(folder: Path, content: Json, traces: tuple[np.ndarray, np.ndarr
     with RecordFolder.create(folder) as record:
         record.add_input("findings.yaml", findings_text())
         record.add_input("pack.yaml", PACK.encode())
+        record.add_input("curve.yaml", CURVE.encode())
         for event in content["events"]:
             record.event(event["t"], event["event"], **{k: v for k, v in event.items() if k not in ("t", "event")})
         journal = record.start_journal(start_utc="2026-12-01T08:00:00Z", wall_s=lambda: 0.0)
@@ -101,6 +141,7 @@ def write_record(folder: Path, content: Json, traces: tuple[np.ndarray, np.ndarr
     seal(record, content["manifest"])
     judged = folder / "judged" / "001"
     judged.mkdir(parents=True)
+    (judged / "specification.yaml").write_text(SPECIFICATION, encoding="utf-8")
     for name in ("verdicts", "findings", "budgets", "judgement"):
         (judged / f"{name}.json").write_text(json.dumps(content[name], ensure_ascii=True), encoding="utf-8")
     return judged
@@ -109,6 +150,27 @@ def write_record(folder: Path, content: Json, traces: tuple[np.ndarray, np.ndarr
 @pytest.fixture
 def content() -> Json:
     return parts()
+
+
+@pytest.fixture
+def breadth() -> Json:
+    return breadth_parts()
+
+
+@pytest.fixture(scope="session")
+def declared() -> Specification:
+    """What the charger of the breadth is declared to do."""
+    read = specification(SPECIFICATION.encode())
+    assert read is not None
+    return read
+
+
+@pytest.fixture(scope="session")
+def sensor() -> Curve:
+    """The thermistor of the breadth."""
+    read = curve(CURVE.encode())
+    assert read is not None
+    return read
 
 
 @pytest.fixture(scope="session")
@@ -144,6 +206,23 @@ def reported(tmp_path_factory: pytest.TempPathFactory) -> Path:
     judged = write_record(tmp_path_factory.mktemp("reported") / "record", parts(), synthetic())
     write_report(judged)
     return judged
+
+
+@pytest.fixture(scope="session")
+def accepted(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """One judgement of an acceptance with everything in it, its report written."""
+    from reports.runner import write_report
+
+    judged = write_record(tmp_path_factory.mktemp("accepted") / "record", breadth_parts(), synthetic())
+    write_report(judged)
+    return judged
+
+
+@pytest.fixture(scope="session")
+def hostile_judgement(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """The same acceptance with the hostile text in every free field, without a report."""
+    folder = tmp_path_factory.mktemp("hostile") / "record"
+    return write_record(folder, added_everywhere(breadth_parts(), f"{HOSTILE} {LONG}"), synthetic())
 
 
 @pytest.fixture

@@ -1,7 +1,5 @@
 """The figure: the same bytes each time, outside text as text, nothing that a page would have to fetch."""
 
-import io
-import re
 import subprocess
 import sys
 import xml.etree.ElementTree as ET
@@ -41,20 +39,6 @@ def test_outside_text_is_drawn_as_text(content: dict, tmp_path: Path) -> None:
     texts = ["".join(one.itertext()) for one in ET.parse(tmp_path / "f.svg").iter(f"{SVG}text")]
     assert "$x^2$ <b> \u202e садовый 充電 \ufffd" in texts
     assert "2 $\\frac{<script>}$ 充電" in texts
-
-
-def test_a_figure_for_a_page_is_plain_svg_in_the_page_s_colours(content: dict) -> None:
-    figure = figures.charge_figure(*log(), content["findings"]["classification"], title="")
-    one, other = (figures.svg_for_page(figure, salt=salt, label="a charge") for salt in ("one", "other"))
-    root = ET.parse(io.StringIO(one)).getroot()
-    plain = {"svg", "g", "path", "defs", "use", "text", "clipPath", "rect", "tspan"}
-    assert {element.tag.removeprefix(SVG) for element in root.iter()} <= plain
-    assert not re.search(r"https?://(?!www\.w3\.org/(2000/svg|1999/xlink)\")", one)
-    assert not re.search(r"#[0-9a-f]{6}\b", one), "a fixed colour would not follow the page into the dark"
-    ids = [set(re.findall(r' id="([^"]+)"', text)) for text in (one, other)]
-    assert ids[0]
-    assert not ids[0] & ids[1], "two figures on one page must not share an id"
-    assert set(re.findall(r"url\(#([^)]+)\)", one)) <= ids[0]
 
 
 def test_a_log_too_short_is_refused_with_its_length() -> None:

@@ -60,6 +60,25 @@ def test_overlapping_guard_bands_meet_in_the_middle() -> None:
     assert bar.guards[0][1] == bar.guards[1][0]
 
 
+def test_an_interval_is_drawn_from_end_to_end_with_u_at_its_ends() -> None:
+    bar = limit_bar((3980.0, 4020.0), 4.0, 3900.0, 4100.0, 4.0)
+    assert bar is not None
+    assert bar.bracket is not None
+    low, high = bar.edges
+    per_ohm = (high - low) / 200
+    # Computed: the interval is 40 of 200 Ω wide, U reaches 4 Ω beyond each end, its middle is that of the limits.
+    assert bar.bracket[1] - bar.bracket[0] == pytest.approx(40 * per_ohm, abs=0.02)
+    assert bar.bracket[0] - bar.left == pytest.approx(4 * per_ohm, abs=0.02)
+    assert bar.value == pytest.approx((low + high) / 2, abs=0.02)
+
+
+def test_an_interval_across_a_limit_stands_on_both_sides_of_it() -> None:
+    bar = limit_bar((8.95, 9.05), 0.0, None, 9.0, 0.0)
+    assert bar is not None
+    assert bar.bracket is not None
+    assert bar.bracket[0] < bar.edges[0] < bar.bracket[1]
+
+
 @pytest.mark.parametrize("missing", [(1.0, None, None), (math.nan, 0.0, 1.0), (math.inf, 0.0, None)])
 def test_nothing_to_draw(missing: tuple[float, float | None, float | None]) -> None:
     value, low, high = missing
@@ -84,6 +103,11 @@ def test_everything_stays_in_the_box(value: float, U: float, edges: list[float],
     assert all(0 <= start <= stop <= WIDTH for start, stop in spans)
 
 
-@given(value=st.floats(), U=st.floats(0), low=st.floats(), high=st.floats(), guard=st.floats(0))
-def test_no_number_at_all_stops_a_report(value: float, U: float, low: float, high: float, guard: float) -> None:
+anything = st.floats()
+
+
+@given(value=anything | st.tuples(anything, anything), U=st.floats(0), low=anything, high=anything, guard=st.floats(0))
+def test_no_number_at_all_stops_a_report(
+    value: float | tuple[float, float], U: float, low: float, high: float, guard: float
+) -> None:
     limit_bar(value, U, low, high, guard)

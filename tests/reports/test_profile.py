@@ -68,6 +68,22 @@ def test_a_record_without_samples_has_no_figure() -> None:
     assert charge_profile(empty, empty, {}) is None
 
 
+@pytest.mark.parametrize(
+    ("other", "shown"),
+    [
+        ({"event": "control", "start_s": 90.0, "end_s": 98.0}, (100.0, 916.0)),
+        ({"event": "point", "start_s": 905.0, "end_s": 950.0}, (84.0, 900.0)),
+        ({"event": "control", "start_s": 40.0, "end_s": 60.0}, (84.0, 916.0)),
+    ],
+)
+def test_no_other_insertion_reaches_into_the_figure(other: dict, shown: tuple[float, float]) -> None:
+    time_s = np.arange(1000.0)
+    events = [other, window("charges", 110, 112, mains_s=100), window("charge", 112, 900)]
+    profile = charge_profile(series(time_s, time_s), series(time_s, time_s), {}, events)
+    assert profile is not None
+    assert profile.window == pytest.approx(shown)  # computed: 2 % of 800 s at either side
+
+
 def window(finding: str, start_s: float, end_s: float, **more: float) -> dict:
     return {"t": end_s, "event": "finding-window", "finding": finding, "start_s": start_s, "end_s": end_s, **more}
 

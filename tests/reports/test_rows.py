@@ -4,6 +4,7 @@ import pytest
 
 from reports import rows
 from reports.inputs import Measurand
+from sequencer.model.curves import Curve
 
 PER_CELL = {"charge.voltage": Measurand("what", "when", "mean", per_cell=True)}
 
@@ -47,3 +48,35 @@ def test_budget_shares_are_shares_of_variance(content: dict) -> None:
 def test_a_finding_is_defined_once(content: dict) -> None:
     verdicts = content["verdicts"]["verdicts"]
     assert [row.name for row in rows.measurand_rows(verdicts * 2, PER_CELL)] == ["charge.voltage"]
+
+
+def interval(**changed: object) -> dict:
+    return {
+        "limit": "id.band2.lower_edge", "kind": "interval", "finding": "id.band.lower_edge", "verdict": "pass",
+        "why": "", "value": 4000.0, "unit": "Ω", "u": 2.1, "k": 2.0, "n": 6, "low": None, "high": 4100.0,
+        "expected": None, "rule": "guarded", "interval": [3980.0, 4020.0], "declared": None, "guard_band": 4.2,
+        "p_conform": 0.999, "evidence": [1.0, 2.0],
+    } | changed  # fmt: skip
+
+
+def test_an_interval_states_both_ends_and_their_uncertainty() -> None:
+    row = rows.verdict_row(1, interval(), {})
+    assert row.result == "3.980 kΩ to 4.020 kΩ, U 4.2 Ω"
+    assert row.words == "lower end of band 2"
+    assert row.bar is not None
+    assert row.bar.bracket is not None
+
+
+def test_a_limit_of_the_thermistor_is_told_in_degrees_beside_ohms(sensor: Curve) -> None:
+    one = interval(limit="temperature.start_low", finding="temperature.start_low", declared="3 °C ± 2 °C", low=22896.65,
+                   high=27416.76, interval=[25394.25, 25938.31])  # fmt: skip
+    row = rows.verdict_row(1, one, {}, sensor)
+    assert row.result.startswith("25.39 kΩ to 25.94 kΩ")
+    assert row.also == "that is 2.22 °C to 2.69 °C"
+    assert row.demanded == "3 °C ± 2 °C, that is 22.9 kΩ to 27.42 kΩ"
+    assert rows.verdict_row(1, one, {}).also == ""
+
+
+def test_an_interval_that_was_not_found_is_no_value() -> None:
+    row = rows.verdict_row(1, interval(interval=None, value=None, u=None, k=None, verdict="inconclusive"), {})
+    assert (row.result, row.bar) == ("–", None)

@@ -41,7 +41,8 @@ def test_whatever_the_user_keeps_there_the_bytes_are_the_same(
 
 def test_nothing_but_the_two_files_is_left(reported: Path) -> None:
     assert sorted(path.name for path in reported.iterdir()) == [
-        "budgets.json", "findings.json", "judgement.json", "junit.xml", "report.html", "verdicts.json",
+        "budgets.json", "findings.json", "judgement.json", "junit.xml", "report.html", "specification.yaml",
+        "verdicts.json",
     ]  # fmt: skip
 
 

@@ -6,9 +6,14 @@ from types import SimpleNamespace
 import numpy as np
 import pytest
 
+from reports.cell_figure import draw_cell_map
+from reports.id_figure import draw_id_map
 from reports.inputs import Measurand
 from reports.source import Source
+from reports.temperature_figure import draw_temperature_map
 from reports.view import build
+from sequencer.model.curves import Curve
+from sequencer.model.specification import Specification
 
 
 @pytest.fixture
@@ -132,3 +137,32 @@ def test_no_null_anywhere_stops_a_report(
             pytest.fail(f"null at {path}: {fault!r}")
         tried += 1
     assert tried > 250
+
+
+def test_no_null_in_what_sweeps_and_walks_left_stops_a_report(
+    source: Callable[..., Source], breadth: dict, declared: Specification, sensor: Curve,
+) -> None:  # fmt: skip
+    """Every key of a point, a walk and an interval, null in all of them, then the page with its figures."""
+    tried = 0
+    drawings = {"points": (draw_id_map, draw_temperature_map), "walks": (draw_temperature_map, draw_cell_map)}
+    for part, name in (("findings", "points"), ("findings", "walks"), ("verdicts", "verdicts")):
+        for key in sorted({key for one in breadth[part][name] for key in one} - REQUIRED):
+            bare = [one | {key: None} for one in breadth[part][name]]
+            changed = breadth | {part: breadth[part] | {name: bare}}
+            view = build(source(**changed, series=lambda name: None, specification=declared, curve=sensor, cells=5))
+            maps = {draw_id_map: view.id_map, draw_temperature_map: view.temperature_map, draw_cell_map: view.cell_map}
+            drawn = [draw(maps[draw], width_in=4.3) for draw in drawings.get(name, ()) if maps[draw] is not None]
+            assert drawn or name == "verdicts" or key == "finding"
+            tried += 1
+    assert tried > 30
+
+
+def test_a_record_of_insertions_alone_has_no_charge_profile(source: Callable[..., Source], breadth: dict) -> None:
+    findings = breadth["findings"] | {"classification": None}
+    assert not build(source(**breadth | {"findings": findings, "events": []})).has_charge
+    assert build(source(**breadth)).has_charge
+
+
+def test_a_judgement_from_before_the_breadth_has_its_report(source: Callable[..., Source], content: dict) -> None:
+    view = build(source(**content))
+    assert (view.id_map, view.temperature_map, view.cell_map, view.elsewhere) == (None, None, None, ())

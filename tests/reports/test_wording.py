@@ -91,3 +91,22 @@ def test_tally_is_worst_first() -> None:
 )
 def test_limits(low: float | None, high: float | None, expected: object, text: str) -> None:
     assert wording.limits(low, high, expected, "V") == text
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "uncertainty", "unit", "words"),
+    [
+        (3980.0, 4020.0, 4.2, "Ω", "3.980 kΩ to 4.020 kΩ, U 4.2 Ω"),
+        (4.2404, 4.2504, 0.0022, "V", "4.240 V to 4.250 V, U 2.2 mV"),  # 4.2504 - 4.2404 is a hair below 0.01
+        (1.0, 1.0, None, "V", "1 V to 1 V"),
+        (-1e308, 1e308, 1.0, "Ω", None),
+    ],
+)
+def test_brackets(low: float, high: float, uncertainty: float | None, unit: str, words: str | None) -> None:
+    told = wording.bracket(low, high, uncertainty, unit)
+    assert words is None or told == words
+
+
+def test_spans_of_temperature() -> None:
+    assert wording.celsius(2.219, 2.688) == "2.22 °C to 2.69 °C"
+    assert wording.celsius(-1.04, 3.96) == "-1.0 °C to 4.0 °C"
