@@ -46,9 +46,20 @@ class Rehearsed:
 def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
     """Run a procedure in process: rehearse(spec="lantern", charger={"ends": "false"}, bench={"node": ...}, ...).
 
-    `charger`, `bench` and `files` are changes: a key's line in the charger file is replaced; texts in the bench file
-    are replaced; whole files (specification, pack, procedure) may be given by path.
+    The mains are the charger's only contact, and it reads neither ID nor thermistor nor cells. `charger`, `bench` and
+    `spec_text` are changes: a key's line in the charger file is replaced; texts in the bench file and in the shipped
+    specification are replaced. Whole files (specification, pack, procedure) may be given by path.
     """
+    return _rehearsals(tmp_path, "virtual-mains-in-process", "-power")
+
+
+@pytest.fixture
+def rehearse_full(tmp_path: Path) -> Callable[..., Rehearsed]:
+    """As `rehearse`, with all of the pack's contacts, and chargers that read them."""
+    return _rehearsals(tmp_path, "virtual-in-process", "")
+
+
+def _rehearsals(tmp_path: Path, usual_bench: str, charger_kind: str) -> Callable[..., Rehearsed]:
     from drivers.open_bench import open_bench
     from sequencer.cli.access import access_to, charger_for
     from sequencer.engine.inputs import FOLDERS, Asked, gather
@@ -58,6 +69,18 @@ def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
 
     count = 0
 
+    def written(kind: str, name: str, changes: dict[str, str]) -> str:
+        """A shipped file with texts replaced, as a path; the name itself where nothing is."""
+        if not changes:
+            return name
+        text = (FOLDERS[kind] / f"{name}.yaml").read_text("utf-8")
+        for old, new in changes.items():
+            assert old in text, old
+            text = text.replace(old, new)
+        path = tmp_path / f"{kind}-{count}.yaml"
+        path.write_text(text, "utf-8")
+        return str(path)
+
     def rehearsing(
         procedure: str = "charge-profile",
         *,
@@ -65,32 +88,29 @@ def rehearse(tmp_path: Path) -> Callable[..., Rehearsed]:
         pack: str | None = None,
         charger: dict[str, str] | None = None,
         bench: dict[str, str] | None = None,
+        on: str = usual_bench,
+        spec_text: dict[str, str] | None = None,
         seed: int = 1,
         changes: dict[str, str] | None = None,
         stop: StopFlag | None = None,
         watching: Watching | None = None,
+        opened: Callable[[Any], None] = lambda bench: None,
         **options: Any,
     ) -> Rehearsed:
         nonlocal count
         count += 1
-        bench_text = (FOLDERS["bench"] / "virtual-mains-in-process.yaml").read_text("utf-8")
-        for old, new in (bench or {}).items():
-            assert old in bench_text, old
-            bench_text = bench_text.replace(old, new)
-        bench_path = tmp_path / f"bench-{count}.yaml"
-        bench_path.write_text(bench_text, "utf-8")
         charger_path = tmp_path / f"charger-{count}.yaml"
-        charger_path.write_text(changed_charger(f"{Path(spec).stem}-power", charger or {}), "utf-8")
-        inputs = gather(Asked(procedure, spec, pack, str(bench_path), changes or {}, seed))
+        charger_path.write_text(changed_charger(f"{Path(spec).stem}{charger_kind}", charger or {}), "utf-8")
+        specification = written("specification", spec, spec_text or {})
+        inputs = gather(Asked(procedure, specification, pack, written("bench", on, bench or {}), changes or {}, seed))
         record = tmp_path / f"record-{count}"
         with access_to(inputs.bench, charger_for(inputs.bench, str(charger_path), spec), seed) as access:
-            opened = open_bench(inputs.bench, access)
+            links = open_bench(inputs.bench, access)
             try:
-                ended = run(
-                    inputs, opened, Options(record, seed, **options), stop or StopFlag(), watching or Watching()
-                )
+                opened(links)
+                ended = run(inputs, links, Options(record, seed, **options), stop or StopFlag(), watching or Watching())
             finally:
-                opened.close()
+                links.close()
         return Rehearsed(
             record, ended, judge(record, Rejudging(), "2026-01-01T00:00:00.000Z") if ended.sealed else None
         )
