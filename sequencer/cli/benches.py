@@ -89,7 +89,7 @@ def serve_command(bench: str, charger: str, seed: int, port: int) -> None:
     from drivers.virtual.plan import plan_of
     from drivers.virtual.remote import VirtualServer
 
-    ports = None if port == 0 else {name: port + number for number, (_, name) in enumerate(file.bench.wired())}
+    ports = None if port == 0 else {name: port + number for number, name in enumerate(file.bench.used())}
     server = VirtualServer.launch(plan_of(file.bench, found.model), seed, wall=True, ports=ports)
     try:
         for name, address in server.addresses.items():
