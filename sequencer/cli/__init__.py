@@ -110,6 +110,25 @@ def classify(
     classify_command(log, json, plot, columns)
 
 
+@app.command("assay")
+@answers
+def assay(
+    procedure: Annotated[str, typer.Argument(help="Procedure: path, or bare name of one that ships.")],
+    spec: Annotated[
+        list[str] | None, typer.Option(help="Specification with a charger of its name; default: all that ship.")
+    ] = None,
+    defects: Annotated[str, typer.Option(metavar="all|NAME,...", help="Defects to try.")] = "all",
+    seeds: Annotated[int, typer.Option(min=1, help="How many seeds: sizes, instruments, chargers.")] = 1,
+    seed: Annotated[int, typer.Option(min=0, help="The first of them.")] = 1,
+    keep: Annotated[Path | None, typer.Option(help="Folder to keep the records in; new or empty.")] = None,
+    json: Annotated[bool, typer.Option("--json", help="Print one JSON document.")] = False,
+) -> None:
+    """Try a procedure on virtual chargers, sound ones and wrong ones."""
+    from sequencer.cli.assaying import assay_command
+
+    assay_command(procedure, spec or [], defects, seeds, seed, keep, json)
+
+
 @bench_app.command("show")
 @answers
 def bench_show(

@@ -15,6 +15,7 @@ COMMANDS = [
     ("check",),
     ("judge",),
     ("classify",),
+    ("assay",),
     ("bench",),
     ("bench", "show"),
     ("bench", "safe"),
