@@ -96,6 +96,8 @@ def _traces(profile: Profile, upper: Axes, lower: Axes, factor_s: float) -> None
         axes.plot(trace.time_s / factor_s, trace.level, color=colour, linewidth=1.3, zorder=3)
         seen = trace.level[(trace.time_s >= profile.body[0]) & (trace.time_s <= profile.body[1])]
         seen = seen[np.isfinite(seen)]
+        if seen.size and not zero:
+            seen = seen[seen > 0.5 * seen.max()]  # while the contacts are open they show nothing of the pack
         if seen.size:
             low, high = float(seen.min()), float(seen.max())
             low = min(low, 0.0) if zero else low

@@ -267,10 +267,11 @@ def _findings_document(found: dict[str, Found], classification: dict[str, Any] |
     listed = [
         {
             "name": name,
-            "kind": "quantity" if one.budget else "state" if one.probability is None else "class",
+            "kind": _kind(one),
             "value": one.budget.value if one.budget else one.seen,
             "unit": one.budget.unit if one.budget else None,
             "u": one.budget.u if one.budget else one.probability,
+            "interval": None if one.interval is None else list(one.interval),
             "start_s": _number(one.start_s),
             "end_s": _number(one.end_s),
             "words": one.trouble or one.absent or one.none or one.words,
@@ -278,6 +279,12 @@ def _findings_document(found: dict[str, Found], classification: dict[str, Any] |
         for name, one in found.items()
     ]
     return {"classification": classification, "findings": listed}
+
+
+def _kind(found: Found) -> str:
+    if found.interval is not None:
+        return "interval"
+    return "quantity" if found.budget else "state" if found.probability is None else "class"
 
 
 def _judgement_document(

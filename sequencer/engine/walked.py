@@ -56,7 +56,8 @@ class Walks:
 
     def _leg(self, event: dict[str, Any]) -> Leg:
         window = self._current.within(event["start_s"], event["end_s"] + 0.01)
-        below = np.flatnonzero(window.value < STOPPED * (self._control_A or np.inf))
+        # Without a good control nobody knows what a stopped charge is: nothing is called stopped then.
+        below = np.flatnonzero(window.value < STOPPED * (self._control_A or 0.0))
         stop_s = None
         if below.size:
             first = int(below[0])

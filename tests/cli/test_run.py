@@ -42,7 +42,9 @@ def test_sockets_and_process_give_the_same_samples_byte_for_byte(packmime: Calla
 
 def test_another_seed_gives_other_samples(packmime: Callable, tmp_path: Path) -> None:
     for seed in (1, 2):
-        assert packmime("run", "charge-profile", "--seed", seed, "--out", tmp_path / str(seed), *IN_PROCESS).exit_code == 0
+        assert (
+            packmime("run", "charge-profile", "--seed", seed, "--out", tmp_path / str(seed), *IN_PROCESS).exit_code == 0
+        )
     assert (tmp_path / "1/data/samples.parquet").read_bytes() != (tmp_path / "2/data/samples.parquet").read_bytes()
 
 

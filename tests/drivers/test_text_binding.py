@@ -22,7 +22,9 @@ def test_a_sound_file_has_none() -> None:
 
 def test_all_faults_at_once() -> None:
     text = (
-        GOOD.replace("ballast: 100", "balast: 100").replace("node: 26 V", "node: 26 A").replace("name: virtual, mains the only contact\n", "")
+        GOOD.replace("ballast: 100", "balast: 100")
+        .replace("node: 26 V", "node: 26 A")
+        .replace("name: virtual, mains the only contact\n", "")
     )
     said = "\n".join(_faults(text))
     assert "unknown key 'balast'; did you mean 'ballast'?" in said

@@ -12,7 +12,11 @@ from sequencer.engine.inputs import FOLDERS, Asked, gather
 
 
 def faults_of(tmp_path: Path, spec: dict[str, str], pack: dict[str, str], bench: dict[str, str]) -> list[str]:
-    names = {"specification": ("sprayer", spec), "pack": ("sprayer", pack), "bench": ("virtual-mains-in-process", bench)}
+    names = {
+        "specification": ("sprayer", spec),
+        "pack": ("sprayer", pack),
+        "bench": ("virtual-mains-in-process", bench),
+    }
     paths = {}
     for kind, (name, changes) in names.items():
         text = (FOLDERS[kind] / f"{name}.yaml").read_text("utf-8")

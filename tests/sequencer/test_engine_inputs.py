@@ -192,7 +192,10 @@ def test_changes_that_cannot_be_read(texts: list[str], said: str) -> None:
 
 def test_every_file_that_was_read_goes_into_the_record_byte_for_byte(files: Files) -> None:
     documents = files.gather().documents()
-    assert {name.partition("/")[0] for name in documents} == {f"{kind}.yaml" for kind in NAMES} | {"dialects", "curve.yaml"}
+    assert {name.partition("/")[0] for name in documents} == {f"{kind}.yaml" for kind in NAMES} | {
+        "dialects",
+        "curve.yaml",
+    }
     for kind in NAMES:
         assert documents[f"{kind}.yaml"].content == files.path(kind).read_bytes()
 

@@ -34,7 +34,9 @@ def test_roles_and_notes() -> None:
 
 def test_from_the_empty_end_in_real_time() -> None:
     """The declared capacity over the declared current, and the taper (computed)."""
-    inputs = gather(Asked("charge-profile", bench="virtual-mains-in-process", changes={"start": "3.00 V", "compression": "1"}))
+    inputs = gather(
+        Asked("charge-profile", bench="virtual-mains-in-process", changes={"start": "3.00 V", "compression": "1"})
+    )
     plan = plan_of(inputs)
     # 2.5 Ah at 3 A take 3000 s; the taper lengthens it, the longest time of the step ends it.
     assert 3000.0 < plan.bench_s < 4 * 3600.0
