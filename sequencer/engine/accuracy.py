@@ -99,3 +99,11 @@ class Accuracy:
         )
         source = f"accuracy, dialect {dialect.name}"
         return self._stated(f"{name}, cell {number}", spans[0] if spans else None, value_V, 1.0, source)
+
+    def scanned(self, where: str, value_V: float, name: str) -> list[Contribution]:
+        """Of a scanner's reading at `where`, such as "taps.0.meter": the smallest range stated that holds it."""
+        _, _, dialect = self.file.at(where)
+        spans = sorted(
+            (span for span in dialect.accuracy.voltage if span.range >= value_V), key=lambda span: span.range
+        )
+        return self._stated(name, spans[0] if spans else None, value_V, 1.0, f"accuracy, dialect {dialect.name}")

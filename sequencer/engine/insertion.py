@@ -26,8 +26,11 @@ START_DELAYS = 3.0
 FIRST_CURRENT = 0.1  # of the lowest declared current: the charger has begun
 OPEN_V = 0.5  # an open B+ lets the charger's contacts stand so far from the node, or they do not follow it
 PROOF_V = 0.3
-SENSE_V = 0.02  # an open signal contact leaves no more than this on the bench's side
+PROOF_s = 1.0
+SENSE_V = 0.005  # an open signal contact leaves no more than this on the bench's side
 TAP_LIMIT_A = 0.1
+TAP_TOLERANCE_V = 0.05  # a tap supply that stands further from what it was set to does not play its cell
+TAP_SETTLE_s = 0.2
 MARGIN_s = 0.5  # watched longer than must be, for the first reading comes a scan late
 
 
@@ -97,6 +100,21 @@ def _prepare_signals(site: Site, situation: Situation, node_V: float) -> None:
     volts = tap_volts(node_V, site.pack.cells, situation.offsets_V)
     deeds += [tap.volts(value_V) for tap, value_V in zip(taps, volts, strict=True)]
     site.loop.set(*deeds, *(tap.on for tap in taps))
+    site.loop.observe(TAP_SETTLE_s)
+    _verify_taps(site, volts)
+
+
+def _verify_taps(site: Site, volts: list[float]) -> None:
+    """Raise InstrumentFault where a tap supply does not stand at what it was set to, read at its own terminals."""
+    taps = site.bench.signals.taps[: len(volts)]
+    for supply in {tap.supply.name: tap.supply for tap in taps}.values():
+        mine = [(number, tap) for number, tap in enumerate(taps, 1) if tap.supply.name == supply.name]
+        channels = [tap.channel for _, tap in mine]
+        read_V = supply.answers(site.bench.hands.ask(supply.ask("volts", channels)), "volts", channels)
+        for (number, tap), seen_V in zip(mine, read_V, strict=True):
+            if not abs(seen_V - volts[number - 1]) <= TAP_TOLERANCE_V:
+                told = f"plays cell {number} and reads {si(seen_V, 'V')}; it was set to {si(volts[number - 1], 'V')}"
+                raise InstrumentFault(f"{supply.name}.{tap.channel}", told)
 
 
 def set_resistor(site: Site, line: SignalLine, setpoint: Setpoint) -> None:
@@ -153,45 +171,59 @@ def watch(site: Site) -> Watched:
 
 
 def take_out(site: Site) -> None:
-    """Reverse: B+ first, then the signals; the dwell in which the charger forgets; every contact proven open."""
+    """Reverse: B+ first, then the signals; the dwell in which the charger forgets; every contact proven open.
+
+    B- opens last, half of the dwell later: with it open nothing else could be proven to be.
+    """
     loop, bench = site.loop, site.bench
+    clear_s = site.specification.dwell.clear
     if _mains_are_contact(site):
         loop.set(Deed(bench.mains, "off"))
         loop.stand_in, loop.follow = None, {}
-        loop.observe(2 * site.specification.dwell.clear)
+        loop.observe(2 * clear_s)
         _prove_quiet(site, bench.mains.name, "the mains are off")
         return
-    for contact in bench.signals.contacts:
+    *others, b_minus = bench.signals.contacts
+    for contact in others:
         loop.set(contact.open)
     loop.stand_in, loop.follow = None, {}
-    loop.observe(2 * site.specification.dwell.clear)
-    _prove_quiet(site, bench.signals.contacts[0].relay.name, "B+ is open")
+    loop.observe(clear_s)
+    _prove_quiet(site, _named(others[0]), "B+ is open")
     _prove_power_open(site)
     _prove_signals_open(site)
+    loop.set(b_minus.open)
+    loop.observe(clear_s)
 
 
 def _prove_quiet(site: Site, instrument: str, what: str) -> None:
     last = site.loop.last
     if last is None or not abs(last.current_A.value) < 0.05:
-        raise InstrumentFault(instrument, f"{what}, and the charger's current still flows")
+        raise InstrumentFault(instrument, f"{what}, and the charger's current still flows: a welded contact?")
 
 
 def _prove_power_open(site: Site) -> None:
-    """The charger's contacts stand away from the node, or do not follow it when it is moved."""
+    """The charger's contacts stand away from the node, or do not follow it when it is moved up."""
     loop, power = site.loop, site.bench.signals.power
     assert power is not None
     assert loop.last is not None
     if abs(loop.last.charger_V.value - loop.last.node_V.value) > OPEN_V:
         return
-    before_V, node_V = loop.last.charger_V.value, loop.last.node_V.value
+    node_V = loop.last.node_V.value
+    if node_V + 2 * PROOF_V > loop.guard.bounds.node_V:  # no room above: first down, then up again
+        node_V -= 2 * PROOF_V
+        loop.set(Deed(site.bench.supply, "voltage", node_V))
+        loop.observe(PROOF_s)
+    before_V = loop.last.charger_V.value
     loop.set(Deed(site.bench.supply, "voltage", node_V + PROOF_V))
-    loop.observe(1.0)
-    if loop.last.charger_V.value - before_V > PROOF_V / 2:
-        told = "B+ does not open: the charger's contacts follow the node; a welded contact?"
+    loop.observe(PROOF_s)
+    if not loop.last.charger_V.value - before_V < PROOF_V / 2:
+        told = "B+ does not open: the charger's contacts follow the node"
+        told += f"; a welded contact, this or pre-charge ({_named(power.precharge)})?"
         raise InstrumentFault(_named(power.b_plus), told)
 
 
 def _prove_signals_open(site: Site) -> None:
+    """The charger's excitation no longer reaches the bench's side. Nothing is proven of a resistor that is a short."""
     signals = site.bench.signals
     for line, name in ((signals.id, "ID"), (signals.thermistor, "thermistor")):
         if line is None:

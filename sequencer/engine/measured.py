@@ -9,11 +9,12 @@ from itertools import pairwise
 import numpy as np
 
 from drivers.text.si import si
-from sequencer.analysis.charge import ChargeReading, Plateau, current_agreement, measure_charge
+from sequencer.analysis.charge import ChargeReading, Plateau, measure_charge
 from sequencer.analysis.classify import Classification, classify
 from sequencer.analysis.estimates import Estimate, mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
+from sequencer.engine.agreement import currents_differ
 from sequencer.engine.evidence import Evidence, Window
 from sequencer.engine.found import Found
 from sequencer.engine.pace import FAST_s
@@ -36,19 +37,32 @@ TURN_WITHIN = 4.0  # times (settling + one fast scan); an unstable loop turns ev
 
 
 def measure_charges(evidence: Evidence) -> Found:
-    """Whether the charger charges a nominal pack."""
-    window = evidence.window("charges")
-    if window is None:
+    """Whether the charger charges a nominal pack: the first insertion tells; a later one must not contradict it.
+
+    A charger that charged once and no longer does may have latched a fault, or a contact no longer closes: that is no
+    answer to whether it charges.
+    """
+    windows = [event for event in evidence.events("finding-window") if event["finding"] == "charges"]
+    if not windows:
         return Found(absent="the run ended before it was seen")
-    current = evidence.trace("charger.current").within(window.start_s, window.end_s)
+    found = [_charges_in(evidence, window["start_s"], window["end_s"]) for window in windows]
+    later = next((one for one in found[1:] if one.seen != found[0].seen), None)
+    if later is None or found[0].seen != "charges":
+        return found[0]
+    told = later.trouble or f"no longer in a later insertion ({later.words}, at {later.end_s:.0f} s)"
+    return Found(trouble=f"it charged at first ({found[0].words}), and {told}")
+
+
+def _charges_in(evidence: Evidence, start_s: float, end_s: float) -> Found:
+    current = evidence.trace("charger.current").within(start_s, end_s)
     if current.value.size < FEWEST:
         return Found(trouble=f"only {current.value.size} readings")
     stage = evidence.specification.charge.stages[0].current
     lowest_A = stage.low if stage.low is not None and stage.low > 0 else (stage.high or 0.0)
     mean_A = float(np.mean(current.value))
     seen = "charges" if mean_A > 0.5 * lowest_A else "does not charge"
-    words = f"{si(mean_A, 'A')} over {window.end_s - window.start_s:.0f} s"
-    return Found(seen=seen, n=current.value.size, start_s=window.start_s, end_s=window.end_s, words=words)
+    words = f"{si(mean_A, 'A')} over {end_s - start_s:.0f} s"
+    return Found(seen=seen, n=current.value.size, start_s=start_s, end_s=end_s, words=words)
 
 
 class ChargeStep:
@@ -203,23 +217,7 @@ class ChargeStep:
         ]
 
     def _disagreement(self, start_s: float, end_s: float) -> str | None:
-        """Why the two ways to measure the current do not agree on a window; None where they do."""
-        shunt = self._current.within(start_s, end_s)
-        load_A = self._evidence.trace("load.current").at(shunt.time_s)
-        supply_A = self._evidence.trace("supply.current").at(shunt.time_s)
-        if np.count_nonzero(np.isfinite(load_A + supply_A)) < 2:
-            return None
-        gap = current_agreement(shunt.time_s, shunt.value, load_A, supply_A, start_s=start_s, end_s=end_s)
-        lines = [
-            *self._accuracy.current(float(np.mean(shunt.value))),
-            *self._accuracy.readback("node.load", float(np.nanmean(load_A))),
-            *self._accuracy.readback("node.supply", float(np.nanmean(supply_A))),
-        ]
-        allowed_A = Budget(gap.value, "A", (*lines, Contribution("readings", gap.u))).U
-        if abs(gap.value) <= allowed_A:
-            return None
-        told = f"shunt, and load minus supply, differ by {si(gap.value, 'A')}"
-        return f"{told}; their uncertainty is {si(allowed_A, 'A')}"
+        return currents_differ(self._evidence, self._accuracy, start_s, end_s)
 
     def _cutoff(self) -> Found:
         reading, limit = self.reading, self._evidence.specification.charge.cutoff

@@ -8,7 +8,8 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from sequencer.engine import fixture, insertion
+from sequencer.engine import insertion, points
+from sequencer.engine.insertion import Watched
 from sequencer.engine.scan import Scan
 from sequencer.engine.site import Site
 from sequencer.engine.standin import Events
@@ -19,14 +20,17 @@ ENDED = 0.05  # of the first plateau
 
 
 def insert(site: Site, step: Insert) -> bool:
-    """Put a nominal pack in and wait for the charger; returns whether it charges."""
-    loop = site.loop
-    mains_s = loop.now_s
-    insertion.place(site, site.nominal(step.cell_voltage, step.temperature))
-    watched = insertion.watch(site)
-    low_A, _ = site.nominal_current()
-    estimate = watched.seen.current
-    charges = watched.seen.kind == "charges" and estimate is not None and estimate.value > CHARGES * low_A
+    """Put a nominal pack in and wait for the charger; returns whether it charges.
+
+    A charger that has charged before may have latched a fault: it gets one cycle of its mains, as after a sweep.
+    """
+    loop, mains_s = site.loop, site.loop.now_s
+    before = site.control_A is not None and site.bench.signals.power is not None
+    watched = _put_in(site, step)
+    if before and not _charges(site, watched):
+        insertion.take_out(site)
+        points.cycle_mains(site)
+        watched = _put_in(site, step)
     start_s = watched.end_s - insertion.MEAN_s if watched.began else watched.start_s
     loop.event(
         "finding-window",
@@ -37,12 +41,29 @@ def insert(site: Site, step: Insert) -> bool:
         began=watched.began,
         watched_s=watched.watch_s,
     )
-    if charges and site.fixture_ohm is None:
-        assert site.settling_s is not None
-        site.fixture_ohm = fixture.measure_fixture(loop, site.zero_V, site.settling_s, site.pack, site.forced_delay)
-    if charges and site.control_A is None and estimate is not None:
-        site.control_A = estimate.value
+    charges = _charges(site, watched)
+    if charges:
+        _first_plateau(site, watched)
     return charges
+
+
+def _put_in(site: Site, step: Insert) -> Watched:
+    insertion.place(site, site.nominal(step.cell_voltage, step.temperature))
+    return insertion.watch(site)
+
+
+def _charges(site: Site, watched: Watched) -> bool:
+    low_A, _ = site.nominal_current()
+    estimate = watched.seen.current
+    return watched.seen.kind == "charges" and estimate is not None and estimate.value > CHARGES * low_A
+
+
+def _first_plateau(site: Site, watched: Watched) -> None:
+    """What is measured once: the fixture, and the current that every control is held against."""
+    points.measure_fixture_once(site, watched)
+    estimate = watched.seen.current
+    if site.control_A is None and estimate is not None:
+        site.control_A = estimate.value
 
 
 def charge(site: Site, step: FullCharge) -> str:

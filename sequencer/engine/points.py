@@ -2,7 +2,7 @@
 
 Chargers latch faults: after one refused point every later one could read "no charge". So each point that does not
 charge stands between two controls; if the one after it fails, the mains are cycled once, and if it fails again the
-point counts for nothing.
+point counts for nothing, and before the next one a nominal pack must be charged again, or the sweep ends there.
 """
 
 from __future__ import annotations
@@ -14,8 +14,16 @@ from sequencer.engine import fixture, insertion
 from sequencer.engine.insertion import Watched
 from sequencer.engine.site import Site, Situation
 
+LATCHED = (
+    "a nominal pack is no longer charged, though the mains were cycled: "
+    "a fault that the charger has latched for good, or a contact that no longer closes"
+)
 CONTROL_SHARE = 0.05  # a control charges within this of the first one
 MAINS_OFF_s = 5.0
+
+
+class NoControl(Exception):
+    """A nominal pack is no longer charged: nothing that follows could be told from a charger that is dead."""
 
 
 @dataclass(frozen=True)
@@ -25,16 +33,14 @@ class Shown:
     watched: Watched
     void: bool
 
-    @property
-    def label(self) -> str:
-        return "undecided" if self.void else self.watched.seen.label
-
 
 def show(site: Site, finding: str, situation: Situation, **what: object) -> Shown:
-    """Insert, watch, take out, control where it did not charge; written down as one event."""
+    """Insert, watch, take out, control where it did not charge; written down as one event. Raises NoControl."""
+    if not site.vouched and not controlled(site, situation.cell_V):
+        raise NoControl(LATCHED)
     insertion.place(site, situation)
     watched = insertion.watch(site)
-    _measure_fixture_once(site, watched)
+    measure_fixture_once(site, watched)
     insertion.take_out(site)
     void = not watched.began and not controlled(site, situation.cell_V)
     site.loop.event(
@@ -50,7 +56,7 @@ def show(site: Site, finding: str, situation: Situation, **what: object) -> Show
     return Shown(watched, void)
 
 
-def _measure_fixture_once(site: Site, watched: Watched) -> None:
+def measure_fixture_once(site: Site, watched: Watched) -> None:
     if watched.seen.kind != "charges" or site.fixture_ohm is not None:
         return
     assert site.settling_s is not None
@@ -69,9 +75,10 @@ def control(site: Site, cell_V: float) -> bool:
     """One insertion of a nominal pack."""
     insertion.place(site, site.nominal(cell_V))
     watched = insertion.watch(site)
-    _measure_fixture_once(site, watched)
+    measure_fixture_once(site, watched)
     good = is_good(site, watched)
     insertion.take_out(site)
+    site.vouched = good
     site.loop.event("control", start_s=round(watched.start_s, 3), end_s=round(watched.end_s, 3), good=good)
     return good
 
@@ -84,6 +91,12 @@ def is_good(site: Site, watched: Watched) -> bool:
     if site.control_A is None:
         site.control_A = estimate.value
     return abs(estimate.value - site.control_A) <= CONTROL_SHARE * site.control_A
+
+
+def give_up(site: Site, finding: str, why: str) -> str:
+    """Write down why what is left of a sweep or walk is not shown; returns it as the step's outcome."""
+    site.loop.event("given-up", finding=finding, why=why)
+    return why
 
 
 def cycle_mains(site: Site) -> None:

@@ -146,8 +146,9 @@ def _prepare(inputs: Inputs, loop: Loop, watching: Watching) -> None:
 def _steps(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> str:
     curve = None if inputs.curve is None else inputs.curve.model
     site = Site(loop, inputs.pack.model, inputs.specification.model, curve, options.forced_delay)
+    kept = _kept(inputs.procedure.model.steps, options.only)
     for number, step in enumerate(inputs.procedure.model.steps, 1):
-        if options.only and step.kind not in options.only and step.expect is None and step.kind != "remove":
+        if number not in kept:
             loop.event("step-left-out", step=number, does=step.kind)
             continue
         words = _words(step)
@@ -158,6 +159,19 @@ def _steps(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> 
         if outcome == "does not charge":
             return "the charger does not charge a nominal pack; nothing more can be shown of it"
     return "every step was carried out"
+
+
+def _kept(steps: tuple[Step, ...], only: tuple[str, ...]) -> set[int]:
+    """Numbers of the steps that are carried out, from 1: those asked for, and the pack put in and out around them."""
+    wanted = {
+        number
+        for number, step in enumerate(steps, 1)
+        if not only or step.kind in only or step.expect is not None or step.kind == "remove"
+    }
+    for number, step in enumerate(steps, 1):
+        if step.insert is not None and number + 1 in wanted and steps[number].kind == "charge":
+            wanted.add(number)
+    return wanted
 
 
 def _words(step: Step) -> str:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass
 
 from drivers.open_bench import OpenBench
 from sequencer.engine.loop import Loop
@@ -39,7 +39,7 @@ class Site:
     zero_V: float = 0.0
     control_A: float | None = None  # of the first control; later ones must charge within 5 % of it
     situation: Situation | None = None
-    points: int = field(default=0)
+    vouched: bool = True  # nothing was refused since a nominal pack was last charged, or all of it has its control
 
     @property
     def bench(self) -> OpenBench:
@@ -79,6 +79,3 @@ class Site:
         bands = [(band.current.low, band.current.high) for band in self.specification.id_bands]
         known = [(low, high) for low, high in bands if low is not None and high is not None and low > 0]
         return known or [self.nominal_current()]
-
-    def with_id(self, situation: Situation, ohm: Setpoint) -> Situation:
-        return replace(situation, id=ohm)

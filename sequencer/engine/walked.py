@@ -13,10 +13,14 @@ from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.evidence import Evidence, Trace
 from sequencer.engine.found import Found
-from sequencer.engine.swept import resistor_lines
+from sequencer.engine.insertion import MEAN_s
+from sequencer.engine.swept import ended_early, given_up, resistor_lines
+from sequencer.engine.targets import ends
+from sequencer.engine.walks import GOES_ON, STOPPED
 
-STOPPED = 0.05  # of the control's current
-GOES_ON = 0.5
+TAP_LEADS_ohm = 1.0  # between a tap's channel and the charger's pin, beyond the shunt: common practice, no source
+FOLLOWS_V = 0.05  # a cell that reads further from what it was set to was not raised as the procedure says
+BEFORE_s = 3.5  # looked back so far for what a cell stood at before it was raised
 
 
 @dataclass(frozen=True)
@@ -88,16 +92,21 @@ class Walks:
 
     def temperature(self, side: str) -> Found:
         """The limit for going on, in ohms."""
-        legs = self.legs(f"temperature.{side}", "out")
-        if self._control_A is None or not legs:
-            return Found(absent="it was not walked")
+        finding = f"temperature.{side}"
+        probe, approach, out = (self.legs(finding, way) for way in ("probe", "approach", "out"))
+        if self._control_A is None or not probe:
+            return self._not_walked("walk", "it was not walked")
+        if probe[0].stop_s is not None:
+            told = f"the charge stopped when the thermistor was moved by its smallest step, to {_celsius(probe[0])}"
+            return Found(trouble=f"{told}: the resistor's own switching stops it, or anything would")
+        legs = [*probe, *approach, *out]
         stopped = next((leg for leg in legs if leg.stop_s is not None), None)
         if stopped is None:
-            return Found(trouble=f"the charge went on as far as {legs[-1].event['celsius']:.2f} °C")
+            return self._never_stopped(side, legs[-1])
         index = legs.index(stopped)
-        if index == 0:
-            return Found(trouble=f"the charge stopped at {stopped.event['celsius']:.2f} °C, the first step of the walk")
-        last = legs[index - 1]
+        # On the way to the first step a setting stands for one response time only: that it let the charge go on
+        # says nothing, and 25 °C is the last that is known to.
+        last = legs[index - 1] if index > len(probe) + len(approach) else probe[0]
         low, high = sorted((float(last.event["ohm"]), float(stopped.event["ohm"])))
         lines = resistor_lines(self._accuracy, "thermistor.resistor", (low + high) / 2)
         return Found(
@@ -106,80 +115,155 @@ class Walks:
             n=len(legs),
             start_s=legs[0].start_s,
             end_s=stopped.end_s,
-            words=f"{_between(last, stopped)}; {self._back(side)}",
+            words=f"charging at {_celsius(last)}, stopped at {_celsius(stopped)}; {self._back(side)}",
+            trouble=self._no_control_after(stopped.end_s, "walk"),
         )
+
+    def _never_stopped(self, side: str, last: Leg) -> Found:
+        """A fail where the walk came to its end, which lies beyond all that is declared."""
+        window = self._evidence.specification.temperature
+        step = next((s.sweep_temperature for s in self._evidence.procedure.steps if s.sweep_temperature), None)
+        assert window is not None
+        assert window.run is not None
+        assert step is not None
+        cold = side.endswith("low")
+        _, outer_C = ends(window.run[0 if cold else 1], cold, step)
+        if last.event["way"] != "out" or abs(last.event["celsius"] - outer_C) > 1e-3:
+            return self._not_walked("walk", f"still charging at {_celsius(last)}, when the walk ended")
+        return Found(none=f"the charge went on as far as {_celsius(last)}", end_s=last.end_s, start_s=last.start_s)
+
+    def _not_walked(self, finding: str, what: str) -> Found:
+        why = given_up(self._evidence, finding)
+        return Found(absent=what + ended_early(self._evidence)) if why is None else Found(trouble=f"{what}: {why}")
+
+    def _no_control_after(self, end_s: float, finding: str) -> str | None:
+        """Why a stop counts for nothing: of the two controls after it none was good. None where one was."""
+        after = [event for event in self._evidence.events("control") if event["start_s"] >= end_s][:2]
+        if any(event["good"] for event in after):
+            return None
+        why = given_up(self._evidence, finding) if len(after) == 2 else None
+        return f"no good control after the charge had stopped: {why or 'the run ended before it'}"
 
     def _back(self, side: str) -> str:
         back = self.legs(f"temperature.{side}", "back")
         resumed = next((leg for leg in back if self._goes_on(leg)), None)
         if resumed is not None:
-            return f"goes on again at {resumed.event['celsius']:.2f} °C"
+            return f"goes on again at {_celsius(resumed)}"
         return "did not go on by itself on the way back" if back else "was not walked back"
 
     def _goes_on(self, leg: Leg) -> bool:
-        window = self._current.within(leg.start_s, leg.end_s + 0.01)
-        return bool(np.any(window.value > GOES_ON * (self._control_A or np.inf)))
+        """Whether the charge went on in a leg and stayed: the mean of its last seconds, or all of a shorter leg."""
+        window = self._current.within(max(leg.end_s - MEAN_s, leg.start_s), leg.end_s + 0.01)
+        above = window.value > GOES_ON * (self._control_A or np.inf)
+        if leg.event["finding"] != "tap_trip":  # a leg of a thermistor walk ends with the first reading above
+            return bool(np.any(above))
+        return bool(window.value.size) and float(np.mean(window.value)) > GOES_ON * (self._control_A or np.inf)
 
     # cells
 
     def cell(self, cell: int) -> dict[str, Found]:
         """Trip voltage, stop time and release of one cell, by the last part of their names."""
-        legs = self.legs("tap_trip", "out", cell)
+        approach, out = self.legs("tap_trip", "approach", cell), self.legs("tap_trip", "out", cell)
+        legs = [*approach, *out]
         if self._control_A is None or not legs:
-            absent = Found(absent="the cell was not raised")
+            absent = self._not_walked("tap_trip", "the cell was not raised")
             return {"voltage": absent, "stop_time": absent, "release": absent}
         stopped = next((leg for leg in legs if leg.stop_s is not None), None)
         if stopped is None:
-            highest = self.cell_V(cell, legs[-1])
-            none = Found(none=f"the charge went on with the cell at {highest:.3f} V", end_s=legs[-1].end_s)
-            return {"voltage": none, "stop_time": none, "release": Found(trouble="the charge had not stopped")}
-        index = legs.index(stopped)
+            none = self._cell_never_stopped(cell, legs[-1])
+            release = none if none.none is None else Found(trouble="the charge had not stopped")
+            return {"voltage": none, "stop_time": none, "release": release}
+        trouble = self._no_control_after(stopped.end_s, "tap_trip")
+        if trouble is not None:
+            lost = Found(trouble=trouble)
+            return {"voltage": lost, "stop_time": lost, "release": lost}
+        early = legs.index(stopped) <= len(approach)
         return {
-            "voltage": self._trip(cell, legs, index),
-            "stop_time": self._stop_time(stopped),
+            "voltage": self._trip(cell, legs, stopped, early),
+            "stop_time": self._stop_time(stopped, early),
             "release": self._release(cell),
         }
 
-    def _trip(self, cell: int, legs: list[Leg], index: int) -> Found:
-        stopped = legs[index]
-        if index == 0:
-            return Found(trouble=f"the charge stopped at {stopped.event['cell_V']:.3f} V, the first step")
-        low_V, high_V = sorted((self.cell_V(cell, legs[index - 1]), self.cell_V(cell, stopped)))
+    def _cell_never_stopped(self, cell: int, last: Leg) -> Found:
+        """A fail where the cell was raised to the procedure's end."""
+        step = next((s.raise_cell for s in self._evidence.procedure.steps if s.raise_cell is not None), None)
+        assert step is not None
+        highest_V = self.cell_V(cell, last)
+        if last.event["way"] != "out" or abs(last.event["cell_V"] - step.end) > 1e-4:
+            return self._not_walked("tap_trip", f"still charging at {last.event['cell_V']:.3f} V, when it ended")
+        if not abs(highest_V - step.end) <= FOLLOWS_V:
+            return Found(trouble=f"the cell was set to {step.end:.3f} V and reads {highest_V:.3f} V")
+        return Found(none=f"the charge went on with the cell at {highest_V:.3f} V", end_s=last.end_s)
+
+    def _trip(self, cell: int, legs: list[Leg], stopped: Leg, early: bool) -> Found:
+        """Between the last step at which it charged and the first at which it stopped; early: from the nominal cell."""
+        last = self._before(legs[0]) if early else legs[legs.index(stopped) - 1]
+        low_V, high_V = sorted((self.cell_V(cell, last), self.cell_V(cell, stopped)))
         if not np.isfinite(low_V + high_V):
             return Found(trouble="the cell's voltage was not read at the step before or at the trip")
         return Found(
-            end_budget(EdgeInterval(low_V, high_V, "", ""), self._cell_lines(cell, high_V), unit="V"),
+            end_budget(EdgeInterval(low_V, high_V, "", ""), self._cell_lines(cell, high_V, stopped), unit="V"),
             interval=(low_V, high_V),
-            n=index + 1,
+            n=legs.index(stopped) + 1,
             start_s=legs[0].start_s,
             end_s=stopped.end_s,
             words=f"charging at {low_V:.4f} V, stopped at {high_V:.4f} V",
         )
 
-    def cell_V(self, cell: int, leg: Leg) -> float:
-        """Voltage of a cell in a leg: its tap supply's meter; of the top cell what is left to the contacts; or nan.
+    @staticmethod
+    def _before(first: Leg) -> Leg:
+        """The time in which a cell had not been raised yet."""
+        return Leg(first.event, first.start_s - BEFORE_s, first.start_s - 0.01, None)
 
-        Read until the charge stops: afterwards the contacts no longer carry the drop over the pack's resistance.
+    def cell_V(self, cell: int, leg: Leg) -> float:
+        """Voltage of a cell in a leg at the charger's pins; of the top cell what is left to the contacts; or nan.
+
+        The tap supply's meter less what drops over its shunt, by the scanner. Read until the charge stops: afterwards
+        the contacts no longer carry the drop over the pack's resistance.
         """
         cells = self._evidence.pack.cells
-        until_s = leg.stop_s[1] if leg.stop_s is not None else leg.end_s
         if cell < cells:
-            return _mean(self._evidence.trace(f"tap{cell}.voltage").within(leg.start_s, leg.end_s + 0.01))
+            return self._channel_V(cell, leg) - self._drop_V(cell, leg) + self._drop_V(cell - 1, leg)
+        until_s = leg.stop_s[1] if leg.stop_s is not None else leg.end_s
         top_V = _mean(self._evidence.trace("charger.voltage").within(leg.start_s + 0.15, until_s - 1e-6))
-        below = [self._evidence.trace(f"tap{number}.voltage") for number in range(1, cells)]
-        return top_V - sum(_mean(trace.within(leg.start_s, leg.end_s + 0.01)) for trace in below)
+        below_V = sum(self._channel_V(number, leg) for number in range(1, cells))
+        return top_V - (below_V - self._drop_V(cells - 1, leg))
 
-    def _cell_lines(self, cell: int, cell_V: float) -> list[Contribution]:
+    def _channel_V(self, number: int, leg: Leg) -> float:
+        return _mean(self._evidence.trace(f"tap{number}.voltage").within(leg.start_s, leg.end_s + 0.01))
+
+    def _drop_V(self, number: int, leg: Leg) -> float:
+        """What the current of a tap drops over its shunt; 0 at B-, and where no scanner says."""
+        if number == 0:
+            return 0.0
+        shunt_ohm = self._evidence.bench.bench.wiring.taps[number - 1].shunt_ohm
+        current_A = _mean(self._evidence.trace(f"tap{number}.current").within(leg.start_s, leg.end_s + 0.01))
+        return current_A * shunt_ohm if np.isfinite(current_A) else 0.0
+
+    def _cell_lines(self, cell: int, cell_V: float, leg: Leg) -> list[Contribution]:
         cells = self._evidence.pack.cells
         if cell < cells:
-            return self._accuracy.tap(cell, cell_V)
+            below = self._drop_lines(cell - 1, leg) if cell > 1 else []
+            return [*self._accuracy.tap(cell, cell_V), *self._drop_lines(cell, leg), *below]
         lines = self._accuracy.volts("node.charger_voltage", cell_V * cells)
         for number in range(1, cells):
             lines += self._accuracy.tap(number, cell_V)
-        return lines
+        return lines + self._drop_lines(cells - 1, leg)
 
-    def _stop_time(self, stopped: Leg) -> Found:
+    def _drop_lines(self, number: int, leg: Leg) -> list[Contribution]:
+        """Of what drops between a tap's channel and the charger's pin: the shunt by scanner, the rest as a bound."""
+        shunt_ohm = self._evidence.bench.bench.wiring.taps[number - 1].shunt_ohm
+        drop_V = abs(self._drop_V(number, leg))
+        leads = Contribution.from_half_width(
+            f"tap {number}, leads and source", drop_V / shunt_ohm * TAP_LEADS_ohm, source="common practice, no source"
+        )
+        return [*self._accuracy.scanned(f"taps.{number - 1}.meter", drop_V, f"tap {number}, shunt"), leads]
+
+    @staticmethod
+    def _stop_time(stopped: Leg, early: bool) -> Found:
         assert stopped.stop_s is not None
+        if early:
+            return Found(trouble="the charge stopped on the way to the first step; which move did it cannot be told")
         before_s, after_s = stopped.stop_s
         middle_s, half_s = (before_s + after_s) / 2 - stopped.start_s, (after_s - before_s) / 2
         bracket = Contribution.from_half_width("spacing of the readings", half_s, "rectangular", source="fast pace")
@@ -198,8 +282,8 @@ class Walks:
         return Found(seen=seen, n=1, start_s=back[0].start_s, end_s=back[0].end_s, words=words)
 
 
-def _between(last: Leg, stopped: Leg) -> str:
-    return f"charging at {last.event['celsius']:.2f} °C, stopped at {stopped.event['celsius']:.2f} °C"
+def _celsius(leg: Leg) -> str:
+    return f"{leg.event['celsius']:.2f} °C"
 
 
 def _mean(trace: Trace) -> float:
@@ -212,15 +296,15 @@ def _finite(value: float) -> float | None:
 
 def walk_findings(evidence: Evidence, accuracy: Accuracy) -> dict[str, Found]:
     """Every finding of the walks in a record, by limit name."""
-    if not evidence.events("walk"):
+    if not (evidence.events("walk") or given_up(evidence, "walk") or given_up(evidence, "tap_trip")):
         return {}
     walks = Walks(evidence, accuracy)
     found: dict[str, Found] = {}
     made = {event["finding"] for event in evidence.events("walk")}
-    for side in ("run_low", "run_high"):
-        if f"temperature.{side}" in made:
-            found[f"temperature.{side}"] = walks.temperature(side)
-    if "tap_trip" in made:
+    window = evidence.specification.temperature
+    if (made & {"temperature.run_low", "temperature.run_high"} or given_up(evidence, "walk")) and window and window.run:
+        found |= {f"temperature.{side}": walks.temperature(side) for side in ("run_low", "run_high")}
+    if "tap_trip" in made or given_up(evidence, "tap_trip"):
         for cell in range(1, evidence.pack.cells + 1):
             found |= {f"tap_trip.cell{cell}.{what}": one for what, one in walks.cell(cell).items()}
     return found

@@ -1,30 +1,40 @@
-"""Walks while charging: the thermistor moved outward, one cell raised, step by step until the charge stops."""
+"""Walks while charging: the thermistor moved outward, one cell raised, step by step until the charge stops.
+
+The way to where the search begins is walked too, in larger and shorter steps: no pack warms by 20 K at once, and a
+charge that stops on that way has told something.
+"""
 
 from __future__ import annotations
 
+import math
+
 from sequencer.engine import insertion
 from sequencer.engine.insertion import set_resistor
-from sequencer.engine.points import controlled, cycle_mains, is_good
-from sequencer.engine.scan import Scan
-from sequencer.engine.site import Site
-from sequencer.engine.sweeps import ends
+from sequencer.engine.points import LATCHED, controlled, cycle_mains, give_up, is_good
+from sequencer.engine.site import NOMINAL_C, Site
+from sequencer.engine.targets import ends
 from sequencer.model.steps import RaiseCell, SweepTemperature
 
 STOPPED = 0.05  # of the control's current
+GOES_ON = 0.5  # of the control's current
 DWELLS = 3.0  # response times watched at each step
 RELEASE_STEP_K = 1.0
 RELEASE_SPAN_K = 12.0
+APPROACH_K = 2.5  # per move on the way from 25 °C to the first step, each watched for one response time
 APPROACH_V = 0.05  # per move on the way from the nominal cell voltage to the first step
+APPROACH_s = 0.3
 
 
-def _stopped(site: Site) -> float:
-    return STOPPED * (site.control_A or 0.0)
-
-
-def _dwell(site: Site, dwell_s: float) -> bool:
+def _stops(site: Site, dwell_s: float) -> bool:
     """Watch one step; returns whether the charge stopped."""
-    floor_A = _stopped(site)
+    floor_A = STOPPED * (site.control_A or 0.0)
     return site.loop.observe(dwell_s, lambda scan: scan.current_A.good and scan.current_A.value < floor_A)
+
+
+def _goes_on(site: Site, dwell_s: float) -> bool:
+    """Watch a charge that has stopped; returns whether it goes on."""
+    charging_A = GOES_ON * (site.control_A or 0.0)
+    return site.loop.observe(dwell_s, lambda scan: scan.current_A.good and scan.current_A.value > charging_A)
 
 
 def begin(site: Site, cell_V: float) -> bool:
@@ -48,37 +58,48 @@ def walk_temperatures(site: Site, step: SweepTemperature) -> str:
     assert window is not None
     for side, band in zip(("run_low", "run_high"), window.run or (), strict=False):
         if not begin(site, step.cell_voltage):
-            return "no good control before a walk; the rest was not walked"
-        inner_C, outer_C = ends(band, side.endswith("low"), step)
-        _walk_out(site, step, side, inner_C, outer_C)
+            return give_up(site, "walk", LATCHED)
+        _walk_out(site, step, side, *ends(band, side.endswith("low"), step))
         insertion.take_out(site)
-    good = controlled(site, step.cell_voltage)
-    return "walked" if good else "the control after the walk failed"
+    return "walked" if controlled(site, step.cell_voltage) else give_up(site, "walk", LATCHED)
 
 
 def _walk_out(site: Site, step: SweepTemperature, side: str, inner_C: float, outer_C: float) -> None:
     towards = -1.0 if outer_C < inner_C else 1.0
-    count = round(abs(outer_C - inner_C) / step.resolution)
-    dwell_s = DWELLS * site.specification.dwell.response
-    for number in range(count + 1):
-        celsius = inner_C + towards * number * step.resolution
-        if _temperature_step(site, side, celsius, dwell_s, "out"):
+    response_s = site.specification.dwell.response
+    # The smallest step first, far inside: what stops a charge there is not the temperature.
+    if _temperature_step(site, side, NOMINAL_C + towards * step.resolution, DWELLS * response_s, "probe"):
+        return
+    for celsius in approach_C(inner_C, towards):
+        if _temperature_step(site, side, celsius, response_s, "approach"):
+            _walk_back(site, side, celsius, -towards)
+            return
+    for number in range(out_steps(inner_C, outer_C, step.resolution) + 1):
+        celsius = inner_C + towards * min(number * step.resolution, abs(outer_C - inner_C))
+        if _temperature_step(site, side, celsius, DWELLS * response_s, "out"):
             _walk_back(site, side, celsius, -towards)
             return
 
 
+def approach_C(inner_C: float, towards: float) -> list[float]:
+    """Temperatures on the way from 25 °C to where the search begins."""
+    count = int(max(0.0, towards * (inner_C - NOMINAL_C) - 1e-9) / APPROACH_K)
+    return [NOMINAL_C + towards * number * APPROACH_K for number in range(1, count + 1)]
+
+
+def out_steps(inner: float, outer: float, by: float) -> int:
+    """How many steps lead from the first setting of a search to its last; the last step may be a smaller one."""
+    return math.ceil(abs(outer - inner) / by - 1e-6)
+
+
 def _temperature_step(site: Site, side: str, celsius: float, dwell_s: float, way: str) -> bool:
-    """One setting of the thermistor while charging; returns whether the charge stopped (out) or went on (back)."""
+    """One setting of the thermistor while charging; returns whether the charge stopped (back: went on)."""
     line = site.bench.signals.thermistor
     assert line is not None
     begun_s = site.loop.now_s
     ohm = site.ohm_at(celsius)
     set_resistor(site, line, ohm)
-    if way == "out":
-        came = _dwell(site, dwell_s)
-    else:
-        charging_A = 0.5 * (site.control_A or 0.0)
-        came = site.loop.observe(dwell_s, lambda scan: scan.current_A.good and scan.current_A.value > charging_A)
+    came = _goes_on(site, dwell_s) if way == "back" else _stops(site, dwell_s)
     site.loop.event(
         "walk",
         finding=f"temperature.{side}",
@@ -92,11 +113,12 @@ def _temperature_step(site: Site, side: str, celsius: float, dwell_s: float, way
     return came
 
 
-def _walk_back(site: Site, side: str, celsius: float, towards: float) -> None:
-    """Back inward in steps of 1 K until the charge goes on, for at most RELEASE_SPAN_K."""
+def _walk_back(site: Site, side: str, celsius: float, inward: float) -> None:
+    """Back inward in steps of 1 K until the charge goes on, for at most RELEASE_SPAN_K and not beyond 25 °C."""
     dwell_s = site.specification.dwell.start_delay + DWELLS * site.specification.dwell.response
     for number in range(1, round(RELEASE_SPAN_K / RELEASE_STEP_K) + 1):
-        if _temperature_step(site, side, celsius + towards * number * RELEASE_STEP_K, dwell_s, "back"):
+        back_C = celsius + inward * number * RELEASE_STEP_K
+        if inward * (back_C - NOMINAL_C) > 0 or _temperature_step(site, side, back_C, dwell_s, "back"):
             return
 
 
@@ -104,25 +126,23 @@ def raise_cells(site: Site, step: RaiseCell) -> str:
     """Each cell in turn; the pack's voltage stays where it is."""
     for cell in range(1, site.pack.cells + 1):
         if not begin(site, step.cell_voltage):
-            site.loop.event("note", text=f"no good control before cell {cell}; the rest was not raised")
-            return "no good control before a cell; the rest was not raised"
+            return give_up(site, "tap_trip", LATCHED)
         _raise_one(site, step, cell)
         insertion.take_out(site)
-    return "raised" if controlled(site, step.cell_voltage) else "the control after the last cell failed"
+    return "raised" if controlled(site, step.cell_voltage) else give_up(site, "tap_trip", LATCHED)
 
 
 def _raise_one(site: Site, step: RaiseCell, cell: int) -> None:
-    loop = site.loop
-    assert loop.last is not None
-    mean_V = loop.last.charger_V.value / site.pack.cells
-    rise_V = 0.0
-    while mean_V + rise_V + APPROACH_V < step.begin:
-        rise_V += APPROACH_V
-        _set_offsets(site, cell, rise_V)
-        loop.observe(0.3)
-    count = round((step.end - step.begin) / step.by)
-    for number in range(count + 1):
-        if _cell_step(site, cell, step.begin + number * step.by):
+    assert site.loop.last is not None
+    cell_V = site.loop.last.charger_V.value / site.pack.cells + APPROACH_V
+    while cell_V < step.begin:
+        if _cell_step(site, cell, cell_V, APPROACH_s, "approach"):
+            _release(site, cell)
+            return
+        cell_V += APPROACH_V
+    for number in range(out_steps(step.begin, step.end, step.by) + 1):
+        raised_V = min(step.begin + number * step.by, step.end)
+        if _cell_step(site, cell, raised_V, DWELLS * site.specification.dwell.response, "out"):
             _release(site, cell)
             return
 
@@ -137,7 +157,7 @@ def _set_offsets(site: Site, cell: int, rise_V: float) -> None:
     site.loop.look_closely()
 
 
-def _cell_step(site: Site, cell: int, cell_V: float) -> bool:
+def _cell_step(site: Site, cell: int, cell_V: float, dwell_s: float, way: str) -> bool:
     """One step of one cell; returns whether the charge stopped."""
     loop = site.loop
     assert loop.last is not None
@@ -146,11 +166,11 @@ def _cell_step(site: Site, cell: int, cell_V: float) -> bool:
     mean_V = loop.last.charger_V.value / site.pack.cells
     _set_offsets(site, cell, cell_V - mean_V)
     loop.look_around_next()
-    came = _dwell(site, DWELLS * site.specification.dwell.response)
+    came = _stops(site, dwell_s)
     loop.event(
         "walk",
         finding="tap_trip",
-        way="out",
+        way=way,
         cell=cell,
         cell_V=round(cell_V, 5),
         start_s=round(begun_s, 3),
@@ -166,14 +186,9 @@ def _release(site: Site, cell: int) -> None:
     begun_s = loop.now_s
     _set_offsets(site, cell, 0.0)
     watch_s = max(insertion.START_DELAYS * site.specification.dwell.start_delay, insertion.SHORTEST_WATCH_s)
-    charging_A = 0.5 * (site.control_A or 0.0)
-
-    def resumed(scan: Scan) -> bool:
-        return scan.current_A.good and scan.current_A.value > charging_A
-
-    came = loop.observe(watch_s, resumed)
+    came = _goes_on(site, watch_s)
     if came:
-        loop.observe(insertion.MEAN_s)
+        loop.observe(insertion.SETTLE_s + insertion.MEAN_s)
     loop.event(
         "walk",
         finding="tap_trip",

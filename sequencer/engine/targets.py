@@ -1,0 +1,84 @@
+"""What a sweep must show, worked out from the specification: for the sweep, its prediction and its judging. Pure."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+from drivers.text.measures import Band
+from sequencer.analysis.classes import Seen
+from sequencer.model.signals import IdBand
+from sequencer.model.specification import Specification
+from sequencer.model.steps import SweepTemperature
+
+SideName = Literal["lower", "upper"]
+
+
+@dataclass(frozen=True)
+class Side:
+    """One side of an ID band: its end, and how far out the edge is looked for, both in Ω.
+
+    neighbour : what lies there is the near end of the next band; no resistance between the two is declared to be
+    refused, so none is shown as one that must not charge.
+    """
+
+    band: int
+    side: SideName
+    end_ohm: float
+    beyond_ohm: float
+    neighbour: bool
+
+    @property
+    def name(self) -> str:
+        return f"band{self.band}.{self.side}"
+
+    @property
+    def roles(self) -> tuple[str, ...]:
+        """Roles of the points on this side, from the middle of the band outward."""
+        end = "low" if self.side == "lower" else "high"
+        return f"band{self.band}.middle", f"band{self.band}.{end}", f"{self.name}_edge", f"{self.name}_outside"
+
+
+def sides(specification: Specification, outside: float) -> list[Side]:
+    """Both sides of every band; the edge is looked for up to `outside` (a share) beyond all that is declared for it."""
+    bands = specification.id_bands
+    return [
+        side
+        for number, band in enumerate(bands, 1)
+        for side in (_lower(number, band, bands, outside), _upper(number, band, bands, outside))
+    ]
+
+
+def _lower(number: int, band: IdBand, bands: tuple[IdBand, ...], outside: float) -> Side:
+    declared = band.lower_edge.low if band.lower_edge is not None and band.lower_edge.low else band.low_ohm
+    reach_ohm = min(declared, band.low_ohm) / (1 + outside)
+    below = max((one for one in bands if one.high_ohm < band.low_ohm), key=lambda one: one.high_ohm, default=None)
+    if below is not None and reach_ohm <= max(below.high_ohm, _high(below.upper_edge)):
+        return Side(number, "lower", band.low_ohm, below.high_ohm, True)
+    return Side(number, "lower", band.low_ohm, reach_ohm, False)
+
+
+def _upper(number: int, band: IdBand, bands: tuple[IdBand, ...], outside: float) -> Side:
+    reach_ohm = max(_high(band.upper_edge), band.high_ohm) * (1 + outside)
+    above = min((one for one in bands if one.low_ohm > band.high_ohm), key=lambda one: one.low_ohm, default=None)
+    if above is not None:
+        declared = above.lower_edge.low if above.lower_edge is not None and above.lower_edge.low else above.low_ohm
+        if reach_ohm >= min(declared, above.low_ohm):
+            return Side(number, "upper", band.high_ohm, above.low_ohm, True)
+    return Side(number, "upper", band.high_ohm, reach_ohm, False)
+
+
+def _high(edge: Band | None) -> float:
+    return edge.high if edge is not None and edge.high is not None else 0.0
+
+
+def ends(band: Band, cold: bool, step: SweepTemperature) -> tuple[float, float]:
+    """Temperatures just inside and well outside a declared limit, °C. A limit open at one end stands for both."""
+    known = [value for value in (band.low, band.high, band.nominal) if value is not None]
+    low, high = min(known, default=0.0), max(known, default=0.0)
+    return (high + step.resolution, low - step.beyond) if cold else (low - step.resolution, high + step.beyond)
+
+
+def starts(seen: Seen) -> str:
+    """The class of a point where only one thing matters: whether a charge starts, with whatever current."""
+    return "charges" if seen.flows else seen.kind
