@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from pathlib import Path
 
-from drivers.bench_file import BenchFile
 from drivers.text.binding import Bound
 from drivers.text.faults import BadInput, Faults, Place
 from drivers.text.nearest import unknown
@@ -15,7 +14,7 @@ from drivers.virtual.charger_file import CHARGERS, ChargerFile
 from drivers.virtual.defects import Defect, Size, load_defect, quantity_of, shipped_defects, spoiled
 from drivers.virtual.imperfection import generator
 from sequencer.cli.access import charger_for
-from sequencer.engine.inputs import FOLDERS, Asked, gather
+from sequencer.engine.inputs import FOLDERS, Asked, Inputs, gather
 from sequencer.model.procedure import Procedure
 
 BENCH = "virtual-in-process"
@@ -27,16 +26,19 @@ class Product:
     """A specification with the sound virtual charger of the same name."""
 
     name: str
-    asked: Asked
+    inputs: Inputs
     charger: Bound[ChargerFile]
 
 
 @dataclass(frozen=True)
 class Trial:
-    """One run: a product's procedure on its sound charger, or on one with a defect."""
+    """One run: a product's procedure on its sound charger, or on one with a defect.
+
+    It carries its files as they were read, so that one who edits them meanwhile does not change the assay.
+    """
 
     product: str
-    asked: Asked
+    inputs: Inputs
     charger: Bound[ChargerFile]
     seed: int
     defect: Defect | None = None
@@ -66,11 +68,12 @@ class AssayPlan:
 def plan_assay(procedure: str, specs: Sequence[str], defects: str, seeds: Sequence[int]) -> AssayPlan:
     """Read and check every file. Raises BadInput with all faults of all files."""
     products, notes = _products(procedure, specs)
+    claiming = products[0].inputs.procedure
     faults = Faults()
     chosen = _defects(defects, faults)
-    claims = Claims.of(_procedure(products[0]), chosen, faults)
+    claims = Claims.of(claiming, chosen, faults)
     faults.raise_if_any()
-    trials = [Trial(one.name, _seeded(one, seed), one.charger, seed) for one in products for seed in seeds]
+    trials = [Trial(one.name, one.inputs, one.charger, seed) for one in products for seed in seeds]
     for defect in chosen:
         fitting = [product for product in products if defect.model.fits_on(product.charger)]
         if not fitting:
@@ -79,15 +82,7 @@ def plan_assay(procedure: str, specs: Sequence[str], defects: str, seeds: Sequen
     faults.raise_if_any()
     tried = {trial.defect.claimed_as for trial in trials if trial.defect and trial.claimed}
     untried = tuple(kind for kind in claims.least if kind not in tried and (defects == "all" or kind in claims.kinds))
-    return AssayPlan(_procedure(products[0]).model.name, tuple(trials), tuple(notes), untried)
-
-
-def _seeded(product: Product, seed: int) -> Asked:
-    return replace(product.asked, seed=seed)
-
-
-def _procedure(product: Product) -> Bound[Procedure]:
-    return gather(product.asked).procedure
+    return AssayPlan(claiming.model.name, tuple(trials), tuple(notes), untried)
 
 
 def _spoiled(defect: Bound[Defect], fitting: list[Product], seed: int, claims: Claims, faults: Faults) -> Trial:
@@ -98,8 +93,7 @@ def _spoiled(defect: Bound[Defect], fitting: list[Product], seed: int, claims: C
     charger = spoiled(defect, size, product.charger, faults)
     if charger is None and len(faults.found) == before:
         faults.add(defect.place("change"), f"makes no charger of {product.name}")
-    asked = _seeded(product, seed)
-    return Trial(product.name, asked, charger or product.charger, seed, model, size, claims.cover(model, size))
+    return Trial(product.name, product.inputs, charger or product.charger, seed, model, size, claims.cover(model, size))
 
 
 # products
@@ -126,11 +120,10 @@ def _products(procedure: str, specs: Sequence[str]) -> tuple[list[Product], list
 
 
 def _product(procedure: str, spec: str) -> Product:
-    asked = Asked(procedure, spec, None, BENCH)
-    bench: BenchFile = gather(asked).bench
-    charger = charger_for(bench, None, spec)
+    inputs = gather(Asked(procedure, spec, None, BENCH))
+    charger = charger_for(inputs.bench, None, spec)
     assert charger is not None, f"{BENCH} is a virtual bench"
-    return Product(Path(spec).stem, asked, charger)
+    return Product(Path(spec).stem, inputs, charger)
 
 
 # defects and claims

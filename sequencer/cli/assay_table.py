@@ -115,4 +115,5 @@ def summary(outcomes: Sequence[Outcome], untried: Sequence[str], spent_s: float,
         says(f"{kind} is claimed, and no defect of that kind and size was tried")
     status = exit_status(outcomes, untried)
     met = "met" if status == MET else "not decided" if status == UNCLEAR else "NOT met"
-    says(f"The claims of the procedure are {met}. {len(outcomes)} runs in {clock_time(spent_s)}.")
+    claims = f"The claims of the procedure are {met}." if claimed or untried else "None of these defects is claimed."
+    says(f"{claims} {len(outcomes)} runs in {clock_time(spent_s)}.")

@@ -19,7 +19,6 @@ from sequencer.cli.access import access_to
 from sequencer.cli.answers import BENCH_FAULT
 from sequencer.cli.assay_outcome import Outcome
 from sequencer.cli.assay_plan import Trial
-from sequencer.engine.inputs import gather
 from sequencer.engine.judging import Rejudging, judge
 from sequencer.engine.loop import StopFlag
 from sequencer.engine.run import Ended, Options, Watching, run
@@ -94,8 +93,12 @@ def _end_with_the_first() -> None:
 
 def carry_out(trial: Trial, keep: Path | None) -> Outcome:
     """One run from its files to its verdicts; the record stays only where it is to be kept."""
+    if _stop.why is not None:  # one that was handed out before the others were called off
+        return Outcome(trial, {}, "stopped", _stop.why, False)
     with _folder(trial, keep) as folder:
         ended = _run(trial, folder)
+        if ended.ended == "stopped":
+            return Outcome(trial, {}, ended.ended, ended.why, False)
         if ended.fault is not None or not ended.sealed:
             trouble = ended.why if ended.sealed else f"{ended.why}; the record could not be sealed"
             return Outcome(trial, {}, ended.ended, ended.why, False, trouble)
@@ -114,10 +117,9 @@ def _folder(trial: Trial, keep: Path | None) -> Iterator[Path]:
 
 
 def _run(trial: Trial, folder: Path) -> Ended:
-    inputs = gather(trial.asked)
-    with access_to(inputs.bench, trial.charger, trial.seed) as access:
-        opened: Any = open_bench(inputs.bench, access)
+    with access_to(trial.inputs.bench, trial.charger, trial.seed) as access:
+        opened: Any = open_bench(trial.inputs.bench, access)
         try:
-            return run(inputs, opened, Options(folder, trial.seed), _stop, Watching())
+            return run(trial.inputs, opened, Options(folder, trial.seed), _stop, Watching())
         finally:
             opened.close()
