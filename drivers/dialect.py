@@ -232,6 +232,9 @@ class Dialect(Written):
     settable: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value)), _SETTABLE_SCHEMA]] = Field(
         default_factory=dict
     )
+    least: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value)), _SETTABLE_SCHEMA]] = Field(
+        default_factory=dict, description="load: voltage below which it no longer sinks its full current"
+    )
 
     @model_validator(mode="after")
     def _complete(self) -> Dialect:
@@ -268,7 +271,7 @@ class Dialect(Written):
 
 
 def _largest(value: Any) -> float:
-    """A largest settable value, of a voltage, a current or a resistance."""
+    """A largest or smallest value, of a voltage, a current or a resistance."""
     text = str(value).rstrip()
     dimension = "current" if text.endswith("A") else "voltage" if text.endswith("V") else "resistance"
     return Measure(dimension, above=0).read(text)

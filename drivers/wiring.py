@@ -9,7 +9,15 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from typing import Annotated, Any
 
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, GetCoreSchemaHandler
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    GetCoreSchemaHandler,
+    model_validator,
+)
 from pydantic import GetJsonSchemaHandler as JsonHandler
 from pydantic.json_schema import JsonSchemaValue
 from pydantic_core import CoreSchema, core_schema
@@ -140,6 +148,14 @@ class Wiring(Part):
     thermistor: SignalWiring | None = None
     taps: Annotated[tuple[TapWiring, ...], BeforeValidator(_tuple)] = ()
     ambient: AmbientWiring | None = None
+
+    @model_validator(mode="after")
+    def _signals_have_power_contacts(self) -> Wiring:
+        small = [name for name in ("id", "thermistor", "taps") if getattr(self, name)]
+        if small and self.node.contacts is None:
+            told = f"{', '.join(small)} close and open with the pack; 'node.contacts' is missing"
+            raise refuse(f"{told}: {{b_plus: relays.1, b_minus: relays.2, precharge: relays.3, ...}}")
+        return self
 
     def places(self) -> Iterator[tuple[str, str | Channel, Role]]:
         """(place, instrument or channel there, role that it must play), in a fixed order."""

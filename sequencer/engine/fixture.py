@@ -139,6 +139,7 @@ def prepare(bench: OpenBench, pack: Pack, specification: Specification) -> None:
     highest_V = min(limits.node, pack.cells * pack.cell_bound_V)
     drop_V = limits.current * (wiring.ballast + 2 * wiring.current.shunt_ohm)
     deeds = [Deed(speaker, "clear") for speaker in bench.speakers]
+    deeds += [contact.open for contact in bench.signals.contacts]
     for meter, most in (
         (bench.node_meter, highest_V),
         (bench.charger_meter, highest_V + drop_V),

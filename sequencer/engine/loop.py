@@ -82,7 +82,7 @@ class Loop:
         self._scanner = Scanner(self.bench)
         self._next_s = self.bench.clock.now()
         self._slow_s = 0.0
-        self._tap_V: dict[int, float] = {}
+        self._tap_V: dict[int, float] = {} if self.slow is None else self.slow.set_V
         self.guard.connected = self.bench.signals.power is None
 
     @property

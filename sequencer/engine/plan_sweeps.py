@@ -11,13 +11,14 @@ from dataclasses import dataclass
 from drivers.text.measures import Band
 from sequencer.analysis.edges import expected_steps
 from sequencer.engine import insertion, walks
-from sequencer.engine.sweeps import ends
+from sequencer.engine.targets import ends, sides
 from sequencer.model.pack import Pack
 from sequencer.model.specification import Specification
 from sequencer.model.steps import RaiseCell, SweepId, SweepTemperature
 
-PLACE_s = 0.3 + insertion.SIGNALS_s + insertion.PRECHARGE_s  # node, load, contacts; of an insertion after the first
-APPROACH_s = 0.3
+PLACE_s = (
+    0.3 + insertion.TAP_SETTLE_s + insertion.SIGNALS_s + insertion.PRECHARGE_s
+)  # node, load, contacts; of an insertion after the first
 
 
 @dataclass(frozen=True)
@@ -59,14 +60,11 @@ class Sweeping:
 
     def sweep_id(self, step: SweepId) -> Times:
         times = self.charging + self.refused * 2
-        for band in self.specification.id_bands:
-            times += self.charging * 3
-            for near, far in (
-                (band.low_ohm, band.low_ohm / (1 + step.outside)),
-                (band.high_ohm, band.high_ohm * (1 + step.outside)),
-            ):
-                steps = expected_steps(min(near, far), max(near, far), step.resolution)
-                times += self.refused + self.search(steps)
+        times += self.charging * (3 * len(self.specification.id_bands))
+        for side in sides(self.specification, step.outside):
+            times += self.charging if side.neighbour else self.refused
+            low_ohm, high_ohm = sorted((side.end_ohm, side.beyond_ohm))
+            times += self.search(expected_steps(low_ohm, high_ohm, step.resolution))
         return times
 
     def sweep_temperature(self, step: SweepTemperature) -> Times:
@@ -85,10 +83,11 @@ class Sweeping:
         dwell = self.specification.dwell
         inner_C, outer_C = ends(band, cold, step)
         expected_C = band.nominal if band.nominal is not None else (inner_C + outer_C) / 2
-        legs = abs(expected_C - inner_C) / step.resolution + 1
+        legs = abs(expected_C - inner_C) / step.resolution + 2  # the first is the smallest step at 25 °C
+        approach = len(walks.approach_C(inner_C, -1.0 if cold else 1.0))
         back = 1.0 if self._goes_on else walks.RELEASE_SPAN_K / walks.RELEASE_STEP_K
         back_s = back * (dwell.start_delay + walks.DWELLS * dwell.response)
-        return legs * walks.DWELLS * dwell.response + back_s
+        return (approach + legs * walks.DWELLS) * dwell.response + back_s
 
     @property
     def _goes_on(self) -> bool:
@@ -102,8 +101,8 @@ class Sweeping:
         band = None if trip is None else trip.voltage
         expected_V = step.end if band is None or band.low is None or band.high is None else (band.low + band.high) / 2
         legs = max(0.0, (expected_V - step.begin) / step.by) + 1
-        approach_s = APPROACH_s * max(0.0, (step.begin - step.cell_voltage) / walks.APPROACH_V - 1)
+        approach_s = walks.APPROACH_s * max(0.0, (step.begin - step.cell_voltage) / walks.APPROACH_V - 1)
         watch_s = max(insertion.START_DELAYS * dwell.start_delay, insertion.SHORTEST_WATCH_s)
-        release_s = dwell.start_delay + insertion.MEAN_s if self._goes_on else watch_s
+        release_s = dwell.start_delay + insertion.SETTLE_s + insertion.MEAN_s if self._goes_on else watch_s
         walk = Times(0, approach_s + legs * walks.DWELLS * dwell.response + release_s)
         return (self.charging + walk) * self.pack.cells + self.charging

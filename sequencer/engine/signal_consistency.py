@@ -5,13 +5,14 @@ from __future__ import annotations
 from drivers.bench_file import BenchFile
 from drivers.text.binding import Bound
 from drivers.text.faults import Faults
-from drivers.text.measures import Band
 from drivers.text.si import si
+from sequencer.engine.site import NOMINAL_C
+from sequencer.engine.targets import ends, sides
 from sequencer.model.curves import Curve
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import Procedure
 from sequencer.model.specification import Specification
-from sequencer.model.steps import RaiseCell, SweepId, SweepTemperature
+from sequencer.model.steps import RaiseCell, Step, SweepId, SweepTemperature
 
 
 def check(
@@ -27,9 +28,13 @@ def check(
         _check_curve(specification, curve.model, faults)
     if procedure is None or specification is None or pack is None or bench is None:
         return
+    if not all(name in bench.dialects for _, name in bench.bench.wired()):
+        return  # a place in the wiring is empty, which is a fault of its own
     _check_taps(pack, bench, faults)
+    _check_nominal_id(specification, pack, bench, faults)
     for number, step in enumerate(procedure.model.steps):
         place = ("steps", number, step.kind)
+        _check_start(procedure, place, step, pack, bench, faults)
         if step.sweep_id is not None:
             _check_id(procedure, place, step.sweep_id, specification, bench, faults)
         if step.sweep_temperature is not None:
@@ -60,6 +65,37 @@ def _check_taps(pack: Bound[Pack], bench: BenchFile, faults: Faults) -> None:
         faults.add(bench.bound.place("wiring", "taps"), f"{told} (pack: {pack.document.name})")
 
 
+def _check_nominal_id(specification: Bound[Specification], pack: Bound[Pack], bench: BenchFile, faults: Faults) -> None:
+    """The pack that stands for a right one must be one that the charger is declared to charge."""
+    bands, ohm = specification.model.id_bands, pack.model.id
+    if bench.bench.wiring.id is None or not bands or ohm is None:
+        return
+    if not any(band.low_ohm <= ohm <= band.high_ohm for band in bands):
+        told = f"{si(ohm, 'Ω')} lies in no band of the specification ({', '.join(band.id.text for band in bands)})"
+        faults.add(pack.place("id"), f"{told}; a pack that is refused cannot be the control of anything")
+
+
+def _check_start(
+    procedure: Bound[Procedure], place: Where, step: Step, pack: Bound[Pack], bench: BenchFile, faults: Faults
+) -> None:
+    """Every voltage at which a pack is put in: within the pack's table, and one that the load can sink."""
+    start = step.insert or step.sweep_id or step.sweep_temperature or step.raise_cell
+    if start is None:
+        return
+    name, _, dialect = bench.at("node.load")
+    least_V, node_V = dialect.least.get("voltage", 0.0), pack.model.cells * start.cell_voltage
+    if node_V < least_V:
+        told = (
+            f"{si(node_V, 'V')} at the node is less than the load '{name}' can sink its current at, {si(least_V, 'V')}"
+        )
+        faults.add(procedure.place(*place, "cell_voltage"), f"{told}: a higher voltage, or another load")
+    sweep = step.sweep_id or step.sweep_temperature or step.raise_cell  # an insert's is checked elsewhere
+    low_V, high_V = pack.model.ocv[0][1], pack.model.ocv[-1][1]
+    if sweep is not None and not low_V <= sweep.cell_voltage <= high_V:
+        told = f"{si(sweep.cell_voltage, 'V')} lies outside the pack's table, {low_V:g} V to {high_V:g} V"
+        faults.add(procedure.place(*place, "cell_voltage"), told)
+
+
 def _check_id(
     procedure: Bound[Procedure],
     place: Where,
@@ -73,11 +109,15 @@ def _check_id(
     if bench.bench.wiring.id is None or bench.bench.wiring.node.contacts is None:
         faults.add(procedure.place(*place), "the bench has no 'id' resistor or no 'node.contacts' in its wiring")
         return
-    most_ohm = bench.at("id.resistor")[2].settable.get("resistance")
-    highest = max((band.high_ohm for band in specification.model.id_bands), default=0.0) * (1 + step.outside)
-    if most_ohm is not None and highest > most_ohm:
-        told = f"{si(highest, 'Ω')} must be shown beyond the highest band; it can be set to {si(most_ohm, 'Ω')}"
-        faults.add(bench.bound.place("wiring", "id", "resistor"), told)
+    outward = [side.beyond_ohm for side in sides(specification.model, step.outside)]
+    _check_settable("id", bench, max(outward, default=0.0), "must be shown beyond the highest band", faults)
+
+
+def _check_settable(line: str, bench: BenchFile, ohm: float, why: str, faults: Faults) -> None:
+    most_ohm = bench.at(f"{line}.resistor")[2].settable.get("resistance")
+    if most_ohm is not None and ohm > most_ohm:
+        told = f"{si(ohm, 'Ω')} {why}; it can be set to {si(most_ohm, 'Ω')}"
+        faults.add(bench.bound.place("wiring", line, "resistor"), told)
 
 
 def _check_temperature(
@@ -99,23 +139,17 @@ def _check_temperature(
         return
     if window is None or curve is None:
         return
-    most_ohm = bench.at("thermistor.resistor")[2].settable.get("resistance")
-    coldest_C = min(
-        (_outer(band, -step.beyond) for pair in (window.start, window.run) if pair for band in pair[:1]), default=0.0
-    )
-    if coldest_C < curve.model.span_C[0]:
-        faults.add(
-            procedure.place(*place), f"{coldest_C:g} °C must be shown; the curve begins at {curve.model.span_C[0]:g} °C"
-        )
-    elif most_ohm is not None and curve.model.ohm_at(coldest_C) > most_ohm:
-        told = f"{coldest_C:g} °C is {si(curve.model.ohm_at(coldest_C), 'Ω')}; it can be set to {si(most_ohm, 'Ω')}"
-        faults.add(bench.bound.place("wiring", "thermistor", "resistor"), told)
-
-
-def _outer(band: Band, by: float) -> float:
-    """The side of a band that lies further out, and `by` beyond it."""
-    edge = band.low if by < 0 else band.high
-    return (edge if edge is not None else band.nominal or 0.0) + by
+    pairs = [pair for pair in (window.start, window.run) if pair]
+    coldest_C = min((ends(pair[0], True, step)[1] for pair in pairs), default=NOMINAL_C)
+    hottest_C = max((ends(pair[1], False, step)[1] for pair in pairs), default=NOMINAL_C)
+    low_C, high_C = curve.model.span_C
+    for celsius in (coldest_C, hottest_C):
+        if not low_C <= celsius <= high_C:
+            told = f"{celsius:g} °C must be shown; the curve '{curve.model.name}' holds from {low_C:g} to {high_C:g} °C"
+            faults.add(procedure.place(*place), f"{told}: take a smaller 'beyond', or a curve that goes further")
+            return
+    most_ohm = max(curve.model.ohm_at(celsius) for celsius in (coldest_C, hottest_C))
+    _check_settable("thermistor", bench, most_ohm, f"must be shown for {coldest_C:g} °C", faults)
 
 
 def _check_raise(
@@ -127,6 +161,13 @@ def _check_raise(
         return
     if step.end > bench.bench.limits.tap:
         told = f"{si(step.end, 'V')} lies above the bench's limit for a tap, {si(bench.bench.limits.tap, 'V')}"
+        faults.add(procedure.place(*place, "to"), told)
+    if pack.model.cells < 2:
+        faults.add(procedure.place(*place), "a pack of one cell has no other cell to be lowered while it is raised")
+    taps = [bench.at(f"taps.{number}.supply")[2] for number in range(len(wiring.taps))]
+    most_V = min(dialect.settable.get("voltage", step.end) for dialect in taps)
+    if step.end > most_V:
+        told = f"{si(step.end, 'V')} cannot be set by the bench's tap supplies, which reach {si(most_V, 'V')}"
         faults.add(procedure.place(*place, "to"), told)
     lowest_V = step.cell_voltage - (step.end - step.cell_voltage) / max(pack.model.cells - 1, 1)
     if pack.model.cells > 1 and lowest_V < pack.model.ocv[0][1]:

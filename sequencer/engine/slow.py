@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, field
 
 from drivers.exchange import Job, Reply
@@ -13,6 +14,8 @@ from sequencer.engine.channels import Channel
 from sequencer.engine.guard import LOST_READINGS, Trip
 
 PERIOD_s = 2.0
+ASTRAY_V = 0.05  # of a cell against what its supply was set to
+ASTRAY_READINGS = 2  # in a row: one may fall between command and output
 
 
 @dataclass(frozen=True)
@@ -32,6 +35,8 @@ class SlowGroup:
 
     bench: OpenBench
     taps: int
+    set_V: dict[int, float] = field(default_factory=dict)  # what each cell's supply was last told, by cell from 1
+    _astray: dict[str, int] = field(default_factory=dict)
     _lost: dict[str, int] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
@@ -71,11 +76,19 @@ class SlowGroup:
         return named
 
     def _check_taps(self, named: list[tuple[str, float, float]]) -> None:
+        """A tap too high at once; twice away from where it was set: the charger sees another pack than it should."""
         limit_V = self.bench.file.bench.limits.tap
         for name, _, value in named:
-            if name.startswith("tap") and name.endswith("voltage") and value > limit_V:
+            if not (name.startswith("tap") and name.endswith("voltage")):
+                continue
+            if value > limit_V:
                 why = f"{name} reads {si(value, 'V')}, above the bench's limit for a tap"
                 raise Trip("bench", name, value, "V", limit_V, why)
+            set_V = self.set_V.get(int(name.removeprefix("tap").partition(".")[0]), value)
+            self._astray[name] = 0 if abs(value - set_V) <= ASTRAY_V else self._astray.get(name, 0) + 1
+            if self._astray[name] >= ASTRAY_READINGS:
+                why = f"its supply was set to {si(set_V, 'V')}: a dead or overloaded channel"
+                raise Trip("bench", name, value, "V", math.nan, why)
 
     def _senses(self) -> list[_Question]:
         """One question a scanner: voltages at the ID and thermistor contacts, tap currents by shunt."""
