@@ -74,6 +74,29 @@ def surroundings(manifest: Json) -> tuple[Pair, ...]:
     return tuple(rows)
 
 
+def order(manifest: Json) -> tuple[Pair, ...]:
+    """For whom, where, on which sample and by whom; nothing for a run without an order."""
+    content = part(manifest, "order")
+    skipped = ("file", "sha256", "lacking")
+    return tuple(row for key, value in content.items() if key not in skipped for row in _order_rows(key, value))
+
+
+def _order_rows(key: str, value: object) -> list[Pair]:
+    if isinstance(value, Mapping):
+        return [row for inner, one in value.items() for row in _order_rows(f"{key}, {inner}", one)]
+    if isinstance(value, list):
+        listed = [
+            ", ".join(clean(part) for part in one.values()) if isinstance(one, Mapping) else clean(one) for one in value
+        ]
+        return [Pair(clean(key), "; ".join(listed))] if listed else []
+    return [] if value is None else [Pair(clean(key), clean(value))]
+
+
+def order_lacks(manifest: Json) -> tuple[str, ...]:
+    """What a report that is issued would still need; everything where there is no order."""
+    return unique(part(manifest, "order").get("lacking"))
+
+
 _STANDIN = {"Rp_ohm": ("Rp", "Ω"), "Rv_ohm": ("Rv", "Ω"), "delay_scans": ("delay in scans", "")}
 
 

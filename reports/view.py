@@ -57,6 +57,8 @@ class View:
     stages: tuple[StageRow, ...]
     findings: tuple[Pair, ...]
     budgets: tuple[Budget, ...]
+    order: tuple[Pair, ...]
+    order_lacks: tuple[str, ...]
     inputs: tuple[tuple[str, str, str, str], ...]
     instruments: tuple[tuple[str, str, str, str, str], ...]
     surroundings: tuple[Pair, ...]
@@ -115,6 +117,8 @@ def build(source: Source) -> View:
         stages=rows.stage_rows(classification),
         findings=rows.finding_rows(source.findings.get("findings") or ()),
         budgets=_budgets(source),
+        order=header.order(manifest),
+        order_lacks=header.order_lacks(manifest),
         inputs=header.inputs(manifest),
         instruments=header.instruments(manifest),
         surroundings=header.surroundings(manifest),

@@ -15,6 +15,7 @@ from drivers.text.document import compose
 from drivers.text.faults import Faults
 from drivers.virtual.charger_file import ChargerFile
 from sequencer.model.curves import Curve
+from sequencer.model.order import Order
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import load_procedure
 from sequencer.model.specification import Specification
@@ -28,6 +29,7 @@ MODELS = {
     "bench": Bench,
     "dialect": Dialect,
     "charger": ChargerFile,
+    "order": Order,
 }
 
 

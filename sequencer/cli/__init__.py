@@ -49,6 +49,7 @@ def run(
     spec: Annotated[str, typer.Option(help=_SPEC)] = "sprayer",
     pack: Annotated[str | None, typer.Option(help="Pack; default: the one that the specification names.")] = None,
     charger: Annotated[str | None, typer.Option(help=_CHARGER)] = None,
+    order: Annotated[str | None, typer.Option(help="Order: lab, customer, sample, persons.")] = None,
     out: Annotated[Path | None, typer.Option(help="Folder for the record; new or empty.")] = None,
     set_: Annotated[list[str] | None, typer.Option("--set", metavar="NAME=VALUE", help="Change a parameter.")] = None,
     only: Annotated[list[str] | None, typer.Option(metavar="STEP", help="Carry out only steps of this kind.")] = None,
@@ -56,8 +57,9 @@ def run(
 ) -> None:
     """Carry out a procedure and judge what it showed."""
     from sequencer.cli.running import run_command
+    from sequencer.engine.inputs import Asked, changes_of
 
-    run_command(procedure, bench, spec, pack, charger, out, set_ or [], only or [], seed)
+    run_command(Asked(procedure, spec, pack, bench, changes_of(set_ or []), seed, order), charger, out, only or [])
 
 
 @app.command("check")

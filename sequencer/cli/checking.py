@@ -25,6 +25,7 @@ def _models() -> dict[str, type[Written]]:
     from drivers.virtual.charger_file import ChargerFile
     from sequencer.model.curves import Curve
     from sequencer.model.findings import Findings
+    from sequencer.model.order import Order
     from sequencer.model.pack import Pack
     from sequencer.model.procedure import Procedure
     from sequencer.model.specification import Specification
@@ -37,6 +38,7 @@ def _models() -> dict[str, type[Written]]:
         "dialect": Dialect,
         "charger": ChargerFile,
         "curve": Curve,
+        "order": Order,
         "findings": Findings,
     }
 
@@ -80,6 +82,17 @@ def _check_alone(path: Path, kind: str, faults: Faults) -> None:
         found = bind(_models()[kind], read(path), kind, faults) is not None
     if found and not faults.found:
         typer.echo(f"{path}: a sound {kind} file")
+        if kind == "order":
+            _print_lacking(path)
+
+
+def _print_lacking(path: Path) -> None:
+    from sequencer.engine.inputs import rebind
+    from sequencer.model.order import Order
+
+    lacking = rebind(Order, path.read_bytes(), str(path), "order").model.lacking()
+    if lacking:
+        typer.echo(f"  an issued report would lack (ISO/IEC 17025:2017, 7.8.2.1): {', '.join(lacking)}")
 
 
 def _kind_of(path: Path) -> str:

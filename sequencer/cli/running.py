@@ -8,33 +8,27 @@ import typer
 
 from drivers.clock import utc_now
 from drivers.open_bench import open_bench
+from drivers.text.faults import Faults, Place
+from drivers.text.nearest import unknown
 from sequencer.cli.access import access_to, charger_for
 from sequencer.cli.answers import BENCH_FAULT, OUR_FAULT
 from sequencer.cli.judging import judge_and_report
 from sequencer.cli.stopping import noted_signals
 from sequencer.cli.terminal import Terminal
-from sequencer.engine.inputs import Asked, changes_of, gather
+from sequencer.engine.inputs import Asked, gather
 from sequencer.engine.loop import StopFlag
 from sequencer.engine.plan import plan_of
 from sequencer.engine.record import refuse_unless_free
 from sequencer.engine.run import Ended, Options, run
+from sequencer.model.steps import KINDS
 
 
-def run_command(
-    procedure: str,
-    bench: str,
-    spec: str,
-    pack: str | None,
-    charger: str | None,
-    out: Path | None,
-    changes: list[str],
-    only: list[str],
-    seed: int,
-) -> None:
-    """See `packmime run --help`. Raises typer.Exit with the status of design section 5."""
-    asked = Asked(procedure, spec, pack, bench, changes_of(changes), seed)
+def run_command(asked: Asked, charger: str | None, out: Path | None, only: list[str]) -> None:
+    """See `packmime run --help`. Raises typer.Exit with the status of what came of it."""
+    seed = asked.seed if asked.seed is not None else 1
     inputs = gather(asked)
-    virtual_charger = charger_for(inputs.bench, charger, spec)
+    _check_only(only)
+    virtual_charger = charger_for(inputs.bench, charger, asked.specification)
     folder = out or Path("runs") / f"{utc_now():%Y%m%dT%H%M%S}-{inputs.procedure.model.name}"
     refuse_unless_free(folder)
     stop = StopFlag()
@@ -48,6 +42,15 @@ def run_command(
         finally:
             opened.close()
     raise typer.Exit(_finish(ended, terminal))
+
+
+def _check_only(only: list[str]) -> None:
+    """Raise BadInput for a kind of step that there is not."""
+    faults = Faults()
+    for kind in only:
+        if kind not in KINDS:
+            faults.add(Place("--only"), unknown(kind, KINDS, "kind of step"))
+    faults.raise_if_any()
 
 
 def _finish(ended: Ended, terminal: Terminal) -> int:

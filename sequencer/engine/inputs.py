@@ -13,6 +13,7 @@ from drivers.text.document import Document, compose, read
 from drivers.text.faults import BadInput, Faults, Place
 from sequencer.engine import consistency, signal_consistency
 from sequencer.model.curves import Curve, load_curve
+from sequencer.model.order import Order
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import Procedure, load_procedure
 from sequencer.model.specification import Specification
@@ -23,6 +24,7 @@ FOLDERS = {
     "specification": SHIPPED / "specifications",
     "pack": SHIPPED / "packs",
     "bench": SHIPPED / "benches",
+    "order": SHIPPED / "orders",
 }
 
 
@@ -36,6 +38,7 @@ class Asked:
     bench: str = "virtual"
     changes: Mapping[str, str] = field(default_factory=dict)
     seed: int | None = None
+    order: str | None = None
 
 
 @dataclass(frozen=True)
@@ -48,6 +51,7 @@ class Inputs:
     bench: BenchFile
     changes: dict[str, str]
     curve: Bound[Curve] | None = None
+    order: Bound[Order] | None = None
 
     @property
     def deviations(self) -> list[str]:
@@ -63,6 +67,8 @@ class Inputs:
         }
         if self.curve is not None:
             named["curve.yaml"] = self.curve.document
+        if self.order is not None:
+            named["order.yaml"] = self.order.document
         for dialect in self.bench.dialects.values():
             named[f"dialects/{dialect.model.name}.yaml"] = dialect.document
         return named
@@ -77,12 +83,13 @@ def gather(asked: Asked) -> Inputs:
     bench_path = locate(asked.bench, FOLDERS["bench"], "bench", Place("--bench"), faults)
     bench = None if bench_path is None else load_bench(bench_path, faults)
     curve = _curve(specification, faults)
+    order = None if asked.order is None else _read(Order, asked.order, "order", Place("--order"), faults)
     consistency.check(procedure, specification, pack, bench, faults)
     signal_consistency.check(procedure, specification, pack, bench, curve, faults)
     faults.raise_if_any()
     if procedure is None or specification is None or pack is None or bench is None:
         raise AssertionError("a file without faults was not read")
-    return Inputs(procedure, specification, pack, bench, dict(asked.changes), curve)
+    return Inputs(procedure, specification, pack, bench, dict(asked.changes), curve, order)
 
 
 def _curve(specification: Bound[Specification] | None, faults: Faults) -> Bound[Curve] | None:

@@ -10,8 +10,10 @@ from typing import Any
 
 from drivers.open_bench import OpenBench
 from drivers.safe import SafeState
+from drivers.text.binding import Bound
 from drivers.text.document import Document
 from sequencer.engine.inputs import Inputs
+from sequencer.model.order import Order
 
 PACKAGES = ("pyvisa", "pyvisa-py", "numpy", "scipy", "pyarrow", "pydantic", "ruamel.yaml", "pytest", "pytest-html")
 
@@ -48,7 +50,8 @@ def description_of(inputs: Inputs, bench: OpenBench, start_utc: str, seed: int |
         "deviations": [*inputs.deviations, *_overdue(bench, start_utc[:10])],
         "changes": inputs.changes,
         "environment": _environment(),
-        "person": None,
+        "person": None if inputs.order is None else inputs.order.model.persons.operator,
+        "order": None if inputs.order is None else _order(inputs.order),
     }
 
 
@@ -78,6 +81,12 @@ def _first_places(bench: OpenBench) -> list[tuple[str, str]]:
     for where, name in bench.file.bench.wired():
         first.setdefault(name, where)
     return [(where, name) for name, where in first.items()]
+
+
+def _order(order: Bound[Order]) -> dict[str, Any]:
+    """The order as it is, and what an issued report would lack."""
+    content = order.model.model_dump(mode="json", exclude_none=True)
+    return {**content, "lacking": order.model.lacking(), **_file(order.document)}
 
 
 def _file(document: Document) -> dict[str, str]:

@@ -250,3 +250,22 @@ def test_a_run_whose_output_nobody_reads_goes_on_to_its_end(command: Callable, t
     assert record.manifest is not None
     assert record.manifest["ended"] == "complete"
     assert record.manifest["safe"] is True
+
+
+def test_an_order_goes_into_record_and_report(packmime: Callable, tmp_path: Path) -> None:
+    result = packmime("run", "charge-profile", "--order", "garden", "--out", tmp_path / "r", *IN_PROCESS)
+    assert result.exit_code == 0, result.output
+    manifest = json.loads((tmp_path / "r/data/manifest.json").read_text("utf-8"))
+    assert manifest["order"]["number"] == "G-2026-014"
+    assert manifest["order"]["lacking"] == []
+    assert manifest["person"] == "A. Gardener"
+    assert (tmp_path / "r/data/inputs/order.yaml").is_file()
+    page = (tmp_path / "r/report.html").read_text("utf-8")
+    assert "S-00417" in page
+    assert "new, seal unbroken" in page
+
+
+def test_only_knows_the_kinds_of_step(packmime: Callable, tmp_path: Path) -> None:
+    result = packmime("run", "acceptance", "--only", "sweep_ids", "--out", tmp_path / "r")
+    assert result.exit_code == 2
+    assert "did you mean 'sweep_id'?" in result.stderr
