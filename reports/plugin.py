@@ -1,4 +1,4 @@
-"""Collects judgements for pytest, one item a verdict, and writes their page through pytest-html.
+"""Collects judgements and procedures for pytest, one item a verdict, and writes pages through pytest-html.
 
 Imported by every pytest of the environment: nothing but pytest here, everything else inside the functions, and no
 effect on any run that was not given a judgement by name.
@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any
 import pytest
 
 if TYPE_CHECKING:
-    from reports.items import JudgementFile
+    from reports.items import VerdictFile
 
 _LETTERS = {
     "conditional pass": ("conditional pass", "c", "yellow"),
@@ -31,19 +31,33 @@ def _is_judgement(path: Path) -> bool:
 
 def _named(config: pytest.Config) -> list[Path]:
     """The judgements that the command line names, each by the path of its verdicts.json."""
+    return [path for path in _arguments(config) if _is_judgement(path)]
+
+
+def _arguments(config: pytest.Config) -> list[Path]:
+    """The files that the command line names, each once."""
     if config.args_source is not pytest.Config.ArgsSource.ARGS:
         return []
     folder = config.invocation_params.dir
-    paths = [(folder / argument.partition("::")[0]).resolve() for argument in config.args]
-    return [path for path in dict.fromkeys(paths) if _is_judgement(path)]
+    return list(dict.fromkeys((folder / argument.partition("::")[0]).resolve() for argument in config.args))
 
 
-def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> JudgementFile | None:
-    if file_path.name != "verdicts.json" or file_path.resolve() not in _named(parent.config):
+def pytest_addoption(parser: pytest.Parser) -> None:
+    words = 'with a procedure, such as "--spec lantern --seed 3": options of `packmime run`'
+    parser.getgroup("packmime").addoption("--packmime", metavar="OPTIONS", help=words)
+
+
+def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> VerdictFile | None:
+    """Only what the command line names: a judgement, or a procedure. Collecting never energises anything."""
+    if file_path.suffix not in (".json", ".yaml", ".yml") or file_path.resolve() not in _arguments(parent.config):
         return None
-    from reports.items import JudgementFile
+    if _is_judgement(file_path):
+        from reports.items import JudgementFile
 
-    return JudgementFile.from_parent(parent, path=file_path)
+        return JudgementFile.from_parent(parent, path=file_path)
+    from reports.procedure_file import ProcedureFile, is_procedure
+
+    return ProcedureFile.from_parent(parent, path=file_path) if is_procedure(file_path) else None
 
 
 @pytest.hookimpl(trylast=True)
@@ -72,7 +86,7 @@ def _view(folder: Path) -> Any:
 
 def _verdict(report: Any) -> str:
     """The verdict of one of our items at the phase that decides it; empty for everything else."""
-    if not getattr(report, "nodeid", "").partition("::")[0].endswith("verdicts.json"):
+    if not getattr(report, "nodeid", "").partition("::")[0].endswith(("verdicts.json", ".yaml", ".yml")):
         return ""
     from reports.items import verdict_of
 
@@ -93,6 +107,7 @@ def pytest_report_teststatus(report: Any, config: pytest.Config) -> tuple[str, s
 
 def pytest_terminal_summary(terminalreporter: Any) -> None:
     """The reasons that pytest itself does not print: those of our own words."""
+    _tell_records(terminalreporter)
     told = [(word, report) for word in _TOLD for report in terminalreporter.stats.get(word, ())]
     if not told:
         return
@@ -101,6 +116,16 @@ def pytest_terminal_summary(terminalreporter: Any) -> None:
         found = dict(report.user_properties)
         why = " ".join(str(found.get("why", "")).split())
         terminalreporter.write_line(f"{word}: {found['limit']}: {why}", **{_LETTERS[word][2]: True})
+
+
+def _tell_records(terminalreporter: Any) -> None:
+    """Where the records of the procedures run in this session lie; nothing where none was run."""
+    if not any(path.suffix in (".yaml", ".yml") for path in _arguments(terminalreporter.config)):
+        return
+    from reports.procedure_file import ProcedureFile
+
+    for record in ProcedureFile.written(terminalreporter.config):
+        terminalreporter.write_line(f"record: {record} (report.html lies in it)")
 
 
 @pytest.hookimpl(wrapper=True)
