@@ -222,8 +222,10 @@ class Loop:
             self.stand_in.choose_compression(scan.time_s, scan.charger_V.value, current_A, self.events)
         if self._set_V is None or abs(node_V - self._set_V) >= SMALLEST_MOVE_V:
             self._move_node(node_V)
-        if self.tap_offsets_V and scan.charger_V.good:
-            self.move_taps(scan.charger_V.value)
+        # With B+ open the charger's contacts show anything; the cells are still those of the pack at the node.
+        pack_V = scan.charger_V if self.guard.connected else scan.node_V
+        if self.tap_offsets_V and pack_V.good:
+            self.move_taps(pack_V.value)
 
     def move_taps(self, pack_V: float) -> None:
         """Set the cells that supplies play to their share of the pack's voltage and their offsets, in one exchange."""
