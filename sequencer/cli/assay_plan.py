@@ -80,8 +80,10 @@ def plan_assay(procedure: str, specs: Sequence[str], defects: str, seeds: Sequen
             notes.append(f"{defect.model.name} was not tried: none of these chargers is what it is for")
         trials += [_spoiled(defect, fitting, seed, claims, faults) for seed in seeds if fitting]
     faults.raise_if_any()
-    tried = {trial.defect.claimed_as for trial in trials if trial.defect and trial.claimed}
-    untried = tuple(kind for kind in claims.least if kind not in tried and (defects == "all" or kind in claims.kinds))
+    tried = [(one.defect.claimed_as, one.claimed) for one in trials if one.defect is not None]
+    # who asks for some chargers or some defects has left the other claims out on purpose
+    asked = {kind for kind, _ in tried} if specs or defects != "all" else set(claims.least)
+    untried = tuple(kind for kind in claims.least if kind in asked and (kind, True) not in tried)
     return AssayPlan(claiming.model.name, tuple(trials), tuple(notes), untried)
 
 
@@ -142,13 +144,12 @@ class Claims:
     """What the procedure claims: kinds of defect, from which size on (None: any)."""
 
     least: dict[str, Size | None]
-    kinds: frozenset[str]  # of the defects chosen
 
     @classmethod
     def of(cls, procedure: Bound[Procedure], chosen: Sequence[Bound[Defect]], faults: Faults) -> Claims:
         """Read the claims. Faults are added for a kind that no defect has, and for a size of another kind."""
-        ranges = _ranges(chosen)
-        known = {**_ranges([one for name in shipped_defects() if (one := load_defect(name, faults))]), **ranges}
+        shipped = [one for name in shipped_defects() if (one := load_defect(name, faults))]
+        known = {**_ranges(shipped), **_ranges(chosen)}
         least = dict[str, Size | None]()
         for kind, text in procedure.model.claims.items():
             place = procedure.place("claims", kind)
@@ -159,7 +160,7 @@ class Claims:
                 least[kind] = _least(text, known[kind])
             except ValueError as fault:
                 faults.add(place, f"{kind}: {fault}")
-        return cls(least, frozenset(ranges))
+        return cls(least)
 
     def cover(self, defect: Defect, size: Size | None) -> bool:
         """Whether the procedure claims to find this defect in this size; one without a size is as big as can be."""

@@ -70,6 +70,12 @@ def test_a_claim_that_no_size_reaches_is_untried(tmp_path: Path) -> None:
     assert plan.untried == ("regulation-high",)
 
 
+def test_claims_left_out_on_purpose_are_not_untried(tmp_path: Path) -> None:
+    procedure = claiming(tmp_path, "{regulation-high: 30 mV, no-termination: any}")
+    assert plan_assay(procedure, ["lantern"], "all", [1]).untried == ()  # a charger without a regulated voltage
+    assert plan_assay(procedure, [], "dead", [1]).untried == ()
+
+
 @pytest.mark.parametrize(
     ("claims", "words"),
     [
