@@ -24,6 +24,7 @@ from sequencer.engine.loop import StopFlag
 from sequencer.engine.run import Ended, Options, Watching, run
 
 LOOK_s = 0.2  # how often it is looked whether a person wants to stop
+LAST_WAIT_s = 5.0  # for a run to end when nobody waits for it any more
 JUDGED_UTC = "2000-01-01T00:00:00.000Z"  # of records that nobody sees; a kept one gives its own times in its manifest
 
 
@@ -74,6 +75,7 @@ class _Stopping(StopFlag):
 
 
 _stop: StopFlag = StopFlag()
+_busy = threading.Lock()  # while a run goes on
 
 
 def _begin(event: Event) -> None:
@@ -81,13 +83,16 @@ def _begin(event: Event) -> None:
     global _stop
     _stop = _Stopping(event)
     signal.signal(signal.SIGINT, signal.SIG_IGN)
-    threading.Thread(target=_end_with_the_first, daemon=True).start()
+    threading.Thread(target=_end_with_the_first, args=(event,), daemon=True).start()
 
 
-def _end_with_the_first() -> None:
+def _end_with_the_first(event: Event) -> None:
+    """Once the first process is gone, whatever ended it: the run that goes on ends and takes its record away."""
     parent = multiprocessing.parent_process()
     if parent is not None:
         parent.join()
+        event.set()
+        _busy.acquire(timeout=LAST_WAIT_s)
         os._exit(BENCH_FAULT)
 
 
@@ -95,7 +100,7 @@ def carry_out(trial: Trial, keep: Path | None) -> Outcome:
     """One run from its files to its verdicts; the record stays only where it is to be kept."""
     if _stop.why is not None:  # one that was handed out before the others were called off
         return Outcome(trial, {}, "stopped", _stop.why, False)
-    with _folder(trial, keep) as folder:
+    with _busy, _folder(trial, keep) as folder:
         ended = _run(trial, folder)
         if ended.ended == "stopped":
             return Outcome(trial, {}, ended.ended, ended.why, False)

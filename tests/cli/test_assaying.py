@@ -81,7 +81,9 @@ def test_bad_input_exits_2_before_anything_runs(packmime: Callable, tmp_path: Pa
 @pytest.mark.skipif(sys.platform != "linux", reason="workers are looked up in /proc")
 @pytest.mark.parametrize("name", ["SIGINT", pytest.param("SIGKILL", marks=pytest.mark.benchmark)])
 def test_no_worker_outlives_the_command(command: Callable, tmp_path: Path, name: str) -> None:
-    started = command("assay", "charge-profile", "--seeds", "20", "--defects", "dead", cwd=tmp_path)
+    started = command(
+        "assay", "charge-profile", "--seeds", "20", "--defects", "dead", cwd=tmp_path, TMPDIR=str(tmp_path)
+    )
     try:
         assert started.stdout.readline().startswith("charge-profile: ")
         line = started.stdout.readline()  # the first run is done, others go on
@@ -95,10 +97,11 @@ def test_no_worker_outlives_the_command(command: Callable, tmp_path: Path, name:
     if name == "SIGINT":
         assert started.returncode == 3
         assert "stopped by Ctrl-C; every run was ended" in rest
-    deadline = time.monotonic() + 5.0
+    deadline = time.monotonic() + 10.0
     while any(_runs(pid) for pid in workers) and time.monotonic() < deadline:
         time.sleep(0.05)
     assert not any(_runs(pid) for pid in workers)
+    assert list(tmp_path.glob("packmime-assay-*")) == []
 
 
 def _workers(pid: int) -> list[int]:
