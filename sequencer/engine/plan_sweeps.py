@@ -105,4 +105,6 @@ class Sweeping:
         watch_s = max(insertion.START_DELAYS * dwell.start_delay, insertion.SHORTEST_WATCH_s)
         release_s = dwell.start_delay + insertion.SETTLE_s + insertion.MEAN_s if self._goes_on else watch_s
         walk = Times(0, approach_s + legs * walks.DWELLS * dwell.response + release_s)
-        return (self.charging + walk) * self.pack.cells + self.charging
+        timed = Times(0, approach_s + dwell.response)  # the stop once more, by a clear step; inserted anew if latched
+        again = timed if self._goes_on else timed + self.charging
+        return (self.charging + walk + again) * self.pack.cells + self.charging

@@ -16,7 +16,7 @@ from sequencer.engine.found import Found
 from sequencer.engine.insertion import MEAN_s
 from sequencer.engine.swept import ended_early, given_up, resistor_lines
 from sequencer.engine.targets import ends
-from sequencer.engine.walks import GOES_ON, STOPPED
+from sequencer.engine.walks import GOES_ON, OVER_V, STOPPED
 
 TAP_LEADS_ohm = 1.0  # between a tap's channel and the charger's pin, beyond the shunt: common practice, no source
 FOLLOWS_V = 0.05  # a cell that reads further from what it was set to was not raised as the procedure says
@@ -171,7 +171,7 @@ class Walks:
         stopped = next((leg for leg in legs if leg.stop_s is not None), None)
         if stopped is None:
             none = self._cell_never_stopped(cell, legs[-1])
-            release = none if none.none is None else Found(trouble="the charge had not stopped")
+            release = none if none.none is None else Found(none="the charge had not stopped")
             return {"voltage": none, "stop_time": none, "release": release}
         trouble = self._no_control_after(stopped.end_s, "tap_trip")
         if trouble is not None:
@@ -180,7 +180,7 @@ class Walks:
         early = legs.index(stopped) <= len(approach)
         return {
             "voltage": self._trip(cell, legs, stopped, early),
-            "stop_time": self._stop_time(stopped, early),
+            "stop_time": self._stop_time(cell, early),
             "release": self._release(cell),
         }
 
@@ -259,19 +259,24 @@ class Walks:
         )
         return [*self._accuracy.scanned(f"taps.{number - 1}.meter", drop_V, f"tap {number}, shunt"), leads]
 
-    @staticmethod
-    def _stop_time(stopped: Leg, early: bool) -> Found:
-        assert stopped.stop_s is not None
+    def _stop_time(self, cell: int, early: bool) -> Found:
+        """From the step that clearly passes the trip to the charge's stop."""
         if early:
             return Found(trouble="the charge stopped on the way to the first step; which move did it cannot be told")
-        before_s, after_s = stopped.stop_s
-        middle_s, half_s = (before_s + after_s) / 2 - stopped.start_s, (after_s - before_s) / 2
+        over = next(iter(self.legs("tap_trip", "over", cell)), None)
+        if over is None:
+            return Found(trouble="the stop was not timed: the charge stopped on the way to the step that times it")
+        if over.stop_s is None:
+            seconds = over.end_s - over.start_s
+            return Found(none=f"the charge had not stopped {seconds:.1f} s after a step {OVER_V * 1e3:.0f} mV beyond")
+        before_s, after_s = over.stop_s
+        middle_s, half_s = (before_s + after_s) / 2 - over.start_s, (after_s - before_s) / 2
         bracket = Contribution.from_half_width("spacing of the readings", half_s, "rectangular", source="fast pace")
         delay = Contribution.from_half_width(
             "from command to step", 0.05, "rectangular", source="common practice, no source"
         )
         budget = Budget(middle_s, "s", (bracket, delay))
-        return Found(budget, n=1, start_s=stopped.start_s, end_s=after_s)
+        return Found(budget, n=1, start_s=over.start_s, end_s=after_s)
 
     def _release(self, cell: int) -> Found:
         back = self.legs("tap_trip", "back", cell)

@@ -21,6 +21,7 @@ DWELLS = 3.0  # response times watched at each step
 RELEASE_STEP_K = 1.0
 RELEASE_SPAN_K = 12.0
 APPROACH_K = 2.5  # per move on the way from 25 °C to the first step, each watched for one response time
+OVER_V = 0.02  # beyond the step at which a cell stopped the charge: a step that clearly passes the trip
 APPROACH_V = 0.05  # per move on the way from the nominal cell voltage to the first step
 APPROACH_s = 0.3
 
@@ -127,24 +128,63 @@ def raise_cells(site: Site, step: RaiseCell) -> str:
     for cell in range(1, site.pack.cells + 1):
         if not begin(site, step.cell_voltage):
             return give_up(site, "tap_trip", LATCHED)
-        _raise_one(site, step, cell)
+        stopped_V = _raise_one(site, step, cell)
+        if stopped_V is not None and not _timed(site, step, cell, stopped_V):
+            return give_up(site, "tap_trip", LATCHED)
         insertion.take_out(site)
     return "raised" if controlled(site, step.cell_voltage) else give_up(site, "tap_trip", LATCHED)
 
 
-def _raise_one(site: Site, step: RaiseCell, cell: int) -> None:
-    assert site.loop.last is not None
-    cell_V = site.loop.last.charger_V.value / site.pack.cells + APPROACH_V
-    while cell_V < step.begin:
-        if _cell_step(site, cell, cell_V, APPROACH_s, "approach"):
-            _release(site, cell)
-            return
-        cell_V += APPROACH_V
+def _raise_one(site: Site, step: RaiseCell, cell: int) -> float | None:
+    """Up in steps until the charge stops, and back; returns the voltage of the step at which it stopped."""
+    reached_V = _approach(site, cell, step.begin)
+    if reached_V is not None:
+        _release(site, cell)
+        return None  # on the way: which move did it cannot be told, so there is nothing to time
     for number in range(out_steps(step.begin, step.end, step.by) + 1):
         raised_V = min(step.begin + number * step.by, step.end)
         if _cell_step(site, cell, raised_V, DWELLS * site.specification.dwell.response, "out"):
             _release(site, cell)
-            return
+            return raised_V
+    return None
+
+
+def _approach(site: Site, cell: int, to_V: float, way: str = "approach") -> float | None:
+    """From equal cells to just below `to_V`; returns where the charge stopped on the way, None where it did not."""
+    assert site.loop.last is not None
+    cell_V = site.loop.last.charger_V.value / site.pack.cells + APPROACH_V
+    while cell_V < to_V:
+        if _cell_step(site, cell, cell_V, APPROACH_s, way):
+            return cell_V
+        cell_V += APPROACH_V
+    return None
+
+
+def _timed(site: Site, step: RaiseCell, cell: int, stopped_V: float) -> bool:
+    """The stop once more, by a step that lies clearly on both sides of the trip; False where no control was to be had.
+
+    In the search the cell may pass its trip late within a step, because the pack's voltage rises meanwhile: the time
+    from the step would then say nothing of the charger.
+    """
+    loop = site.loop
+    assert loop.last is not None
+    goes_on = loop.last.current_A.good and loop.last.current_A.value > GOES_ON * (site.control_A or 0.0)
+    if not goes_on:
+        insertion.take_out(site)
+        if not begin(site, step.cell_voltage):
+            return False
+    if _approach(site, cell, stopped_V - step.by - OVER_V, "again") is None:
+        over_V = min(stopped_V + OVER_V, site.bench.file.bench.limits.tap - 0.01)
+        _cell_step(site, cell, over_V, _longest_stop_s(site), "over")
+        _set_offsets(site, cell, 0.0)
+    return True
+
+
+def _longest_stop_s(site: Site) -> float:
+    """How long a timed stop is waited for: well past what is declared."""
+    trip = site.specification.tap_trip
+    limit_s = trip.stop_time.high if trip is not None and trip.stop_time is not None else None
+    return max(DWELLS * site.specification.dwell.response, 1.5 * (limit_s or 0.0))
 
 
 def _set_offsets(site: Site, cell: int, rise_V: float) -> None:
