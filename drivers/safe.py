@@ -1,8 +1,8 @@
 """The safe state: energy source away first, absorber and voltage holder kept until the current is proven gone.
 
 Order: 1 mains off. 2 two independent witnesses say that the charger no longer delivers. 3 if not, mains off once
-more. 4 if still not, load and supply stay as they are and an alarm is raised. 5 (cell taps: none on this wiring).
-6 supply to zero while the load drains the node, then load off, supply off. 7 (contacts: none on this wiring).
+more. 4 if still not, load and supply stay as they are and an alarm is raised. 5 cell taps down together.
+6 supply to zero while the load drains the node, then load off, supply off. 7 contacts open, each checked.
 Only what readback and meter both show is called safe. Safe means de-energised, not isolated.
 
 All witnesses are asked in one exchange, so that any number of silent instruments costs one wait. A lost link is

@@ -14,6 +14,7 @@ from drivers.text.binding import bind
 from drivers.text.document import compose
 from drivers.text.faults import Faults
 from drivers.virtual.charger_file import ChargerFile
+from drivers.virtual.defects import Defect
 from sequencer.model.curves import Curve
 from sequencer.model.order import Order
 from sequencer.model.pack import Pack
@@ -30,6 +31,7 @@ MODELS = {
     "dialect": Dialect,
     "charger": ChargerFile,
     "order": Order,
+    "defect": Defect,
 }
 
 

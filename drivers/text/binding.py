@@ -23,6 +23,7 @@ KINDS = {  # and the newest version of each that is read
     "charger": 1,
     "findings": 1,
     "curve": 1,
+    "defect": 1,
 }
 
 

@@ -23,7 +23,7 @@ from pydantic.json_schema import JsonSchemaValue
 from pydantic_core import CoreSchema, core_schema
 
 from drivers.shipped import locate
-from drivers.text.binding import KINDS, Bound, Written, bind
+from drivers.text.binding import Bound, Written, bind
 from drivers.text.document import Listing, Mapped, Node, Scalar, find, read
 from drivers.text.faults import BadInput, Faults, Place
 from drivers.text.measures import refuse
@@ -35,7 +35,6 @@ from drivers.virtual.imperfection import generator
 
 DEFECTS = Path(__file__).parent / "defects"
 NEWEST = 1
-KINDS.setdefault("defect", NEWEST)
 SIZE = "size"
 _TERM = re.compile(r"\s*([+\-*])\s*([^+\-*]+?)\s*(?=[+\-*]|$)")
 

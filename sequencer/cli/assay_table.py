@@ -10,7 +10,7 @@ from rich.text import Text
 
 from drivers.text.si import clock_time
 from sequencer.cli.assay_outcome import MET, UNCLEAR, Outcome, exit_status
-from sequencer.cli.terminal import _console
+from sequencer.cli.terminal import console_of_ours
 
 MANY = 3  # limits named in a sentence
 
@@ -41,7 +41,7 @@ def _few(limits: Sequence[str]) -> str:
 
 def show(outcomes: Sequence[Outcome]) -> None:
     """Both tables: sound chargers, then defects."""
-    console = _console()
+    console = console_of_ours()
     with suppress(OSError):
         console.print(_sound([one for one in outcomes if one.trial.defect is None]))
         console.print()

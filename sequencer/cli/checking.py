@@ -23,6 +23,7 @@ def _models() -> dict[str, type[Written]]:
     from drivers.bench import Bench
     from drivers.dialect import Dialect
     from drivers.virtual.charger_file import ChargerFile
+    from drivers.virtual.defects import Defect
     from sequencer.model.curves import Curve
     from sequencer.model.findings import Findings
     from sequencer.model.order import Order
@@ -39,6 +40,7 @@ def _models() -> dict[str, type[Written]]:
         "charger": ChargerFile,
         "curve": Curve,
         "order": Order,
+        "defect": Defect,
         "findings": Findings,
     }
 

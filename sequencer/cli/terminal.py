@@ -45,7 +45,7 @@ class _Console(Console):
         raise BrokenPipeError
 
 
-def _console() -> Console:
+def console_of_ours() -> Console:
     console = _Console(highlight=False)
     return console if console.is_terminal else _Console(highlight=False, width=PIPED_WIDTH)
 
@@ -54,7 +54,7 @@ class Terminal:
     """One line that says what is being done and seen; sentences above it; a summary at the end."""
 
     def __init__(self, planned_s: float, console: Console | None = None) -> None:
-        self._console = console or _console()
+        self._console = console or console_of_ours()
         self._planned_s = planned_s
         self._words = "starting"
         self._drawn_s = 0.0

@@ -84,6 +84,7 @@ class Loop:
         self._slow_s = 0.0
         self._tap_V: dict[int, float] = {} if self.slow is None else self.slow.set_V
         self.guard.connected = self.bench.signals.power is None
+        self.guard.slow_s = SLOW_PATIENCE_s if self.slow is not None and self.slow.any else 0.0
 
     @property
     def now_s(self) -> float:

@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from sequencer.analysis.decision import WORST_FIRST, Decision, Rule, decide, probability_of_conformity
 from sequencer.analysis.intervals import Trip, decide_interval, probability_over, telling_sizes
 
-VALUES = st.floats(-100.0, 100.0)
+VALUES = st.floats(-100.0, 100.0).map(lambda value: round(value, 6))  # as instruments give them: with a last digit
 SIZES = st.floats(1e-3, 10.0)
 RULES = st.sampled_from(["guarded", "simple"])
 

@@ -32,7 +32,7 @@ def test_the_shipped_order_lacks_nothing() -> None:
         ("  serial: S-00417\n", "sample.serial (g)"),
         ("  received: 2026-11-30\n", "sample.received (h)"),
         ("sampling: one piece handed in by the customer; the results concern this piece only\n", "sampling (k)"),
-        (', authorised: C. Moss', "persons.authorised (o)"),
+        (", authorised: C. Moss", "persons.authorised (o)"),
         (', address: "1 Potting Lane, Fernwick"', "lab.address (b)"),
     ],
 )
