@@ -20,6 +20,7 @@ from drivers.text.faults import Faults
 from drivers.trouble import InstrumentFault, LinkFault, ReplyFault
 
 TIMEOUT_s = 0.3
+LATE_s = 1.5 * TIMEOUT_s  # midway between this question's time-out and that of the first one after it
 GREETING = ("*CLS;:SYST:ERR?",)
 IDENTITY = "invented,bench meter,A0001,1.0"
 Said = Sequence[bytes | float | None]  # bytes: say them; a number: wait so long; None: close the connection
@@ -228,7 +229,7 @@ def test_an_instrument_that_accepts_and_never_speaks(link: Link) -> None:
 
 
 def test_the_tail_of_a_late_answer_never_is_the_next_answer(link: Link) -> None:
-    session, _ = link(but("READ?", [b"123", 2 * TIMEOUT_s, b"4567\n"], first=1))
+    session, _ = link(but("READ?", [b"123", LATE_s, b"4567\n"], first=1))
     session.reopen()
     fails(session, "time-out", 10 * TIMEOUT_s)
     session.reopen()
@@ -236,7 +237,7 @@ def test_the_tail_of_a_late_answer_never_is_the_next_answer(link: Link) -> None:
 
 
 def test_a_whole_answer_that_is_late_is_lost_with_its_link(link: Link) -> None:
-    session, _ = link(but("READ?", [2 * TIMEOUT_s, b"666\n"], first=1))
+    session, _ = link(but("READ?", [LATE_s, b"666\n"], first=1))
     session.reopen()
     fails(session, "time-out", 10 * TIMEOUT_s)
     session.reopen()

@@ -8,6 +8,7 @@ from typing import Any
 
 import pytest
 
+import drivers
 from drivers.dialect import Dialect
 from drivers.exchange import Reply
 from drivers.shipped import locate
@@ -17,7 +18,7 @@ from drivers.text.document import read
 from drivers.text.faults import Faults, Place
 from drivers.trouble import LinkFault, ReplyFault
 
-DIALECTS = Path(__file__).parents[2] / "drivers" / "dialects"
+DIALECTS = Path(drivers.__file__).parent / "dialects"
 
 
 def dialect(name: str) -> Dialect:

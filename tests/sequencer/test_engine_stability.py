@@ -12,10 +12,11 @@ import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+import procedures
 from sequencer.engine.evidence import Evidence, Trace, open_evidence
 from sequencer.engine.stability import delay_scans, gain, largest_gain, turning_points
 
-PACKS = Path(__file__).resolve().parents[2] / "procedures" / "packs"
+PACKS = Path(procedures.__file__).parent / "packs"
 RATIOS = st.floats(0.0, 60.0)
 DELAYS = st.integers(0, 12)
 
