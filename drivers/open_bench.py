@@ -12,6 +12,7 @@ from drivers.exchange import Exchange, Inline, Job, Workers
 from drivers.roles import Hands, Load, MainsSwitch, Meter, Speaker, Supply
 from drivers.session import Library, Session
 from drivers.signal_roles import Contact, Lists, PowerContacts, Resistor, SignalLine, Signals, TapLine, Thermometer
+from drivers.text.document import Document
 from drivers.trouble import BenchFault, LinkFault
 from drivers.wiring import Channel, SignalWiring
 
@@ -30,6 +31,7 @@ class Access:
     clock: Clock
     seed: int | None = None  # of a virtual bench
     charger: str | None = None  # name of the virtual charger
+    charger_file: Document | None = None  # what it was built from
     circuit_s: Callable[[], float] = field(default=lambda: 0.0)  # seconds that the virtual bench worked
     close: Callable[[], None] = field(default=lambda: None)
 

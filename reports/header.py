@@ -30,7 +30,11 @@ def inputs(manifest: Json) -> tuple[tuple[str, str, str, str], ...]:
         digest = str(section.get("sha256") or "")
         rows.append((kind, clean(section.get(key)), clean(section.get("file")), clean(digest[:12] or None)))
     if manifest.get("charger") is not None:
-        rows.append(("virtual charger", clean(manifest["charger"]), NOTHING, NOTHING))
+        held = part(manifest, "charger_file")
+        digest = str(held.get("sha256") or "")
+        rows.append(
+            ("virtual charger", clean(manifest["charger"]), clean(held.get("file")), clean(digest[:12] or None))
+        )
     return tuple(rows)
 
 
@@ -101,7 +105,7 @@ _STANDIN = {"Rp_ohm": ("Rp", "Ω"), "Rv_ohm": ("Rv", "Ω"), "delay_scans": ("del
 
 
 def standin(values: Json) -> str:
-    """The stand-in's resistances and loop (design 8), rounded; a pace of its own in brackets."""
+    """The stand-in's resistances and loop, rounded; a pace of its own in brackets."""
     return ", ".join(_standin_part(str(name), value) for name, value in values.items())
 
 
@@ -174,6 +178,7 @@ def _internal_fault(event: Json) -> str:
     return f"Fault of packmime itself: {clean(lines[-1] if lines else None)}; the traceback is in the record's events"
 
 
-def dated(manifest: Json) -> str:
-    """The run's start and end."""
-    return f"{utc(manifest.get('started_utc'))} to {utc(manifest.get('ended_utc'))}"
+def dated(manifest: Json, *, virtual: bool) -> str:
+    """The run's start and end. virtual : by a clock that may run ahead, so that the end can lie in the future."""
+    told = f"{utc(manifest.get('started_utc'))} to {utc(manifest.get('ended_utc'))}"
+    return f"{told} in virtual time" if virtual else told

@@ -11,6 +11,7 @@ Several operators in one text act in their order: "+40 mV +size". The result is 
 
 from __future__ import annotations
 
+import json
 import math
 import re
 from collections.abc import Mapping
@@ -24,7 +25,7 @@ from pydantic_core import CoreSchema, core_schema
 
 from drivers.shipped import locate
 from drivers.text.binding import Bound, Written, bind
-from drivers.text.document import Listing, Mapped, Node, Scalar, find, read
+from drivers.text.document import Listing, Mapped, Node, Scalar, find, plain, read
 from drivers.text.faults import BadInput, Faults, Place
 from drivers.text.measures import refuse
 from drivers.text.quantity import UNIT_IN_CODE, UNITS, QuantityFault, parse
@@ -249,7 +250,8 @@ def spoiled(
 ) -> Bound[ChargerFile] | None:
     """The sound charger with the defect in that size. None, and faults added, where no charger comes of it.
 
-    What was changed has its place in the defect's file. The charger's bytes stay those of the sound one.
+    What was changed has its place in the defect's file. The bytes are those of the changed charger: a record that kept
+    the sound one's would name a charger that was not rehearsed.
     """
     before, root = len(faults.found), charger.document.root
     for path, change in defect.model.change.items():
@@ -261,7 +263,14 @@ def spoiled(
             faults.add(place, f"{path}: {fault} (on {charger.document.name})")
     if len(faults.found) > before:
         return None
-    return bind(ChargerFile, replace(charger.document, root=root), "charger", faults)
+    changed = replace(charger.document, content=_written(root, defect.model.name, size), root=root)
+    return bind(ChargerFile, changed, "charger", faults)
+
+
+def _written(root: Node, defect: str, size: Size | None) -> bytes:
+    """A charger as a file that reads the same: JSON is YAML too, and quotes every text as it stands."""
+    told = f"# with the defect {defect}{f' of {size}' if size else ''}\n"
+    return (told + json.dumps(plain(root), indent=2, ensure_ascii=False) + "\n").encode()
 
 
 @dataclass(frozen=True)

@@ -5,6 +5,8 @@ Only typer is imported here, so that `packmime --help` answers at once.
 
 from __future__ import annotations
 
+import io
+import sys
 from pathlib import Path
 from typing import Annotated
 
@@ -71,13 +73,14 @@ def check(
     bench: Annotated[str, typer.Option(help=_BENCH)] = "virtual",
     spec: Annotated[str, typer.Option(help=_SPEC)] = "sprayer",
     pack: Annotated[str | None, typer.Option(help="Pack; default: the one that the specification names.")] = None,
+    charger: Annotated[str | None, typer.Option(help=_CHARGER)] = None,
     set_: Annotated[list[str] | None, typer.Option("--set", metavar="NAME=VALUE", help="Change a parameter.")] = None,
     schema: Annotated[str | None, typer.Option(metavar="KIND", help="Print the JSON Schema of a kind of file.")] = None,
 ) -> None:
     """Validate files, touch nothing, print the plan of a procedure."""
     from sequencer.cli.checking import check_command
 
-    check_command(files or [], bench, spec, pack, set_ or [], schema)
+    check_command(files or [], bench, spec, pack, charger, set_ or [], schema)
 
 
 @app.command("judge")
@@ -171,4 +174,7 @@ def bench_serve(
 
 def main() -> None:
     """Entry point of the `packmime` command."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):
+            stream.reconfigure(errors="replace")  # a terminal that has no Ω still gets the rest of the sentence
     app()

@@ -15,12 +15,17 @@ from drivers.text.faults import Faults, Place
 if TYPE_CHECKING:
     from drivers.text.binding import Bound
     from drivers.virtual.charger_file import ChargerFile
+    from sequencer.engine.inputs import Inputs
+    from sequencer.model.pack import Pack
 
 
-def charger_for(file: BenchFile, asked: str | None, specification: str | None) -> Bound[ChargerFile] | None:
+def charger_for(
+    file: BenchFile, asked: str | None, specification: str | None, pack: Bound[Pack] | None = None
+) -> Bound[ChargerFile] | None:
     """The virtual charger: asked for, named by the bench, or of the specification's own name.
 
-    None for a real bench. Raises BadInput (no such charger; a charger asked for on a real bench).
+    None for a real bench. Raises BadInput (no such charger; a charger asked for on a real bench; where a `pack` is
+    given, one for another number of cells).
     """
     from drivers.virtual.charger_file import load_charger
 
@@ -34,8 +39,33 @@ def charger_for(file: BenchFile, asked: str | None, specification: str | None) -
     name = asked or virtual.charger or Path(specification or "sprayer").stem
     place = Place("--charger") if asked else file.bound.place("virtual", "charger")
     charger = load_charger(name, faults, place=place)
+    if charger is not None and pack is not None:
+        _check_cells(charger, pack, faults)
     faults.raise_if_any()
     return charger
+
+
+def _check_cells(charger: Bound[ChargerFile], pack: Bound[Pack], faults: Faults) -> None:
+    """Everything else of a charger may be wrong on purpose; for other packs it is no charger of this product at all."""
+    given, wanted = charger.model.cells, pack.model.cells
+    if given != wanted:
+        told = f"a charger for {given} cells; the pack has {wanted} ({pack.place('cells')})"
+        remedy = f"name a charger for {wanted} cells with --charger, or a pack with {given} with --pack"
+        faults.add(charger.place("cells"), f"{told}; {remedy}")
+
+
+def rehearsal_charger(inputs: Inputs, asked: str | None, specification: str) -> Bound[ChargerFile] | None:
+    """The charger that a rehearsal with these files would use, checked as for a run; None where it would have none.
+
+    A specification whose name no virtual charger bears is no fault: it may be meant for real instruments.
+    """
+    from drivers.virtual.charger_file import CHARGERS
+
+    virtual = inputs.bench.bench.virtual
+    named = asked is not None or (virtual is not None and virtual.charger is not None)
+    if not named and not (CHARGERS / f"{Path(specification).stem}.yaml").is_file():
+        return None
+    return charger_for(inputs.bench, asked, specification, inputs.pack)
 
 
 @contextmanager
@@ -63,6 +93,7 @@ def _in_process(file: BenchFile, charger: Bound[ChargerFile], seed: int) -> Acce
         VirtualClock(world.advance),
         seed,
         charger.model.name,
+        charger.document,
         circuit_s=lambda: world.busy_s,
     )
 
@@ -76,7 +107,13 @@ def _over_sockets(file: BenchFile, charger: Bound[ChargerFile], seed: int) -> It
     try:
         clock = VirtualClock(server.advance)
         yield Access(
-            "@py", server.addresses, clock, seed, charger.model.name, circuit_s=lambda: float(server.stats()["busy_s"])
+            "@py",
+            server.addresses,
+            clock,
+            seed,
+            charger.model.name,
+            charger.document,
+            circuit_s=lambda: float(server.stats()["busy_s"]),
         )
     finally:
         server.close()

@@ -123,7 +123,7 @@ def _products(procedure: str, specs: Sequence[str]) -> tuple[list[Product], list
 
 def _product(procedure: str, spec: str) -> Product:
     inputs = gather(Asked(procedure, spec, None, BENCH))
-    charger = charger_for(inputs.bench, None, spec)
+    charger = charger_for(inputs.bench, None, spec, inputs.pack)
     assert charger is not None, f"{BENCH} is a virtual bench"
     return Product(Path(spec).stem, inputs, charger)
 

@@ -16,6 +16,7 @@ from drivers.text.si import clock_time
 
 if TYPE_CHECKING:
     from drivers.text.binding import Written
+    from sequencer.engine.inputs import Asked
     from sequencer.engine.plan import Plan
 
 
@@ -46,30 +47,41 @@ def _models() -> dict[str, type[Written]]:
 
 
 def check_command(
-    files: list[str], bench: str, spec: str, pack: str | None, changes: list[str], schema: str | None
+    files: list[str],
+    bench: str,
+    spec: str,
+    pack: str | None,
+    charger: str | None,
+    changes: list[str],
+    schema: str | None,
 ) -> None:
     """See `packmime check --help`. Raises BadInput with all faults of all files."""
     if schema is not None:
         print_schema(schema)
         return
+    from sequencer.engine.inputs import Asked, changes_of
+
     faults = Faults()
     if not files:
         faults.add(Place("FILE"), "a file to check was expected, or --schema KIND")
     for text in files:
         try:
-            _check_one(text, bench, spec, pack, changes, faults)
+            _check_one(text, Asked(text, spec, pack, bench, changes_of(changes)), charger, faults)
         except BadInput as bad:
             faults.found.extend(bad.faults)
     faults.raise_if_any()
 
 
-def _check_one(text: str, bench: str, spec: str, pack: str | None, changes: list[str], faults: Faults) -> None:
+def _check_one(text: str, asked: Asked, charger: str | None, faults: Faults) -> None:
     kind = "procedure" if is_bare(text) else _kind_of(Path(text))
     if kind == "procedure":
-        from sequencer.engine.inputs import Asked, changes_of, gather
+        from sequencer.cli.access import rehearsal_charger
+        from sequencer.engine.inputs import gather
         from sequencer.engine.plan import plan_of
 
-        _print_plan(text, plan_of(gather(Asked(text, spec, pack, bench, changes_of(changes)))))
+        inputs = gather(asked)
+        rehearsal_charger(inputs, charger, asked.specification)
+        _print_plan(text, plan_of(inputs))
         return
     _check_alone(Path(text), kind, faults)
 

@@ -45,6 +45,7 @@ def _blank() -> dict[str, Any]:
         "rehearsal": True,
         "seed": None,
         "charger": None,
+        "charger_file": None,
         "instruments": [],
         "hardware": {},
         "missing_hardware": [],

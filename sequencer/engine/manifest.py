@@ -44,6 +44,7 @@ def description_of(inputs: Inputs, bench: OpenBench, start_utc: str, seed: int |
         "pack": {"name": pack.name, **_file(inputs.pack.document)},
         "bench": {"name": bench.file.bench.name, **_file(bench.file.bound.document)},
         "charger": bench.access.charger,
+        "charger_file": None if bench.access.charger_file is None else _file(bench.access.charger_file),
         "instruments": [_instrument(bench, where, name) for where, name in _first_places(bench)],
         "hardware": dict(hardware),
         "missing_hardware": hardware.missing(),

@@ -70,6 +70,8 @@ def run(inputs: Inputs, bench: OpenBench, options: Options, stop: StopFlag, watc
     with RecordFolder.create(options.out) as record:
         for name, document in inputs.documents().items():
             record.add_input(name, document.content)
+        if bench.access.charger_file is not None:
+            record.add_input("charger.yaml", bench.access.charger_file.content)
         record.add_input("findings.yaml", findings_text())
         start_utc = bench.clock.utc()
         channels = (*CHANNELS, *channels_of(bench, inputs.pack.model.cells))

@@ -87,6 +87,9 @@ def test_shipped_defects_make_chargers_at_both_ends_of_their_range(name: str) ->
             faults.raise_if_any()
             assert made is not None
             assert made.model != one.model
+            again = bind(ChargerFile, compose(made.document.content, "again"), "charger", faults)
+            assert again is not None
+            assert again.model == made.model  # what a record keeps is what was rehearsed
 
 
 def test_at_least_twelve_ship() -> None:

@@ -60,6 +60,8 @@ def test_stand_in_with_a_second_pace() -> None:
 def test_files_with_the_head_of_their_hash(content: dict) -> None:
     rows = header.inputs(content["manifest"])
     assert [row[0] for row in rows] == ["procedure", "specification", "pack", "bench", "virtual charger"]
+    held = {**content["manifest"], "charger_file": {"file": "wrong.yaml", "sha256": "0123456789abcdef"}}
+    assert header.inputs(held)[-1][2:] == ("wrong.yaml", "0123456789ab")
     assert rows[0][3] == content["manifest"]["procedure"]["sha256"][:12]
 
 
@@ -68,8 +70,13 @@ def test_a_manifest_of_a_run_that_crashed_is_no_reason_to_fail() -> None:
     assert header.ending(bare, []) == "Run ended: abandoned. Safe state: not recorded."
     assert header.inputs(bare)[0] == ("procedure", "–", "–", "–")
     assert header.instruments(bare) == ()
-    assert header.dated(bare) == "– to –"
+    assert header.dated(bare, virtual=False) == "– to –"
     assert [pair.name for pair in header.surroundings(bare)] == ["packmime", "Python", "packages"]
+
+
+def test_a_rehearsal_is_dated_in_virtual_time() -> None:
+    told = {"started_utc": "2026-12-01T08:00:00Z", "ended_utc": "2026-12-01T08:30:00Z"}
+    assert header.dated(told, virtual=True) == f"{header.dated(told, virtual=False)} in virtual time"
 
 
 def test_deviations_are_listed_once() -> None:

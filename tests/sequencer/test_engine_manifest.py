@@ -4,12 +4,15 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable
+from pathlib import Path
 from typing import Any
 
 import pytest
 
+from sequencer.engine.durable import RecordError
 from sequencer.engine.evidence import open_evidence
 from sequencer.engine.manifest import program_version, sha256
+from sequencer.engine.record_reader import Record
 
 
 def test_the_manifest_is_what_was_run(rehearse: Callable[..., Any]) -> None:
@@ -35,6 +38,22 @@ def test_the_manifest_is_what_was_run(rehearse: Callable[..., Any]) -> None:
     assert all(manifest["environment"]["packages"][name] for name in ("numpy", "pyvisa", "pytest-html"))
     assert manifest["charger"] == "greenhouse sprayer charger"
     assert manifest["missing_hardware"] == []
+
+
+def test_the_virtual_charger_is_in_the_record(rehearse: Callable[..., Any], tmp_path: Path) -> None:
+    done = rehearse(charger={"cutoff": "0.31 A"}, changes={"start": "4.00 V", "after": "10 s"})
+    kept = done.record / "data" / "inputs" / "charger.yaml"
+    given = tmp_path / "charger-1.yaml"
+    digest = hashlib.sha256(given.read_bytes()).hexdigest()
+    manifest = open_evidence(done.record).manifest
+    assert kept.read_bytes() == given.read_bytes()
+    assert manifest["charger_file"] == {"file": "charger-1.yaml", "sha256": digest}
+    assert manifest["files"]["inputs/charger.yaml"] == digest
+    kept.chmod(0o644)
+    kept.write_bytes(kept.read_bytes().replace(b"0.31 A", b"0.30 A"))
+    with pytest.raises(RecordError, match=r"data/inputs/charger\.yaml: was changed since sealing"):
+        open_evidence(done.record)
+    assert Record.open(done.record).notes == ["data/inputs/charger.yaml: was changed since sealing"]
 
 
 def test_sha256() -> None:
