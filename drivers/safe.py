@@ -24,6 +24,7 @@ from drivers.trouble import BenchFault
 T = TypeVar("T")
 QUIET_CURRENT_A = 0.050
 PATIENCE_s = 2.0  # for the charging current to go after each try
+BACKWARDS_A = -1.0  # more than this into a charger that is off is a wire off a meter, not a current
 QUIET_FOR_s = 0.3  # several looks: a charger may pulse; the whole PATIENCE_s where the mains are not proven off
 DRAIN_A = 0.080
 SAFE_VOLTAGE_V = 2.0
@@ -67,7 +68,9 @@ class Look:
 
     @property
     def witnesses_A(self) -> tuple[float, float, float]:
-        return self.shunt_A, self.ballast_A, self.difference_A
+        """nan where a witness says nothing, or what cannot be: a meter behind an open contact reads 0 V."""
+        seen = self.shunt_A, self.ballast_A, self.difference_A
+        return tuple(current_A if current_A > BACKWARDS_A else math.nan for current_A in seen)  # type: ignore[return-value]
 
     @property
     def quiet(self) -> bool:

@@ -33,7 +33,7 @@ def answers(command: Callable[P, None]) -> Callable[P, None]:
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
             raise typer.Exit(NOBODY_LISTENS) from None
         except KeyboardInterrupt:
-            _say("stopped by Ctrl-C before anything was energised")
+            _say("stopped by Ctrl-C; nothing was switched on")
             raise typer.Exit(BENCH_FAULT) from None
         except Exception as reason:
             raise typer.Exit(_answer(reason)) from None

@@ -28,7 +28,7 @@ def run_command(asked: Asked, charger: str | None, out: Path | None, only: list[
     seed = asked.seed if asked.seed is not None else 1
     inputs = gather(asked)
     _check_only(only)
-    virtual_charger = charger_for(inputs.bench, charger, asked.specification)
+    virtual_charger = charger_for(inputs.bench, charger, asked.specification, inputs.pack)
     folder = out or Path("runs") / f"{utc_now():%Y%m%dT%H%M%S}-{inputs.procedure.model.name}"
     refuse_unless_free(folder)
     stop = StopFlag()
@@ -60,7 +60,11 @@ def _finish(ended: Ended, terminal: Terminal) -> int:
             "the record could not be sealed (disk full?); `packmime judge` seals and judges it once there is room"
         )
         return OUR_FAULT if ended.fault is not None else BENCH_FAULT
-    judged = judge_and_report(ended.record, terminal)
+    try:
+        judged = judge_and_report(ended.record, terminal)
+    except KeyboardInterrupt:
+        terminal.say(f"stopped while judging; the record is sealed: `packmime judge {ended.record}` judges it")
+        return BENCH_FAULT
     terminal.verdicts(judged)
     terminal.figures(ended.performance, judged)
     if ended.fault is not None:

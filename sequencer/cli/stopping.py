@@ -1,4 +1,4 @@
-"""Ctrl-C and SIGTERM set a flag that the scan loop reads: every way out goes through the safe state."""
+"""Signals that end a program set a flag that the scan loop reads: every way out goes through the safe state."""
 
 from __future__ import annotations
 
@@ -9,7 +9,12 @@ from types import FrameType
 
 from sequencer.engine.loop import StopFlag
 
-NAMES = {signal.SIGINT: "Ctrl-C", signal.SIGTERM: "SIGTERM"}
+#: SIGHUP comes when a terminal is closed or a connection to it is lost; Windows knows SIGBREAK in its place.
+NAMES = {
+    getattr(signal, name): "Ctrl-C" if name == "SIGINT" else name
+    for name in ("SIGINT", "SIGTERM", "SIGHUP", "SIGQUIT", "SIGBREAK")
+    if hasattr(signal, name)
+}
 
 
 @contextmanager
@@ -19,7 +24,9 @@ def noted_signals(stop: StopFlag) -> Iterator[None]:
     def note(number: int, frame: FrameType | None) -> None:
         stop.why = f"stopped by {NAMES[signal.Signals(number)]}"
 
-    before = {number: signal.signal(number, note) for number in NAMES}
+    # What is ignored stays so: whoever starts a run under nohup means it to outlive the terminal.
+    heard = [number for number in NAMES if signal.getsignal(number) is not signal.SIG_IGN]
+    before = {number: signal.signal(number, note) for number in heard}
     try:
         yield
     finally:

@@ -141,8 +141,11 @@ class RecordFolder:
 
 def refuse_unless_free(out: Path) -> None:
     """Raise RecordError unless a record can begin in this folder: it is new or empty."""
-    if not out.exists():
-        return
+    try:
+        if not out.exists():
+            return
+    except OSError as reason:  # a name that no folder can have
+        raise RecordError(f"{out}: {reason.strerror}; name another folder for the record") from None
     if not out.is_dir():
         raise RecordError(f"{out}: is a file; a record needs a new or empty folder, so name another")
     if is_record(out):

@@ -13,6 +13,7 @@ from pathlib import Path
 import pytest
 
 from drivers.clock import wall_seconds
+from sequencer.cli import running
 from sequencer.engine.inputs import FOLDERS
 from sequencer.engine.record_reader import Record
 
@@ -160,15 +161,15 @@ def test_a_fault_of_ours_is_70_and_leaves_a_safe_bench(
 
 
 @pytest.mark.skipif(sys.platform == "win32", reason="SIGINT to a child needs a console of its own on Windows")
-@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
-def test_an_interrupted_charge_ends_safe_sealed_and_judgeable(command: Callable, tmp_path: Path, number: int) -> None:
+@pytest.mark.parametrize("name", ["SIGINT", "SIGTERM", "SIGHUP", "SIGQUIT"])
+def test_an_interrupted_charge_ends_safe_sealed_and_judgeable(command: Callable, tmp_path: Path, name: str) -> None:
     slow = ("--set", "compression=1", "--set", "start=3.1 V")
     with command("run", "charge-profile", *slow, "--out", tmp_path / "r", cwd=tmp_path) as process:
         said = ""
         for line in process.stdout:
             said += line
             if "charging until" in line:
-                process.send_signal(number)
+                process.send_signal(getattr(signal, name))
         code = process.wait(60)
     assert code == 3, said
     record = Record.open(tmp_path / "r")
@@ -227,8 +228,39 @@ def test_a_users_own_conftest_and_procedures_change_nothing(command: Callable, t
 
 def test_only_leaves_out_on_purpose(packmime: Callable, tmp_path: Path) -> None:
     result = packmime("run", "charge-profile", "--only", "insert", "--out", tmp_path / "r", *IN_PROCESS)
-    assert verdicts(tmp_path / "r")["charge.ends"] == "not run"
+    document = json.loads((tmp_path / "r/judged/001/verdicts.json").read_text("utf-8"))
+    reasons = {one["why"] for one in document["verdicts"] if one["verdict"] == "not run"}
+    assert reasons == {"its step was left out (--only)"}
+    judgement = json.loads((tmp_path / "r/judged/001/judgement.json").read_text("utf-8"))
+    assert judgement["deviations"] == ["steps were left out (--only): charge"]
     assert result.exit_code == 0, result.output
+
+
+def test_ctrl_c_while_judging_says_how_to_finish(
+    packmime: Callable, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def pressed(*_: object) -> None:
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(running, "judge_and_report", pressed)
+    result = packmime("run", "charge-profile", "--only", "insert", "--out", tmp_path / "r", *IN_PROCESS)
+    assert result.exit_code == 3
+    assert f"the record is sealed: `packmime judge {tmp_path / 'r'}`" in result.output
+
+
+def test_a_folder_name_that_cannot_be_is_refused(packmime: Callable, tmp_path: Path) -> None:
+    result = packmime("run", "charge-profile", "--out", tmp_path / ("n" * 300), *IN_PROCESS)
+    assert result.exit_code == 2
+    assert "name another folder" in result.output
+
+
+@pytest.mark.skipif(sys.platform == "win32", reason="the C locale is POSIX")
+def test_an_output_that_knows_no_ohm_sign_does_not_end_a_run(command: Callable, tmp_path: Path) -> None:
+    plain = {"LC_ALL": "C", "PYTHONUTF8": "0", "PYTHONCOERCECLOCALE": "0"}
+    with command("run", "charge-profile", "--out", "r", *IN_PROCESS, cwd=tmp_path, **plain) as process:
+        said = process.stdout.read()
+    assert process.returncode == 0, said
+    assert "Overall: pass" in said
 
 
 def test_parameters_changed_on_the_command_line_are_deviations(packmime: Callable, tmp_path: Path) -> None:

@@ -1,6 +1,6 @@
 """The way to the safe state, on the virtual bench with a charger at 3 A, with everything that can go wrong on it.
 
-The order is the design's; "never load or supply off before the current is gone" is held against the circuit itself.
+"Never load or supply off before the current is gone" is held against the circuit itself.
 """
 
 from __future__ import annotations
@@ -26,15 +26,17 @@ from drivers.text.faults import Faults
 from drivers.trouble import LinkFault
 from drivers.virtual.charger_file import ChargerFile, load_charger
 from drivers.virtual.library import BenchLibrary
+from drivers.virtual.terminals import OPEN
 from drivers.virtual.trace import LOAD_CURRENT, NODE, SHUNT, SUPPLY_CURRENT
 from drivers.virtual.world import World
 
-SHIPPED = Path(safe.__file__).parents[1] / "procedures" / "benches" / "virtual-mains-in-process.yaml"
+BENCHES = Path(safe.__file__).parents[1] / "procedures" / "benches"
 NAMES = ("node_supply", "node_load", "meter_node", "meter_charger", "meter_shunt", "mains")
 SUPPLY, LOAD, NODE_METER, CHARGER_METER, SHUNT_METER, MAINS = NAMES
 NAN = "9.91E37"  # SCPI-1999, volume 1, 7.2.1.5
-QUIET_A = 0.050  # design, section 11
+QUIET_A = 0.050  # below it the charging current counts as gone
 LONGEST_s = 30.0
+COILS, OUTPUTS = ("relays", "ROUT:CLOS? (@1:5,11:14)"), ("cells", "OUTP? (@1:4)")
 
 
 @dataclass
@@ -116,9 +118,9 @@ class Stage:
 
 
 @cache
-def files() -> tuple[BenchFile, ChargerFile]:
+def files(bench: str = "virtual-mains-in-process", name: str = "sprayer-power") -> tuple[BenchFile, ChargerFile]:
     faults = Faults()
-    file, charger = load_bench(SHIPPED, faults), load_charger("sprayer-power", faults)
+    file, charger = load_bench(BENCHES / f"{bench}.yaml", faults), load_charger(name, faults)
     faults.raise_if_any()
     assert file is not None
     assert charger is not None
@@ -127,10 +129,13 @@ def files() -> tuple[BenchFile, ChargerFile]:
 
 def dark(file: BenchFile | None = None) -> Stage:
     """A bench on which nothing is on and nothing was ever set."""
-    world = World.build(files()[0].bench, files()[1], 1)
+    return opened(file or files()[0], World.build(files()[0].bench, files()[1], 1))
+
+
+def opened(file: BenchFile, world: World) -> Stage:
     library = BenchLibrary.around(world)
     clock = VirtualClock(world.advance)
-    bench = open_bench(file or files()[0], Access(library, library.addresses, clock, 1))
+    bench = open_bench(file, Access(library, library.addresses, clock, 1))
     exchange = Wrapped(bench.exchange, world, clock)
     bench.exchange = exchange
     return Stage(bench, world, exchange)
@@ -147,6 +152,33 @@ def charging(file: BenchFile | None = None) -> Stage:
     true_A = stage.world.circuit.value(SHUNT, stage.world.now) / stage.world.circuit.constants.shunt_ohm
     assert true_A == pytest.approx(3.0, rel=0.02)
     return stage
+
+
+def inserted() -> Stage:
+    """The same charge through all of the pack's contacts, with its cell taps up."""
+    file, charger = files("virtual-in-process", "sprayer")
+    stage = opened(file, World.build(file.bench, charger, 1))
+    bench, signals = stage.bench, stage.bench.signals
+    assert signals.power is not None
+    assert signals.id is not None
+    assert signals.thermistor is not None
+    bench.hands.do([signals.id.resistor.to(3e3), signals.thermistor.resistor.to(10e3)])
+    bench.hands.do([deed for tap in signals.taps for deed in (tap.limit(0.1), tap.volts(3.7), tap.on)])
+    bench.hands.do([Deed(bench.supply, "voltage", 18.5), Deed(bench.supply, "current_limit", 4.1)])
+    bench.hands.do([Deed(bench.load, "constant_current"), Deed(bench.load, "current", 3.75)])
+    bench.hands.do([Deed(bench.supply, "on"), Deed(bench.load, "on"), Deed(bench.mains, "on")])
+    bench.hands.do([contact.close for contact in reversed(signals.contacts)])  # B- first, B+ last
+    bench.clock.wait_until(8.0)
+    assert stage.world.circuit.value(SHUNT, stage.world.now) == pytest.approx(3.0 * bench.shunt_ohm, rel=0.02)
+    assert asked(stage, *COILS) == "1,1,1,1,1,1,1,1,1"
+    assert asked(stage, *OUTPUTS) == "1,1,1,1"
+    assert OPEN not in stage.world.circuit.terminals.contacts.values()
+    return stage
+
+
+def asked(stage: Stage, name: str, question: str) -> str:
+    """What an instrument answers past the walk and its exchange, which must not be their own witnesses."""
+    return stage.world.instruments[name].stream(f"{question}\n".encode()).decode().rstrip("\n")
 
 
 def lost(*names: str, since: int = 0, until: int = 10**9) -> Callable[[Job, int, float], Reply | None]:
@@ -195,7 +227,7 @@ def test_the_drain_ends_before_the_outputs_go_off() -> None:
     switched = next(said.time_s for said in stage.exchange.said if "INP OFF" in said.text)
     looks = [said for said in stage.exchange.said if said.job.instrument == NODE_METER and said.time_s < switched]
     assert looks[-1].time_s <= switched
-    assert 0.05 <= safe.DRAIN_A <= 0.10  # design, section 11, step 6
+    assert 0.05 <= safe.DRAIN_A <= 0.10  # the load keeps 50 to 100 mA until the node is down
 
 
 def test_all_witnesses_are_asked_in_one_exchange() -> None:
@@ -242,6 +274,53 @@ def test_a_load_that_has_tripped_and_does_not_confirm_is_not_called_safe() -> No
     )
     assert not state.verified
     assert "load not proven off" in state.words[-1]
+
+
+# -- the pack's other contacts ------------------------------------------------------------------------------------
+
+
+def test_cell_taps_go_down_before_the_drain_and_contacts_open_after_it() -> None:
+    """By the instruments' own word, and by what the circuit then is."""
+    stage = inserted()
+    state = stage.walk()
+    assert state.verified
+    assert stage.really_safe
+    assert asked(stage, *COILS) == "0,0,0,0,0,0,0,0,0"
+    assert asked(stage, *OUTPUTS) == "0,0,0,0"
+    terminals = stage.world.circuit.terminals
+    assert set(terminals.contacts.values()) == {OPEN}
+    assert not any(tap.cell.on for tap in terminals.taps)
+    taps = [f"cells OUTP OFF,(@{tap});:OUTP? (@{tap});:SYST:ERR?" for tap in range(1, 5)]
+    contacts = [
+        f"relays ROUT:OPEN (@{channel});:ROUT:CLOS? (@{channel});:SYST:ERR?"
+        for channel in (1, 3, 4, 5, 11, 12, 13, 14, 2)  # as a removal does: B+ first, B- last
+    ]
+    deeds = stage.deeds()
+    assert [text.split()[0] for text in deeds[:1]] == ["mains"]
+    assert deeds[1:5] == taps
+    assert [" ".join(text.split()[:2]) for text in deeds[5:9]] == [
+        "node_load CURR", "node_supply VOLT", "node_load INP", "node_supply OUTP",
+    ]  # fmt: skip
+    assert deeds[9:] == contacts
+    stage.assert_outputs_were_left_until_quiet()
+
+
+@pytest.mark.parametrize(
+    ("name", "told", "other", "off"),
+    [
+        ("relays", "contacts not proven open", OUTPUTS, "0,0,0,0"),
+        ("cells", "cell taps not proven off", COILS, "0,0,0,0,0,0,0,0,0"),
+    ],
+)
+def test_contacts_or_taps_that_do_not_answer_are_not_called_safe_and_hold_up_nothing_else(
+    name: str, told: str, other: tuple[str, str], off: str
+) -> None:
+    stage = inserted()
+    state = stage.walk(lost(name))
+    assert not state.verified
+    assert state.words[-1] == f"NOT SAFE: {told}"
+    assert asked(stage, *other) == off
+    assert stage.really_safe
 
 
 # -- the charger does not stop ------------------------------------------------------------------------------------
@@ -522,7 +601,10 @@ def test_whatever_goes_wrong_nothing_is_let_go_of_too_early_or_called_safe_wrong
 
 
 @given(
-    st.sampled_from([SupplyMode.OFF, SupplyMode.CONSTANT_VOLTAGE]), st.floats(-1, 4), st.floats(-1, 4), st.floats(-1, 4)
+    st.sampled_from([SupplyMode.OFF, SupplyMode.CONSTANT_VOLTAGE]),
+    st.floats(-0.9, 4),
+    st.floats(-0.9, 4),
+    st.floats(-0.9, 4),
 )
 def test_two_of_three_witnesses(mode: SupplyMode, shunt_A: float, ballast_A: float, difference_A: float) -> None:
     look = safe.Look(
@@ -538,3 +620,7 @@ def test_two_of_three_witnesses(mode: SupplyMode, shunt_A: float, ballast_A: flo
     assert look.sourcing is (not all(quiet))
     blind = replace(look, shunt_A=math.nan, supply=None)
     assert not blind.quiet
+    # A meter behind an open contact reads 0 V against the node's 18 V: no current, and no witness either.
+    behind = replace(look, ballast_A=-180.0)
+    assert behind.quiet is (quiet[0] and quiet[2])
+    assert not replace(behind, supply=None).quiet

@@ -12,7 +12,8 @@ import pytest
 from drivers.text.measures import Limit
 from sequencer.analysis.classes import Seen
 from sequencer.analysis.estimates import Estimate
-from sequencer.engine.swept import Point, Points
+from sequencer.analysis.intervals import decide_interval
+from sequencer.engine.swept import Point, Points, resistor_lines
 
 Rehearse = Callable[..., Any]
 AMPERES = Limit("current").read
@@ -25,16 +26,20 @@ def point(role: str, ohm: float | None, kind: str = "charges", *, void: bool = F
     return Point(role, ohm, None, at_s, at_s + 15.0, Seen(kind, current, 0 if flows else None, kind, flows), void)  # type: ignore[arg-type]
 
 
+def accuracy_of(*spans: Any) -> Any:
+    dialect = SimpleNamespace(name="some", accuracy=SimpleNamespace(resistance=spans))
+    return SimpleNamespace(file=SimpleNamespace(at=lambda place: ("decade", None, dialect)))
+
+
 def points(*made: Point, given_up: str | None = None, ended: str = "complete") -> Points:
     """Points without a record: what is read from traces is not asked for."""
     silent = SimpleNamespace(within=lambda *span: SimpleNamespace(value=SimpleNamespace(size=0)))
     evidence: Any = SimpleNamespace(trace=lambda name: silent, ended=ended, manifest={"why": "stopped by Ctrl-C"})
-    accuracy: Any = SimpleNamespace(file=SimpleNamespace(at=lambda place: ("decade", None, DIALECT)))
-    return Points(evidence, accuracy, "id", tuple(made), given_up)
+    return Points(evidence, accuracy_of(SPAN), "id", tuple(made), given_up)
 
 
 SPAN = SimpleNamespace(range=1e6, set=0.001, residual=0.3)
-DIALECT = SimpleNamespace(name="some", accuracy=SimpleNamespace(resistance=(SPAN,)))
+FINE = SimpleNamespace(range=2e3, set=0.0002, residual=0.05)  # of the same resistor, up to 2 kΩ
 
 
 def label(seen: Seen) -> str:
@@ -53,6 +58,41 @@ def test_an_edge_lies_between_the_last_alike_and_the_first_unlike() -> None:
     assert found.budget is not None
     # resistor 0.1 % of 1.25 kΩ + 0.3 Ω = 1.55 Ω, contact 0.1 Ω, both rectangular (JCGM 100:2008, 4.3.7)
     assert found.budget.u == pytest.approx(math.hypot(1.55, 0.1) / math.sqrt(3))
+
+
+@pytest.mark.parametrize(
+    ("ohm", "half_ohm", "u_ohm"),
+    [  # half width: set times the resistance, plus residual; u: half / sqrt(3) (JCGM 100:2008, 4.3.7); worked by hand
+        (1e3, 0.25, 0.14434),  # 0.02 % of 1 kΩ is 0.2 Ω, and 0.05 Ω
+        (2e3, 0.45, 0.25981),  # still the finer span at its very end
+        (3.7e3, 4.0, 2.30940),  # 0.1 % of 3.7 kΩ is 3.7 Ω, and 0.3 Ω
+        (27e3, 27.3, 15.76166),
+    ],
+)
+def test_a_resistor_is_as_uncertain_as_its_narrowest_span_states(ohm: float, half_ohm: float, u_ohm: float) -> None:
+    resistor, contact = resistor_lines(accuracy_of(SPAN, FINE), "id.resistor", ohm)
+    assert (resistor.name, resistor.source) == ("decade", "accuracy, dialect some")
+    assert resistor.u * math.sqrt(3) == pytest.approx(half_ohm)
+    assert resistor.u == pytest.approx(u_ohm, abs=1e-5)
+    assert contact.name == "contact"
+    assert contact.u == pytest.approx(0.057735, abs=1e-6)  # 0.1 Ω / sqrt(3)
+
+
+def test_a_resistance_beyond_every_span_has_no_accuracy() -> None:
+    with pytest.raises(ValueError, match=r"decade: its dialect states no accuracy for 1\.5 MΩ"):
+        resistor_lines(accuracy_of(SPAN, FINE), "id.resistor", 1.5e6)
+
+
+@pytest.mark.parametrize(("limit_ohm", "verdict"), [(1221.8, "pass"), (1221.7, "conditional pass")])
+def test_the_guard_band_of_an_edge_is_twice_its_resistors_uncertainty(limit_ohm: float, verdict: str) -> None:
+    """At 1.21 kΩ 1.51 Ω and 0.1 Ω, both rectangular: u = 0.87371 Ω, w = 2 u = 1.74742 Ω; 1220 Ω + w = 1221.747 Ω."""
+    found = points(point("in", 1e3), point("end", 1.2e3), point("edge", 1.22e3, "no charge"))
+    edge = found.edge(ROLES, "id.resistor", label)
+    assert edge.budget is not None
+    assert edge.budget.u == pytest.approx(0.87371, abs=1e-5)
+    decision = decide_interval(1.2e3, 1.22e3, edge.budget.u, 2.0, None, limit_ohm, "guarded", "Ω")
+    assert decision.guard_band == pytest.approx(1.74742, abs=1e-5)
+    assert decision.verdict == verdict
 
 
 def test_an_edge_inside_the_band_is_an_edge() -> None:
@@ -105,6 +145,19 @@ def test_that_nothing_charges_takes_every_point_and_that_something_does_takes_on
 def test_a_void_point_makes_no_state() -> None:
     found = points(point("p0", 1e3, "no charge", void=True), point("p1", 2e3, "no charge")).state(["p0", "p1"])
     assert found.trouble == "the control after 1 kΩ failed twice; what was seen there counts for nothing"
+
+
+@pytest.mark.parametrize(
+    ("role", "ohm", "where"), [("open", None, "open"), ("short", None, "short"), ("low_outside", 500.0, "500 Ω")]
+)
+def test_no_charge_where_none_is_expected_counts_for_nothing_after_a_failed_control(
+    role: str, ohm: float | None, where: str
+) -> None:
+    """A charger that has latched does not charge anywhere, so its silence alone would pass."""
+    void = points(point(role, ohm, "no charge", void=True)).state([role])
+    assert void.seen is None
+    assert void.trouble == f"the control after {where} failed twice; what was seen there counts for nothing"
+    assert points(point(role, ohm, "no charge")).state([role]).seen == "no charge"
 
 
 def test_a_band_that_is_silent_at_one_end_fails_and_one_that_was_cut_short_does_not() -> None:
