@@ -69,7 +69,9 @@ def cell_map(walks: Sequence[Json], verdicts: Iterable[Json], specification: Spe
 def _row(cell: int, legs: Sequence[Json], judged: Mapping[str, Json]) -> Row:
     out = [leg for leg in legs if leg.get("way") == "out"]
     charging = [number(leg.get("cell_V")) for leg in out if leg.get("stop_s") is None]
-    stopped = next((leg for leg in out if leg.get("stop_s") is not None), None)
+    # It may stop on the quick way to the search too; a setting that it let pass there stands too briefly for a dot.
+    upward = [leg for leg in legs if leg.get("way") == "approach"] + out
+    stopped = next((leg for leg in upward if leg.get("stop_s") is not None), None)
     name = f"tap_trip.cell{cell}.voltage"
     voltage = [judged[name]] if name in judged else []
     return Row(

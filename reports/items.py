@@ -60,7 +60,7 @@ class JudgementFile(VerdictFile):
 
 
 class LimitItem(pytest.Item):
-    """One limit, with the outcome that design 5 gives its verdict."""
+    """One limit, with the outcome in pytest that belongs to its verdict."""
 
     parent: VerdictFile
 

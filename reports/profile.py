@@ -73,7 +73,7 @@ class Profile:
 
 
 def stages_of(classification: Mapping[str, Any]) -> tuple[Stage, ...]:
-    """The stages of a classification (design 5) whose times are known, numbered, in words."""
+    """The stages of a classification whose times are known, numbered, in words."""
     return tuple(
         Stage(number, str(stage["kind"]), stage_words(stage["kind"]), float(stage["start_s"]), float(stage["end_s"]))
         for number, stage in enumerate(classification.get("stages") or (), 1)

@@ -18,6 +18,8 @@ if TYPE_CHECKING:
     from sequencer.model.curves import Curve
 
 Json = Mapping[str, Any]
+# Stages whose voltage the classifier states as a mean.
+_MEAN_VOLTAGE = ("cv", "float", "pulse")
 
 
 @dataclass(frozen=True)
@@ -154,11 +156,13 @@ def _basis(verdict: Json, unit: str) -> tuple[str, ...]:
     if verdict.get("p_conform") is not None:
         p = wording.probability(float(verdict["p_conform"]))
         parts.append(f"p {p}" if p[0] in "<>" else f"p = {p}")
+        if verdict.get("kind") == "class":  # the classifier's rules give it; no set of known charges was counted for it
+            parts.append(wording.BY_RULE)
     return tuple(parts)
 
 
 def stage_rows(classification: Json) -> tuple[StageRow, ...]:
-    """The stages of a classification (design 5), numbered from 1."""
+    """The stages of a classification, numbered from 1."""
     return tuple(
         StageRow(
             number=number,
@@ -166,11 +170,17 @@ def stage_rows(classification: Json) -> tuple[StageRow, ...]:
             span=_span(stage.get("start_s"), stage.get("end_s")) or wording.NOTHING,
             duration=_duration(stage.get("start_s"), stage.get("end_s")),
             current=_estimate(stage.get("current_A"), "A"),
-            voltage=_estimate(stage.get("voltage_V"), "V"),
+            voltage=_stage_voltage(stage),
             charge=si(float(stage["charge_Ah"]), "Ah", 4) if stage.get("charge_Ah") is not None else wording.NOTHING,
         )
         for number, stage in enumerate(classification.get("stages") or (), 1)
     )
+
+
+def _stage_voltage(stage: Json) -> str:
+    """The mean where the voltage is held or returns, else the voltage to which the stage led, and that it is this."""
+    voltage = _estimate(stage.get("voltage_V"), "V")
+    return voltage if voltage == wording.NOTHING or stage["kind"] in _MEAN_VOLTAGE else f"{voltage} at its end"
 
 
 def _span(start_s: float | None, end_s: float | None) -> str:

@@ -17,6 +17,7 @@ if TYPE_CHECKING:
 START, RUN = 0.0, 1.0
 HALF = 0.2  # of a row's bar
 MAIN_in, SIDE_in, BOTTOM_in = 1.9, 0.65, 0.5
+RELEASE_in = 1.15  # what "goes on at ..." takes, with its arrow's head
 
 
 def draw_temperature_map(shown: TemperatureMap, *, width_in: float = 8.6) -> Figure:
@@ -39,8 +40,8 @@ def draw_temperature_map(shown: TemperatureMap, *, width_in: float = 8.6) -> Fig
         for row, sides in ((START, shown.start), (RUN, shown.run)):
             _window(main, row, sides)
         plot_marks(main, [(mark.celsius or 0.0, START, mark.style) for mark in shown.marks])
-        for side in shown.run:
-            _walk(main, side)
+        for side, lower_pt in zip(shown.run, (0, _lower_pt(shown, main_in)), strict=True):
+            _walk(main, side, lower_pt)
         contacts = [("open", shown.open), ("short", shown.short)]
         for axes, (name, marks) in zip((cold, hot), contacts if shown.open_is_cold else contacts[::-1], strict=True):
             _beside(axes, name, marks)
@@ -91,7 +92,16 @@ def _value(found: Bracket) -> str:
     return f"{found.low:.1f} to {found.high:.1f} °C"
 
 
-def _walk(axes: Axes, side: Side) -> None:
+def _lower_pt(shown: TemperatureMap, width_in: float) -> int:
+    """How far the hot end's release is written below its arrow: both point inward, and two words need room."""
+    cold_C, hot_C = (side.released_C for side in shown.run)
+    if cold_C is None or hot_C is None:
+        return 0
+    between_in = (hot_C - cold_C) / (shown.span_C[1] - shown.span_C[0]) * width_in
+    return 0 if between_in > 2 * RELEASE_in else 11
+
+
+def _walk(axes: Axes, side: Side, lower_pt: int) -> None:
     """Steps of a walk as small dots where the charge went on, a cross where it stopped, an arrow where it resumed."""
     going = [step.celsius for step in side.steps if step.out and step.charged]
     axes.plot(going, [RUN] * len(going), linestyle="none", marker="o", markersize=2.6, color=VOLTAGE, zorder=5)
@@ -111,11 +121,11 @@ def _walk(axes: Axes, side: Side) -> None:
             linestyle="none",
             zorder=6,
         )
-        _release(axes, side.released_C, towards)
+        _release(axes, side.released_C, towards, lower_pt)
 
 
-def _release(axes: Axes, celsius: float, towards: str) -> None:
-    away, ha = ((-6, 0), "right") if towards == "<" else ((6, 0), "left")
+def _release(axes: Axes, celsius: float, towards: str, lower_pt: int) -> None:
+    away, ha = ((-6, -lower_pt), "right") if towards == "<" else ((6, -lower_pt), "left")
     spot, words = (celsius, RUN - HALF - 0.09), f"goes on at {celsius:.1f} °C"
     axes.annotate(words, spot, away, textcoords="offset points", ha=ha, va="center", fontsize=8, color=CURRENT)
 

@@ -16,6 +16,8 @@ if TYPE_CHECKING:
 
 Json = Mapping[str, Any]
 SIDES = ("low", "high")
+# A stop on the quick way to the search is the stop of the walk; only a step "back" can tell that the charge resumed.
+_OUTWARD = ("probe", "approach", "out")
 
 
 @dataclass(frozen=True)
@@ -28,7 +30,10 @@ class Limit:
 
 @dataclass(frozen=True)
 class Step:
-    """One setting of the thermistor during a charge. out : outward.   charged : whether the charge went on there."""
+    """One setting of the thermistor during a charge. out : outward, else back.   charged : whether the charge went on.
+
+    An outward setting that the charge let pass on the quick way to the search is none: it stands too briefly to tell.
+    """
 
     celsius: float
     out: bool
@@ -135,11 +140,15 @@ def _limit(band: Band, *, cold: bool) -> Limit | None:
 def _steps(walks: Iterable[Json]) -> tuple[Step, ...]:
     steps = []
     for walk in walks:
-        celsius = number(walk.get("celsius"))
-        if celsius is not None:
-            out = walk.get("way") == "out"
-            charged = walk.get("stop_s") is None if out else bool(walk.get("goes_on"))
-            steps.append(Step(celsius, out, charged))
+        celsius, way = number(walk.get("celsius")), walk.get("way")
+        if celsius is None:
+            continue
+        if way == "back":
+            steps.append(Step(celsius, out=False, charged=bool(walk.get("goes_on"))))
+        elif way in _OUTWARD:
+            charged = walk.get("stop_s") is None
+            if not (charged and way == "approach"):
+                steps.append(Step(celsius, out=True, charged=charged))
     return tuple(steps)
 
 
@@ -188,5 +197,7 @@ def _walked(run: tuple[Side, Side]) -> str:
             on = f"went on again at {side.released_C:.1f} °C"
             told.append(f"at the {word} end it stopped at {stopped.celsius:.1f} °C and {on}")
         else:
-            told.append(f"at the {word} end it stopped at {stopped.celsius:.1f} °C and did not go on by itself")
+            walked = any(not step.out for step in side.steps)
+            on = "did not go on by itself" if walked else "was not walked back"
+            told.append(f"at the {word} end it stopped at {stopped.celsius:.1f} °C and {on}")
     return f"Run, small dots where a running charge went on: {'; '.join(told)}." if told else ""

@@ -75,7 +75,7 @@ class View:
 def build(source: Source) -> View:
     """The view of a judgement. Same source, same view: no clock, no machine, no randomness is read.
 
-    KeyError or ValueError where the judgement lacks what design 5 and 13 demand of it.
+    KeyError or ValueError where the judgement lacks what the report needs of it.
     """
     manifest, judgement = source.manifest, source.judgement
     verdicts = source.verdicts["verdicts"]
@@ -84,14 +84,15 @@ def build(source: Source) -> View:
     )
     classification = source.findings.get("classification") or {}
     profile = _profile(source, classification)
+    rehearsal = bool(source.verdicts["rehearsal"]) or bool(manifest.get("rehearsal"))
     return View(
-        rehearsal=bool(source.verdicts["rehearsal"]) or bool(manifest.get("rehearsal")),
+        rehearsal=rehearsal,
         overall=wording.verdict_word(source.verdicts["overall"]),
         tally=wording.tally([str(verdict["verdict"]) for verdict in verdicts]),
         model=clean(header.part(manifest, "specification").get("model")),
         procedure=clean(header.part(manifest, "procedure").get("name")),
         purpose=clean(header.part(manifest, "procedure").get("purpose")),
-        dated=header.dated(manifest),
+        dated=header.dated(manifest, virtual=rehearsal),
         duration=wording.clock_time(float(manifest.get("duration_s") or 0.0)),
         run=clean(manifest.get("run")),
         number=clean(source.name),
@@ -195,7 +196,7 @@ def _algorithm(classification: Mapping[str, Any]) -> str:
     confidence = classification.get("confidence")
     words = f"Read as {clean(classification['algorithm'])}"
     if confidence is not None:
-        words += f", confidence {wording.probability(float(confidence))}"
+        words += f", confidence {wording.probability(float(confidence))} ({wording.BY_RULE})"
     flags = ", ".join(clean(flag) for flag in classification.get("flags") or ())
     return words + (f"; flags: {flags}." if flags else ".")
 

@@ -16,7 +16,7 @@ class Word(NamedTuple):
     style: str
 
 
-# Worst first: design 7 in the order of ILAC-G8:09/2019, 4.2.3, then what could not be judged.
+# Worst first: the four words of ILAC-G8:09/2019, 4.2.3, in its order; what could not be judged lies between them.
 VERDICTS: Mapping[str, Word] = {
     word: Word(word, word.replace(" ", "-"))
     for word in ("fail", "conditional fail", "inconclusive", "not run", "conditional pass", "pass", "not applicable")
@@ -54,7 +54,17 @@ CAUTIONS = (
     "The results concern only the sample that was tested, as it was, when it was tested.",
 )
 
-NOT_COVERED = ("touch current", "dielectric strength", "earth bond", "EMC", "digital data contacts")
+NOT_COVERED = (
+    "touch current",
+    "dielectric strength",
+    "earth bond",
+    "EMC",
+    "digital data contacts",
+    "balancing",
+    "deep-discharge starts",
+)
+
+BY_RULE = "set by rule, not calibrated"
 
 NOTHING = "–"
 
@@ -154,6 +164,7 @@ def utc(stamp: object) -> str:
 
 
 __all__ = [
+    "BY_RULE",
     "CAUTIONS",
     "NOTHING",
     "NOT_COVERED",

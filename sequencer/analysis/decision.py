@@ -93,6 +93,7 @@ def decide_state(seen: str | bool | None, expected: str | bool, *, what: str = "
 def decide_class(seen: str, probability: float, expected: str, *, needed: float = 0.9) -> Decision:
     """A class seen with a probability against the one declared; a probability below `needed` is inconclusive.
 
+    The classifier's probability is set by rule and not calibrated, so people read it as "confidence".
     p_conform is the probability that the declared class is the true one: exact for a match, an upper bound else.
     Raises ValueError for a probability outside 0 ... 1.
     """
@@ -103,11 +104,11 @@ def decide_class(seen: str, probability: float, expected: str, *, needed: float 
         return Decision("inconclusive", None, None, f"the record does not show which class; declared is {expected}")
     p_conform = probability if seen == expected else 1.0 - probability
     if probability < needed:
-        why = f"seen as {seen}, with probability {probability:.2f} where {needed:.2f} is needed; declared is {expected}"
+        why = f"seen as {seen}, with confidence {probability:.2f} where {needed:.2f} is needed; declared is {expected}"
         return Decision("inconclusive", None, p_conform, why)
     if seen == expected:
-        return Decision("pass", None, p_conform, f"{seen}, as declared (probability {probability:.2f})")
-    return Decision("fail", None, p_conform, f"{seen} (probability {probability:.2f}); declared is {expected}")
+        return Decision("pass", None, p_conform, f"{seen}, as declared (confidence {probability:.2f})")
+    return Decision("fail", None, p_conform, f"{seen} (confidence {probability:.2f}); declared is {expected}")
 
 
 def overall(verdicts: Iterable[str]) -> Verdict:

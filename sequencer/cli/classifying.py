@@ -107,7 +107,7 @@ def _chosen(columns: str, faults: Faults) -> dict[str, str]:
 
 def _print(found: Classification) -> None:
     shown = found.as_dict()
-    typer.echo(f"{shown['algorithm']} (probability {shown['confidence']:.2f}): {shown['why']}")
+    typer.echo(f"{shown['algorithm']} (confidence {shown['confidence']:.2f}): {shown['why']}")
     for stage in shown["stages"]:
         span = f"{clock_time(stage['start_s'])} to {clock_time(stage['end_s'])}"
         current, voltage = stage["current_A"], stage["voltage_V"]

@@ -36,6 +36,8 @@ class Judged:
     exit_status: int
     bench_trip: bool
     report_s: float
+    deviations: tuple[str, ...] = ()
+    changed: tuple[str, ...] | None = None  # against the judgement before it; None where there was none
 
 
 def judge_and_report(record: Path, says: Says, asked: Rejudging | None = None) -> Judged:
@@ -48,7 +50,16 @@ def judge_and_report(record: Path, says: Says, asked: Rejudging | None = None) -
     write_report(judgement.folder)
     publish(judgement.folder)
     spent = wall_seconds() - begun
-    return Judged(judgement.folder, judgement.document, judgement.exit_status, judgement.bench_trip, spent)
+    noted = json_text.loads((judgement.folder / "judgement.json").read_text("utf-8"))
+    return Judged(
+        judgement.folder,
+        judgement.document,
+        judgement.exit_status,
+        judgement.bench_trip,
+        spent,
+        tuple(noted["deviations"]),
+        tuple(noted["changed"]) if noted["number"] > 1 else None,
+    )
 
 
 def judge_command(

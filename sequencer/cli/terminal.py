@@ -139,11 +139,26 @@ class Terminal:
         self._print(table)
         overall = judged.document["overall"]
         self._print(Text.assemble("Overall: ", (overall, STYLES[overall])))
+        for deviation in judged.deviations:
+            self.say(f"Deviation: {deviation}")
+        if judged.changed is not None:
+            self._changes(judged.changed)
         if judged.document["rehearsal"]:
             self.say("This was a rehearsal: it says something about the procedure, nothing about a charger.")
         else:
             self.say(CAUTION)
         self.say(f"Report: {judged.folder.parent.parent / 'report.html'}")
+
+    def _changes(self, changed: tuple[str, ...]) -> None:
+        """Against the judgement before: changed verdicts by name, the rest as a number."""
+        verdicts = [one for one in changed if one.startswith("overall: ") or ": verdict " in one]
+        for one in verdicts:
+            self.say(f"Changed: {one}")
+        rest = len(changed) - len(verdicts)
+        if not verdicts:
+            self.say("No verdict differs from the judgement before.")
+        if rest:
+            self.say(f"{rest} more differences, in values and words: see judgement.json.")
 
     def figures(self, performance: dict[str, float], judged: Judged) -> None:
         """What the run cost."""

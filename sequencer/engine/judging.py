@@ -34,6 +34,9 @@ TRIP_LIMITS = {
     "charge": ("charge.ends",),
 }
 
+#: How the limits begin that a kind of step gives findings for.
+GIVES = {"charge": "charge.", "sweep_id": "id.", "sweep_temperature": "temperature.", "raise_cell": "tap_trip."}
+
 
 @dataclass(frozen=True)
 class Rejudging:
@@ -70,7 +73,7 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
     write_json(folder / "findings.json", {**_findings_document(found, classification), **_maps(evidence)})
     write_json(folder / "budgets.json", {name: one.budget.as_dict() for name, one in found.items() if one.budget})
     write_json(folder / "judgement.json", _judgement_document(evidence, asked, folder, document, previous, utc))
-    left_out = min(_left_out(evidence), words.count("not run"))
+    left_out = sum(one["verdict"] == "not run" and _given_up(one["limit"], evidence) for one in verdicts)
     trip = evidence.trip
     return Judgement(folder, document, exit_status(words, left_out=left_out), bool(trip and trip["cause"] == "bench"))
 
@@ -159,6 +162,8 @@ def _tripped_voltage(evidence: Evidence, accuracy: Accuracy, moment_s: float, wo
 
 def _not_made(row: LimitRow, evidence: Evidence) -> Found:
     """A finding that the bench tripped on the way to is inconclusive; one that was not looked for was not run."""
+    if _given_up(row.name, evidence):
+        return Found(absent="its step was left out (--only)")
     trip, why = evidence.trip, _why_absent(evidence)
     if trip is not None and trip["cause"] == "bench" and row.finding != "charges" and evidence.begun("charge"):
         return Found(trouble=why)
@@ -177,9 +182,15 @@ def _why_absent(evidence: Evidence) -> str:
             return f"the run ended early ({ended}): {evidence.manifest.get('why') or 'no reason was recorded'}"
 
 
-def _left_out(evidence: Evidence) -> int:
-    """How many verdicts a person chose not to have (--only)."""
-    return 10**6 if evidence.events("step-left-out") else 0
+def _left_out(evidence: Evidence) -> list[str]:
+    """Kinds of step that a person left out (--only), each once, in the order of the procedure."""
+    kinds = dict.fromkeys(one["does"] for one in evidence.events("step-left-out"))
+    return [kind for kind in kinds if evidence.begun(kind) is None]
+
+
+def _given_up(limit: str, evidence: Evidence) -> bool:
+    """Whether a person chose not to have a verdict on this limit."""
+    return any(limit.startswith(GIVES[kind]) for kind in _left_out(evidence) if kind in GIVES)
 
 
 # verdicts
@@ -308,6 +319,8 @@ def _judgement_document(
 
 def _deviations(evidence: Evidence, asked: Rejudging) -> list[str]:
     said = []
+    if _left_out(evidence):
+        said.append(f"steps were left out (--only): {', '.join(_left_out(evidence))}")
     if asked.rule is not None:
         said.append(f"every limit was judged by the rule '{asked.rule}', whatever the specification says")
     if (

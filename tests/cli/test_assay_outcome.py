@@ -1,4 +1,4 @@
-"""What verdicts come to: found by the right limits, missed, unclear; exit status. Design section 5: 0, 1, 4."""
+"""What verdicts come to: found by the right limits, missed, unclear; exit status 0, 1 or 4."""
 
 from __future__ import annotations
 
@@ -82,8 +82,8 @@ def test_nothing_but_found_claims_without_false_alarms_is_met(sound: list[str], 
     assert (exit_status(outcomes, []) == 0) == met
 
 
-def test_document_is_that_of_the_design() -> None:
-    """Design section 5: these keys, no others."""
+def test_the_document_holds_what_its_readers_need() -> None:
+    """These keys, no others."""
     shown = document("acceptance", [SOUND, outcome({"a": "fail"}, ("a",))])
     assert set(shown) == {"procedure", "sound", "defects"}
     assert shown["sound"] == [{"charger": "sprayer", "seed": 1, "false_alarms": [], "inconclusive": []}]

@@ -43,7 +43,7 @@ def test_json_is_one_document(packmime: Callable, log: Path) -> None:
 def test_words_and_plot(packmime: Callable, log: Path, tmp_path: Path) -> None:
     result = packmime("classify", log, "--plot", tmp_path / "charge.svg")
     assert result.exit_code == 0
-    assert "cc-cv (probability" in result.output
+    assert "cc-cv (confidence" in result.output
     assert "voltage limit 4.2" in result.output
     assert (tmp_path / "charge.svg").read_text("utf-8").lstrip().startswith("<?xml")
 

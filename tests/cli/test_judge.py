@@ -50,6 +50,8 @@ def test_judged_again(packmime: Callable, record: Path) -> None:
     )
     assert simple.exit_code == 0, simple.output
     assert words(read(record, "003"))["charge.voltage"] == "pass"
+    assert "Deviation: every limit was judged by the rule 'simple'" in simple.output
+    assert "Changed: charge.voltage: verdict pass, was conditional pass" in simple.output
     told = read(record, "003", "judgement")
     assert told["person"] == "A. Gardener"
     assert any("rule 'simple'" in deviation for deviation in told["deviations"])

@@ -66,7 +66,7 @@ def test_shipped_dialects_are_whole(path: Any) -> None:
     dialect = shipped(path.stem)
     assert dialect.name == path.stem
     assert set(dialect.settings) >= NEEDS[dialect.role].settings
-    assert dialect.timeout <= 3.0, "at most three of the slowest scan periods, 1 s (design)"
+    assert dialect.timeout <= 3.0, "at most three of the slowest scan periods, 1 s"
 
 
 def test_each_role_has_a_shipped_dialect() -> None:

@@ -231,7 +231,7 @@ def ends(plan: ChargerPlan, step_s: float) -> tuple[float, float, float]:
 
 
 def test_cc_cv_charge_in_closed_form() -> None:
-    """check-values 13.2, textbook relation: t_cc 3150 s, t_cv = tau ln 10 = 1036.1633 s, tau 450 s; 2.9625 Ah."""
+    """Textbook relation, OCV linear in charge: t_cc 3150 s, t_cv = tau ln 10 = 1036.1633 s, tau 450 s; 2.9625 Ah."""
     full_s, end_s, charge_As = ends(CC_CV, 1.0)
     assert full_s == pytest.approx(3150.0, abs=2.0)
     assert end_s - full_s == pytest.approx(1036.1633, abs=3.0)  # steps of 1 s: tau is short by half a step, 0.1 %
@@ -245,7 +245,7 @@ def test_cc_cv_charge_converges_to_the_closed_form() -> None:
 
 
 def test_current_in_constant_voltage_is_log_linear() -> None:
-    """slope -1/450 s (check-values 13.2), and V at the contacts flat at 21 V."""
+    """Slope -1/tau, tau = 450 s, and V at the contacts flat at 21 V."""
     times, logs = [], []
     for bench, _ in played(CC_CV, 1.0):
         if bench.charger.state == "charging" and 0.4 < amperes(bench) < 2.9:
@@ -257,7 +257,7 @@ def test_current_in_constant_voltage_is_log_linear() -> None:
 
 
 def test_stepped_charge_in_closed_form() -> None:
-    """check-values 13.2: 3, 1.5, 0.75 A to 4.2 V a cell each; 2.625, 0.1875, 0.09375 Ah in 3150, 450, 450 s."""
+    """Same relation: 3, 1.5, 0.75 A to 4.2 V a cell each; 2.625, 0.1875, 0.09375 Ah in 3150, 450, 450 s."""
     plan = replace(CC_CV, stages=tuple(Stage(a, 21.0) for a in (3.0, 1.5, 0.75)), limit_V=21.25, cutoff_A=None)
     spent_s, added_As, last = [0.0] * 3, [0.0] * 3, (0.0, 0.0)
     for bench, charge_As in played(plan, 0.5):

@@ -103,7 +103,7 @@ def test_fed_whole_or_byte_by_byte_is_the_same(virtual_world: Make, data: bytes)
 
 @pytest.mark.parametrize("name", NAMES)
 def test_mandatory_common_commands(virtual_world: Make, ask: Ask, name: str) -> None:
-    """IEEE 488.2, clause 10 (list as in check-values 10.3)."""
+    """IEEE 488.2, clause 10: the mandatory common commands."""
     world = virtual_world()
     for command in ("*CLS", "*ESE 36", "*OPC", "*RST", "*SRE 48", "*WAI"):
         assert ask(world, name, command) == ""

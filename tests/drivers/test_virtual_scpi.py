@@ -93,7 +93,7 @@ def run(message: str) -> tuple[list[tuple[object, ...]], list[int]]:
     ],
 )
 def test_published_short_forms(mnemonic: str, short: str) -> None:
-    """Examples printed in instrument manuals (check-values 10.3)."""
+    """Examples printed in instrument manuals."""
     assert forms(mnemonic) == (short, mnemonic.upper())
     assert published_short_form(mnemonic) == short
 
@@ -101,7 +101,7 @@ def test_published_short_forms(mnemonic: str, short: str) -> None:
 def published_short_form(long: str) -> str:
     """SCPI-1999 volume 1, 6.2.1: up to four letters stay; else the first four, or three if the fourth is a vowel.
 
-    That y counts as a vowel is in some manuals only (POLynomial, check-values 10.3).
+    That y counts as a vowel is in some manuals only (POLynomial).
     """
     word = long.upper()
     if len(word) <= 4:
@@ -124,7 +124,7 @@ def test_every_short_form_in_the_tables_follows_the_rule(family: type[Instrument
 
 @pytest.mark.parametrize("header", ["VOL", "VOLTAG", "OUTPU", "FUNCT"])
 def test_abbreviations_between_the_two_forms_are_refused(header: str) -> None:
-    """VOL and VOLTAG are printed as invalid ones in an instrument manual (check-values 10.3)."""
+    """VOL and VOLTAG are printed as invalid ones in an instrument manual."""
     assert run(f"{header} 1") == ([], [-113])
 
 
@@ -214,7 +214,7 @@ def test_compound_messages(message: str, done: list[tuple[object, ...]], errors:
         (
             "VOLT 61",
             -222,
-        ),  # the error for setting a DC supply outside its rating (a supply's manual, check-values 10.2)
+        ),  # the error for setting a DC supply outside its rating (a supply's manual)
         ("VOLT -1", -222),
         ("VOLT INF", -222),
         ("ROUT:CLOS (@6)", -222),
@@ -242,7 +242,7 @@ def test_no_scrambled_command_does_more_than_make_an_error(text: str) -> None:
 @pytest.mark.parametrize(
     ("text", "value"),
     [
-        # IEEE 488.2, 7.7.2: NR1, NR2, NR3 as manuals print them (check-values 10.3), and non-decimal numbers
+        # IEEE 488.2, 7.7.2: NR1, NR2, NR3 as manuals print them, and non-decimal numbers
         ("12", 12.0),
         ("+12", 12.0),
         ("12.3", 12.3),

@@ -1,4 +1,4 @@
-"""Status reporting against IEEE 488.2 and SCPI-1999 (bits and error classes as published; check-values by clause)."""
+"""Status reporting against IEEE 488.2 and SCPI-1999 (bits and error classes as published)."""
 
 from __future__ import annotations
 
@@ -108,7 +108,7 @@ def test_event_register_latches_rising_bits_until_read() -> None:
 
 
 def test_errors_have_published_texts() -> None:
-    """Numbers and texts as in a public SCPI-1999 error list (check-values 10.2, and SCPI-1999 volume 2, 21.8)."""
+    """Numbers and texts as in a public SCPI-1999 error list (and SCPI-1999 volume 2, 21.8)."""
     published = {-109: "Missing parameter", -224: "Illegal parameter value", -420: "Query UNTERMINATED"}
     assert published.items() <= ERRORS.items()
     assert str(ScpiError(-131)) == '-131,"Invalid suffix"'

@@ -120,7 +120,7 @@ def test_a_dead_meter_is_no_obstacle_on_the_way_to_safety(server: VirtualServer,
 def test_a_bench_that_is_gone_altogether_ends_in_the_alarm_soon(
     server: VirtualServer, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    """With a quarter of the design's 2 s, to spare the suite; the 2 s themselves are held in test_safe."""
+    """With a quarter of the usual 2 s, to spare the suite; the 2 s themselves are held in test_safe."""
     for name in ("PATIENCE_s", "DEED_PATIENCE_s"):
         monkeypatch.setattr(safe, name, 0.5)
     with ExitStack() as ends:

@@ -29,6 +29,26 @@ def test_stop_and_release_in_words(shown: CellMap) -> None:
     assert shown.rows[4].words == ("stops in 1.17 s", "stays off")
 
 
+def raised(way: str, cell_V: float, stop_s: float | None = None) -> dict:
+    return {"finding": "tap_trip", "cell": 1, "way": way, "cell_V": cell_V, "stop_s": stop_s, "goes_on": stop_s is None}
+
+
+def test_a_stop_on_the_quick_way_is_the_stop() -> None:
+    made = cell_map([raised("approach", 4.0), raised("approach", 4.05, 9.0), raised("back", 3.7)], [], None)
+    assert made is not None
+    assert (made.rows[0].charging_V, made.rows[0].stopped_V, made.rows[0].words) == ((), 4.05, ("stops",))
+
+
+def test_the_timed_stop_is_no_step_of_the_search() -> None:
+    search = [raised("approach", 4.1), raised("out", 4.2), raised("out", 4.21, 9.0), raised("back", 3.7)]
+    timed = [raised("again", 4.15), raised("over", 4.26, 19.0)]
+    assert cell_map([*search, *timed], [], None) == cell_map(search, [], None)
+    # Also where only the timed stop came: the search itself let the cell pass.
+    made = cell_map([raised("out", 4.2), *timed], [], None)
+    assert made is not None
+    assert made.rows[0].words == ("did not stop",)
+
+
 def test_a_cell_that_stops_nothing_is_told(shown: CellMap) -> None:
     assert shown.rows[3].words == ("did not stop",)
     assert shown.rows[3].failed

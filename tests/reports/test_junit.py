@@ -1,4 +1,4 @@
-"""The JUnit file of a judgement, held against the rules of the JUnit schema (windyroad JUnit.xsd, check-values 15)."""
+"""The JUnit file of a judgement, held against the rules of the JUnit schema (windyroad JUnit.xsd)."""
 
 import re
 import xml.etree.ElementTree as ET

@@ -8,7 +8,7 @@ from hypothesis import strategies as st
 
 from reports.limit_bar import WIDTH, limit_bar
 
-# Worked zones of ILAC-G8:09/2019, 4.2.3, for an upper limit of 4.25 V and U = w = 4 mV (check-values 2.3, computed).
+# Worked zones of ILAC-G8:09/2019, 4.2.3, for an upper limit of 4.25 V and U = w = 4 mV (computed).
 UPPER, GUARD = 4.25, 0.004
 
 

@@ -22,7 +22,7 @@ def shown(reported: Path) -> subprocess.CompletedProcess[str]:
 
 
 def test_outcomes_of_the_seven_words(shown: subprocess.CompletedProcess[str]) -> None:
-    """Design 5: pass passes, conditional pass passes with its own word, fail and conditional fail fail, ..."""
+    """Pass passes, conditional pass passes with its own word, fail and conditional fail fail, ..."""
     words = re.findall(r"::(v\d+) ([A-Z ]*[A-Z])", shown.stdout)
     assert words[:9] == [
         ("v001", "PASSED"), ("v002", "PASSED"), ("v003", "CONDITIONAL PASS"), ("v004", "CONDITIONAL FAIL"),

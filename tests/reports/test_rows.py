@@ -37,6 +37,20 @@ def test_stages_are_numbered_named_and_carry_standard_uncertainties(content: dic
     assert stages[1].duration == "25 min 53 s"
 
 
+def test_a_stage_says_where_its_voltage_is_that_of_its_end(content: dict) -> None:
+    voltages = [stage.voltage for stage in rows.stage_rows(content["findings"]["classification"])]
+    assert [voltage.endswith(" at its end") for voltage in voltages] == [True, True, False, True]
+    assert voltages[2] == "20.9996 V, u = 1.6 mV"
+    assert rows.stage_rows({"stages": [{"kind": "cc"}]})[0].voltage == "–"
+
+
+def test_the_probability_of_a_class_says_where_it_comes_from(content: dict) -> None:
+    row = next(
+        rows.verdict_row(1, one, {}) for one in content["verdicts"]["verdicts"] if one["limit"] == "charge.algorithm"
+    )
+    assert row.basis[-1] == "set by rule, not calibrated"
+
+
 def test_budget_shares_are_shares_of_variance(content: dict) -> None:
     budget = rows.budget_table("charge.voltage", content["budgets"]["charge.voltage"])
     assert budget.result == "4.2211 V ± 6.0 mV"

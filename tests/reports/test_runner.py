@@ -74,7 +74,7 @@ def test_a_folder_that_is_no_judgement(tmp_path: Path) -> None:
 
 
 def test_size(reported: Path) -> None:
-    """Own bounds (design 13, and the promise of a report that can be mailed): 4,000 samples in well under 1 MB."""
+    """Own bounds (a report is to be small enough to mail): 4,000 samples in well under 1 MB."""
     assert (reported / "report.html").stat().st_size < 400_000
 
 

@@ -40,6 +40,19 @@ def test_open_stands_where_the_sensor_reads_it(shown: TemperatureMap) -> None:
     assert [axes.get_xticklabels()[0].get_text() for axes in (cold, hot)] == ["open", "short"]
 
 
+@pytest.mark.parametrize("width_in", [4.3, 8.6])
+@pytest.mark.parametrize("hot_C", [25.0, 42.5])
+def test_two_releases_are_written_apart(breadth: dict, sensor: Curve, width_in: float, hot_C: float) -> None:
+    walks = [walk for walk in breadth["findings"]["walks"] if walk["finding"].startswith("temperature.")]
+    walks.append(walks[-1] | {"celsius": hot_C, "goes_on": True})
+    made = temperature_map({"walks": walks}, [], None, sensor)
+    assert made is not None
+    figure = draw_temperature_map(made, width_in=width_in)
+    figure.draw_without_rendering()
+    cold, hot = (text.get_window_extent() for text in figure.axes[1].texts if text.get_text().startswith("goes on at"))
+    assert not cold.overlaps(hot)
+
+
 def test_walks_alone_are_drawn(breadth: dict) -> None:
     made = temperature_map({"walks": breadth["findings"]["walks"]}, [], None, None)
     assert made is not None

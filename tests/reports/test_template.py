@@ -161,7 +161,8 @@ def test_css_text_cannot_leave_its_string() -> None:
     "words",
     [
         "Safe means de-energised, not isolated: unplug before touching.",
-        "touch current, dielectric strength, earth bond, EMC, digital data contacts",  # design 1
+        "Not covered: touch current, dielectric strength, earth bond, EMC, digital data contacts",  # out of scope
+        "balancing, deep-discharge starts.",  # not there yet
         "no certificate declared",
         "End of the report of run",
         "Missing on this bench:",

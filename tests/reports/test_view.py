@@ -58,7 +58,7 @@ def test_budgets_follow_the_verdicts(source: Callable[..., Source], content: dic
 
 def test_rules_in_use_are_explained_with_their_source(source: Callable[..., Source]) -> None:
     simple, guarded = build(source()).rules
-    # ILAC-G8:09/2019: simple acceptance is clause 4.2.1, non-binary with guard band 4.2.3 (check-values 2.3).
+    # ILAC-G8:09/2019: simple acceptance is clause 4.2.1, non-binary with guard band 4.2.3.
     assert "4.2.1" in simple
     assert "4.2.3" in guarded
     assert all("JCGM 106" in rule for rule in (simple, guarded))

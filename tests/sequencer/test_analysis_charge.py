@@ -1,4 +1,4 @@
-"""What a full-charge recording shows, against charges known in closed form (check values 13.2, computed)."""
+"""What a full-charge recording shows, against charges known in closed form (textbook relation, computed)."""
 
 import math
 from collections.abc import Callable

@@ -80,7 +80,7 @@ def test_a_battery_model_of_others() -> None:
 
 @pytest.mark.parametrize("period_s", [0.1, 1.0, 10.0])
 def test_closed_form_cc_cv(closed_form: Callable[..., Any], period_s: float) -> None:
-    """Check values 13.2 (computed): 3150 s of CC, 1036.2 s of CV, 2.625 and 0.3375 Ah."""
+    """Textbook relation, computed: 3150 s of CC, 1036.2 s of CV, 2.625 and 0.3375 Ah."""
     truth = closed_form()
     found = classify(*truth.log(1, period_s=period_s))
     cc, cv = (stage for stage in found.stages if stage.kind in ("cc", "cv"))
@@ -94,7 +94,7 @@ def test_closed_form_cc_cv(closed_form: Callable[..., Any], period_s: float) -> 
 
 
 def test_closed_form_stepped_cc(pack: Callable[..., Any]) -> None:
-    """Check values 13.2 (computed): 3, 1.5, 0.75 A to 4.2 V each: 3150, 450, 450 s; 2.625, 0.1875, 0.09375 Ah."""
+    """Textbook relation, computed: 3, 1.5, 0.75 A to 4.2 V each: 3150, 450, 450 s; 2.625, 0.1875, 0.09375 Ah."""
     cell = pack(empty_V=3.0, capacity_Ah=3.0, resistance_ohm=0.05, span_V=1.2)
     for current in (3.0, 1.5, 0.75):
         cell.constant_current(current, 4.2)

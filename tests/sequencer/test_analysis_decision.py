@@ -194,7 +194,7 @@ def test_class_without_probability_is_refused() -> None:
 
 @pytest.mark.parametrize(
     ("verdicts", "left_out", "worst", "status"),
-    [  # words and order of the design's exit status
+    [  # the first that applies: 1 a fail, 4 not judged, 5 a conditional pass, 0 every verdict pass
         (["pass", "pass"], 0, "pass", 0),
         (["pass", "conditional pass"], 0, "conditional pass", 5),
         (["conditional pass", "not run"], 0, "not run", 4),

@@ -32,7 +32,7 @@ def numbers(text: str) -> list[float]:
 
 @pytest.mark.parametrize(
     ("readings", "mean", "s", "digits"),
-    [  # certified values: NIST StRD; digits: ranked list of the check values, rank 16
+    [  # certified values: NIST StRD; digits asked for: our choice, no source
         # (agreeing digits = -log10 of the relative error)
         pytest.param(numbers(MICHELSO), 299.852400000000, 0.0790105478190518, 12, id="Michelso"),
         pytest.param(numbers(MAVRO), 2.00185600000000, 0.000429123454003053, 12, id="Mavro"),

@@ -105,7 +105,7 @@ def test_resolution_divisor() -> None:
 
 @pytest.mark.parametrize(
     ("half_width_V", "u_V"),
-    [  # meter accuracy ±(% of reading + % of range), rectangular; check values section 3, u computed
+    [  # meter accuracy ±(% of reading + % of range), rectangular: u = a/√3 (GUM 4.3.7), computed
         (5.0 * 20e-6 + 10.0 * 5e-6, 86.603e-6),
         (4.2 * 35e-6 + 10.0 * 5e-6, 113.7e-6),
         (21.0 * 45e-6 + 100.0 * 6e-6, 0.892e-3),
