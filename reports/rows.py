@@ -157,7 +157,7 @@ def _basis(verdict: Json, unit: str) -> tuple[str, ...]:
         p = wording.probability(float(verdict["p_conform"]))
         parts.append(f"p {p}" if p[0] in "<>" else f"p = {p}")
         if verdict.get("kind") == "class":  # the classifier's rules give it; no set of known charges was counted for it
-            parts.append(wording.BY_RULE)
+            parts += wording.BY_RULE.split(", ")  # a part is never wrapped, and the column is narrow
     return tuple(parts)
 
 

@@ -48,7 +48,7 @@ def test_the_probability_of_a_class_says_where_it_comes_from(content: dict) -> N
     row = next(
         rows.verdict_row(1, one, {}) for one in content["verdicts"]["verdicts"] if one["limit"] == "charge.algorithm"
     )
-    assert row.basis[-1] == "set by rule, not calibrated"
+    assert row.basis[-2:] == ("set by rule", "not calibrated")
 
 
 def test_budget_shares_are_shares_of_variance(content: dict) -> None:
