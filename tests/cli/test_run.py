@@ -43,9 +43,8 @@ def test_sockets_and_process_give_the_same_samples_byte_for_byte(packmime: Calla
 
 def test_another_seed_gives_other_samples(packmime: Callable, tmp_path: Path) -> None:
     for seed in (1, 2):
-        assert (
-            packmime("run", "charge-profile", "--seed", seed, "--out", tmp_path / str(seed), *IN_PROCESS).exit_code == 0
-        )
+        words = ("--only", "insert", "--seed", seed, "--out", tmp_path / str(seed), *IN_PROCESS)
+        assert packmime("run", "charge-profile", *words).exit_code == 0
     assert (tmp_path / "1/data/samples.parquet").read_bytes() != (tmp_path / "2/data/samples.parquet").read_bytes()
 
 
@@ -161,7 +160,7 @@ def test_a_fault_of_ours_is_70_and_leaves_a_safe_bench(
 
 
 @pytest.mark.skipif(sys.platform == "win32", reason="SIGINT to a child needs a console of its own on Windows")
-@pytest.mark.parametrize("name", ["SIGINT", "SIGTERM", "SIGHUP", "SIGQUIT"])
+@pytest.mark.parametrize("name", ["SIGINT", "SIGTERM", "SIGHUP"])
 def test_an_interrupted_charge_ends_safe_sealed_and_judgeable(command: Callable, tmp_path: Path, name: str) -> None:
     slow = ("--set", "compression=1", "--set", "start=3.1 V")
     with command("run", "charge-profile", *slow, "--out", tmp_path / "r", cwd=tmp_path) as process:

@@ -74,6 +74,7 @@ def test_budgets_by_monte_carlo(rehearse: Callable[..., Any], spec: str) -> None
             assert inside == pytest.approx(0.95, abs=0.012), name  # what is left out of the shape is a tenth of it
 
 
+@pytest.mark.benchmark  # 22 charges
 def test_what_is_stated_holds_what_is_true(rehearse: Callable[..., Any], ends: list[tuple[float, float]]) -> None:
     tally: dict[str, list[float]] = {}
     true: dict[str, float]
