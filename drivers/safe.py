@@ -223,7 +223,8 @@ _TO_DRAIN: tuple[tuple[str, float | None], ...] = (("constant_current", None), (
 
 def _seen(look: Look) -> str:
     named = zip(("shunt", "ballast", "load less supply"), look.witnesses_A, strict=True)
-    return ", ".join(f"{name} {'?' if math.isnan(current_A) else f'{current_A:.3f} A'}" for name, current_A in named)
+    said = ((name, "says nothing" if math.isnan(current_A) else f"{current_A:.3f} A") for name, current_A in named)
+    return ", ".join(f"{name} {words}" for name, words in said)
 
 
 def _not_proven_off(look: Look, off: bool) -> list[str]:

@@ -183,11 +183,11 @@ def _known(estimate: Mapping[str, Any] | None) -> float | None:
 
 
 def _current_levels(classification: Mapping[str, Any], stages: Sequence[Stage]) -> tuple[Level, ...]:
-    """The current at which the charge was ended."""
+    """About where the charge was ended; with its uncertainty it stands in the row of its limit."""
     cutoff_A = _known(classification.get("cutoff_current_A"))
     if cutoff_A is None or not stages:
         return ()
-    return (Level(f"ended at {si(cutoff_A, 'A', 3)}", cutoff_A, stages[0].start_s, stages[-1].end_s),)
+    return (Level(f"ended near {si(cutoff_A, 'A', 2)}", cutoff_A, stages[0].start_s, stages[-1].end_s),)
 
 
 def _trip_words(event: Mapping[str, Any]) -> str:

@@ -201,8 +201,8 @@ def _estimate(estimate: Json | None, unit: str) -> str:
     return wording.measured(estimate["value"], estimate.get("u"), unit).replace(" ± ", ", u = ")
 
 
-def budget_table(limit: str, budget: Json) -> Budget:
-    """One entry of budgets.json as a table."""
+def budget_table(limit: str, budget: Json, interval: Sequence[float] | None = None) -> Budget:
+    """One entry of budgets.json as a table; of an interval, the budget is that of its ends."""
     unit = str(budget.get("unit") or "")
     dof, k, u = budget.get("dof"), budget.get("k"), budget.get("u")
     parts = [
@@ -213,7 +213,9 @@ def budget_table(limit: str, budget: Json) -> Budget:
     ]
     return Budget(
         limit=clean(limit),
-        result=wording.measured(budget.get("value"), budget.get("U"), unit),
+        result=wording.bracket(interval[0], interval[1], budget.get("U"), unit)
+        if interval
+        else wording.measured(budget.get("value"), budget.get("U"), unit),
         summary=", ".join(part for part in parts if part),
         contributions=tuple(_contribution(line, unit, float(u or 0.0)) for line in budget.get("contributions") or ()),
     )

@@ -112,7 +112,7 @@ def build(source: Source) -> View:
         **_maps(source),
         has_charge=_has_charge(source),
         algorithm=_algorithm(classification),
-        algorithm_note=clean(classification.get("why")) if classification.get("why") else "",
+        algorithm_note=_sentence(clean(classification.get("why"))) if classification.get("why") else "",
         profile=profile,
         profile_note=_profile_note(source, profile),
         stages=rows.stage_rows(classification),
@@ -201,12 +201,17 @@ def _algorithm(classification: Mapping[str, Any]) -> str:
     return words + (f"; flags: {flags}." if flags else ".")
 
 
+def _sentence(words: str) -> str:
+    return words[:1].upper() + words[1:].removesuffix(".") + "."
+
+
 def _budgets(source: Source) -> tuple[Budget, ...]:
     """In the order of the verdicts, then any other."""
     judged = [str(verdict["limit"]) for verdict in source.verdicts["verdicts"]]
     order = [limit for limit in dict.fromkeys(judged) if source.budgets.get(limit)]
     order += [limit for limit, budget in source.budgets.items() if budget and limit not in order]
-    return tuple(rows.budget_table(limit, source.budgets[limit]) for limit in order)
+    intervals = {verdict["limit"]: verdict.get("interval") for verdict in source.verdicts["verdicts"]}
+    return tuple(rows.budget_table(limit, source.budgets[limit], intervals.get(limit)) for limit in order)
 
 
 def _rules(verdicts: list[dict[str, Any]]) -> tuple[str, ...]:

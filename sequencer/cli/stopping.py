@@ -24,8 +24,10 @@ def noted_signals(stop: StopFlag) -> Iterator[None]:
     def note(number: int, frame: FrameType | None) -> None:
         stop.why = f"stopped by {NAMES[signal.Signals(number)]}"
 
-    # What is ignored stays so: whoever starts a run under nohup means it to outlive the terminal.
-    heard = [number for number in NAMES if signal.getsignal(number) is not signal.SIG_IGN]
+    # Under nohup SIGHUP comes ignored and stays so: the run shall outlive its terminal. The others are heard whatever
+    # they come as: a shell without job control ignores SIGINT for what it starts in the background.
+    left = [number for number in NAMES if NAMES[number] == "SIGHUP" and signal.getsignal(number) is signal.SIG_IGN]
+    heard = [number for number in NAMES if number not in left]
     before = {number: signal.signal(number, note) for number in heard}
     try:
         yield

@@ -39,7 +39,7 @@ def test_regulation_and_end_are_levels(content: dict) -> None:
     profile = charge_profile(series(time_s, time_s), series(time_s, time_s), content["findings"]["classification"])
     assert profile is not None
     assert [level.words for level in profile.voltage_levels] == ["voltage limit 21 V"]
-    assert [level.words for level in profile.current_levels] == ["ended at 150 mA"]
+    assert [level.words for level in profile.current_levels] == ["ended near 150 mA"]
 
 
 def test_stale_overloaded_and_nan_samples_are_left_out_and_counted() -> None:

@@ -51,6 +51,12 @@ def test_the_probability_of_a_class_says_where_it_comes_from(content: dict) -> N
     assert row.basis[-2:] == ("set by rule", "not calibrated")
 
 
+def test_the_budget_of_an_interval_does_not_hide_the_interval() -> None:
+    """819.1 Ω ± 1.1 Ω would claim an edge known to 1.1 Ω, where all that is known is a bracket of 5.7 Ω."""
+    budget = {"unit": "Ω", "value": 819.1, "U": 1.1, "contributions": []}
+    assert rows.budget_table("id.band1.lower_edge", budget, [816.3, 822.0]).result == "816.3 Ω to 822.0 Ω, U 1.1 Ω"
+
+
 def test_budget_shares_are_shares_of_variance(content: dict) -> None:
     budget = rows.budget_table("charge.voltage", content["budgets"]["charge.voltage"])
     assert budget.result == "4.2211 V ± 6.0 mV"
