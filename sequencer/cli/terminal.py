@@ -89,7 +89,7 @@ class Terminal:
         else:
             self.say("Real instruments. Stay within reach of the emergency stop; a software stop is none.")
         self.say(f"{procedure.name}: {procedure.purpose}")
-        self.say(f"{model}; about {clock_time(self._planned_s)} of bench time; record in {folder}")
+        self.say(f"{model}; about {clock_time(self._planned_s)} of bench time; the record goes to {folder}")
 
     def watching(self, now: Callable[[], float]) -> Watching:
         self._now = now
