@@ -15,6 +15,7 @@ from drivers.text.measures import (
     Measure,
     Ohms,
     PositiveAmperes,
+    PositiveOhms,
     PositiveVolts,
     Seconds,
     Volts,
@@ -49,6 +50,13 @@ class CertifiedAmperes(_Part):
     U: PositiveAmperes
 
 
+class CertifiedOhms(_Part):
+    """Of a programmable resistor as set, or of a scanner as it measures resistance."""
+
+    range: PositiveOhms
+    U: PositiveOhms
+
+
 class Certificate(_Part):
     """The calibration certificate of one instrument; overrides the accuracy of its family."""
 
@@ -56,6 +64,7 @@ class Certificate(_Part):
     due: Annotated[str, AfterValidator(_iso_date)]
     voltage: CertifiedVolts | None = None
     current: CertifiedAmperes | None = None
+    resistance: CertifiedOhms | None = None
 
 
 class Instrument(_Part):

@@ -189,11 +189,24 @@ class OhmSpan(BaseModel):
     residual: PositiveOhms
 
 
+class OhmmeterSpan(BaseModel):
+    """Accuracy in one range of a resistance that is measured: ±(reading + of_range), half widths, rectangular."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True)
+    range: PositiveOhms
+    reading: Ratio
+    of_range: Ratio
+    resolution: PositiveOhms | None = None
+
+
 class Accuracy(BaseModel):
     model_config = ConfigDict(extra="forbid", frozen=True)
     voltage: tuple[VoltageSpan, ...] = ()
     current: tuple[CurrentSpan, ...] = ()
-    resistance: tuple[OhmSpan, ...] = ()
+    resistance: tuple[OhmSpan, ...] = Field(
+        (), description="of a programmable resistor: how far it is from its setting"
+    )
+    ohmmeter: tuple[OhmmeterSpan, ...] = Field((), description="of the reading 'ohms'")
 
 
 _BITS_SCHEMA: dict[str, Any] = {
@@ -240,12 +253,15 @@ class Dialect(Written):
     def _complete(self) -> Dialect:
         need = NEEDS[self.role]
         lacking = [f"settings.{name}" for name in sorted(need.settings - set(self.settings))]
-        for name, fields in need.readings.items():
+        there = {name: fields for name, fields in need.may.items() if name in self.readings}
+        for name, fields in (need.readings | there).items():
             have = set(self.readings[name].fields) if name in self.readings else set()
             lacking += [f"readings.{name}.{field}" for field in sorted(fields - have)]
         lacking += [f"status.{name}" for name in sorted(need.states - set(self.status))]
         if lacking:
             raise refuse(f"a dialect of role '{self.role}' also needs {', '.join(lacking)}")
+        if "ohms" in self.readings and not self.accuracy.ohmmeter:
+            raise refuse("readings.ohms: what it reads is uncertain by how much? 'accuracy.ohmmeter' is missing")
         return self
 
     @model_validator(mode="after")

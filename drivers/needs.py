@@ -14,6 +14,7 @@ Role = Literal[
 class Need:
     """settings and readings by name (a reading with the fields it must give), states that `status` must name.
 
+    may: readings that a dialect can do without; where they are, these are their fields.
     valued: settings that carry a {value}. channelled: settings and readings of one {channel} out of several.
     """
 
@@ -22,6 +23,7 @@ class Need:
     states: frozenset[str] = frozenset()
     valued: frozenset[str] = frozenset()
     channelled: frozenset[str] = frozenset()
+    may: dict[str, frozenset[str]] = field(default_factory=dict)
 
 
 NEEDS: dict[str, Need] = {
@@ -57,7 +59,8 @@ NEEDS: dict[str, Need] = {
     "scanner": Need(
         settings=frozenset({"clear"}),
         readings={"volts": frozenset({"volts"})},
-        channelled=frozenset({"volts"}),
+        channelled=frozenset({"volts", "ohms"}),
+        may={"ohms": frozenset({"ohms"})},
     ),
     "tap supply": Need(
         settings=frozenset({"clear", "voltage", "current_limit", "on", "off"}),

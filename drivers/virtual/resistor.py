@@ -13,6 +13,7 @@ from drivers.virtual.terminals import OPEN, Signal
 
 RESISTANCE = Number(0.0, 1e6, "OHM", default=1e6)
 SET_SHARE, RESIDUAL_ohm = 0.001, 0.3  # half widths of its accuracy: of the setting, and whatever is set
+RELAYS_ohm = 0.05  # most that one switching of the relays differs from another; common practice, no source
 MOST = 0.8  # of the half widths: what one individual has
 
 
@@ -28,6 +29,9 @@ class Resistor(Instrument):
         self._gain = width * SET_SHARE * float(generator(seed, name, "resistance gain").uniform(-1.0, 1.0))
         # contacts and wires of the decades: never below nothing
         self._residual_ohm = width * RESIDUAL_ohm * float(generator(seed, name, "residual").uniform(0.0, 1.0))
+        self._relays = generator(seed, name, "relays")
+        self._most_relays_ohm = width * RELAYS_ohm
+        self._relays_ohm = 0.0  # of the last switching
         self._switched = 0
         self._standing: tuple[str, float] = ("", math.nan)
         self.reset()
@@ -42,7 +46,7 @@ class Resistor(Instrument):
         if self.mode == "OPEN":
             return OPEN
         set_ohm = self.resistance if self.mode == "RES" else 0.0
-        return set_ohm * (1.0 + self._gain) + self._residual_ohm
+        return set_ohm * (1.0 + self._gain) + self._residual_ohm + self._relays_ohm
 
     def _choose(self, mode: str) -> None:
         self.mode = mode
@@ -59,6 +63,7 @@ class Resistor(Instrument):
             return
         self._standing = wanted
         self._switched += 1
+        self._relays_ohm = self._most_relays_ohm * float(self._relays.uniform(0.0, 1.0))
         number, ohm = self._switched, self.true_ohm
         self.circuit.change(lambda: self._become(OPEN))
         if ohm != OPEN:

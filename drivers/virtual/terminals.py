@@ -38,6 +38,14 @@ class Signal:
         total_ohm = self.pin.pull_up_ohm + contact_ohm + self.resistor_ohm
         return self.pin.reference_V * self.resistor_ohm / total_ohm if total_ohm else 0.0
 
+    def met_ohm(self, contact_ohm: float, test_A: float, *, excited: bool) -> float:
+        """What an ohmmeter on the bench's side finds with its test current: the resistor, and a pin beside it."""
+        if self.pin is None or contact_ohm == OPEN:
+            return self.resistor_ohm
+        aside_ohm = self.pin.pull_up_ohm + contact_ohm
+        foreign_A = self.pin.reference_V / aside_ohm if excited else 0.0
+        return _parallel(self.resistor_ohm, aside_ohm) * (test_A + foreign_A) / test_A
+
 
 @dataclass
 class Cell:
@@ -108,6 +116,11 @@ class Terminals:
     def seen_ohm(self, name: str) -> float:
         """The resistance between a signal contact and B-, as the charger sees it."""
         return self.signals[name].resistor_ohm + self.contacts[name] if self._grounded else OPEN
+
+    def met_ohm(self, name: str, test_A: float) -> float:
+        """What an ohmmeter finds on the bench's side of a signal contact."""
+        contact_ohm = self.contacts[name] if self._grounded else OPEN
+        return self.signals[name].met_ohm(contact_ohm, test_A, excited=self.powered)
 
     def tap_A(self, number: int) -> float:
         """The current that the charger takes out of a tap."""

@@ -16,7 +16,7 @@ from drivers.virtual.meter import Meter
 from drivers.virtual.plain_power import PlainLoad, PlainSupply, PlainTapSupply
 from drivers.virtual.plan import Plan
 from drivers.virtual.resistor import Resistor
-from drivers.virtual.scanner import Scanner, Source
+from drivers.virtual.scanner import Resistance, Scanner, Source
 from drivers.virtual.supply import Supply
 from drivers.virtual.tap_supply import TapSupply
 from drivers.virtual.terminals import Cell, Signal, Tap
@@ -113,12 +113,14 @@ class Wirer:
             return f"tap{int(parts[1]) + 1}"
         return parts[0] if parts[0] in SIGNALS else parts[-1]
 
-    def _source(self, where: str) -> Source:
+    def _source(self, where: str) -> tuple[Source, Resistance]:
         """What a scanner's channel is on: a tap's shunt, or the bench's side of a signal contact."""
         parts = where.split(".")
         if parts[0] == "taps":
-            return self.taps[int(parts[1])].shunt.mean
-        return self._sense(self.circuit.terminals.signals[parts[0]])
+            tap = self.taps[int(parts[1])]
+            return tap.shunt.mean, lambda test_A: tap.shunt_ohm
+        terminals = self.circuit.terminals
+        return self._sense(terminals.signals[parts[0]]), lambda test_A: terminals.met_ohm(parts[0], test_A)
 
     @staticmethod
     def _sense(signal: Signal) -> Source:

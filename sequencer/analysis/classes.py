@@ -21,7 +21,6 @@ FEWEST = 3  # readings on a plateau
 STEADY_SHARE = 0.02  # of the level: the two halves of a settled plateau differ by no more, noise aside
 GAP_SHARE = 0.5  # of the level: what falls below interrupts a plateau
 STRAY_SHARE = 0.2  # beyond the end of the nearest declared band: no longer that band's current
-CLUSTER_SHARE = 0.05  # of full scale
 
 
 @dataclass(frozen=True)
@@ -46,16 +45,6 @@ class Seen:
         if self.kind != "charges":
             return self.kind
         return "charges at no declared current" if self.band is None else f"charges, band {self.band + 1}"
-
-
-@dataclass(frozen=True)
-class Cluster:
-    """Plateaus of about the same current; members are their places in what was given."""
-
-    mean_A: float
-    low_A: float
-    high_A: float
-    members: tuple[int, ...]
 
 
 def class_of(
@@ -97,36 +86,6 @@ def nearest_band(current_A: float, declared_A: Bands) -> int | None:
     """
     best = min(range(len(declared_A)), key=lambda i: _distance(current_A, *declared_A[i]), default=None)
     return best if best is not None and _distance(current_A, *declared_A[best])[0] <= STRAY_SHARE else None
-
-
-def cluster_plateaus(current_A: Sequence[float], u_A: Sequence[float], *, full_scale_A: float) -> tuple[Cluster, ...]:
-    """Plateau currents in groups, rising: for a map of current over resistance.
-
-    current_A, u_A : means and their standard uncertainties.    full_scale_A : largest declared or seen current, > 0.
-    A group ends at a gap of more than 5 % of full scale, or of 3 standard uncertainties of the difference where that is
-    more: a quiet meter shows differences between insertions that are no classes. Groups are chained: a current that
-    drifts in small steps stays one group, and its low_A and high_A show it.
-    Raises ValueError naming the argument.
-    """
-    if len(current_A) != len(u_A):
-        raise ValueError(f"u_A: expected {len(current_A)} values, one for each current, got {len(u_A)}")
-    if not (math.isfinite(full_scale_A) and full_scale_A > 0.0):
-        raise ValueError(f"full_scale_A: expected a current above zero, got {full_scale_A!r}")
-    groups: list[list[int]] = []
-    for index in sorted(range(len(current_A)), key=lambda i: current_A[i]):
-        last = groups[-1][-1] if groups else None
-        if last is not None and current_A[index] - current_A[last] <= max(
-            CLUSTER_SHARE * full_scale_A, 3.0 * math.hypot(u_A[index], u_A[last])
-        ):
-            groups[-1].append(index)
-        else:
-            groups.append([index])
-    return tuple(_cluster(current_A, members) for members in groups)
-
-
-def _cluster(current_A: Sequence[float], members: list[int]) -> Cluster:
-    values = [current_A[index] for index in members]
-    return Cluster(math.fsum(values) / len(values), min(values), max(values), tuple(sorted(members)))
 
 
 def _checked(time_s: npt.ArrayLike, current_A: npt.ArrayLike, declared_A: Bands) -> tuple[Array, Array]:

@@ -7,9 +7,8 @@ then knows is an interval, never a number: the last setting of one class and the
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass, replace
-from itertools import pairwise
 from typing import Literal, Self
 
 from sequencer.analysis.uncertainty import Budget, Contribution
@@ -18,20 +17,6 @@ from sequencer.analysis.wording import quantity
 Scale = Literal["geometric", "arithmetic"]
 UNDECIDED = "undecided"
 TRIES = 2  # of one setting without an answer, or failed controls in a row, before a search gives up
-
-
-def next_ohm(low_ohm: float, high_ohm: float, resolution: float) -> float | None:
-    """The geometric middle; None when high/low is at most 1 + resolution. Raises ValueError unless 0 < low < high."""
-    if not 0.0 < low_ohm < high_ohm < math.inf:
-        raise ValueError(f"low_ohm, high_ohm: expected 0 < low < high, got {low_ohm!r} and {high_ohm!r}")
-    return None if _steps(low_ohm, high_ohm, resolution, "geometric") == 0 else math.sqrt(low_ohm * high_ohm)
-
-
-def next_value(low: float, high: float, resolution: float) -> float | None:
-    """The middle; None when high - low is at most the resolution (°C, V). Raises ValueError unless low < high."""
-    if not -math.inf < low < high < math.inf:
-        raise ValueError(f"low, high: expected low < high, got {low!r} and {high!r}")
-    return None if _steps(low, high, resolution, "arithmetic") == 0 else 0.5 * (low + high)
 
 
 def expected_steps(low: float, high: float, resolution: float, scale: Scale = "geometric") -> int:
@@ -70,14 +55,6 @@ class EdgeInterval:
         if low <= high:
             return EdgeInterval(low, high, self.low_class, self.high_class)
         return EdgeInterval(high, low, self.high_class, self.low_class)
-
-    def shifted(self, by: float) -> EdgeInterval:
-        """The interval with a known error taken out, such as the middle of what a contact may add."""
-        return EdgeInterval(self.low + by, self.high + by, self.low_class, self.high_class)
-
-    def words(self, unit: str) -> str:
-        low, high = (quantity(value, unit) for value in (self.low, self.high))
-        return f"{self.low_class} at {low}, {self.high_class} at {high}"
 
 
 @dataclass(frozen=True)
@@ -129,12 +106,6 @@ class EdgeSearch:
         high = min((value for value, _ in self.answers if value > last_same), default=last_same)
         high_class = next((seen for value, seen in self.answers if value == high and seen != self.low_class), "")
         return EdgeInterval(low, high, self.low_class, high_class or self.answers[1][1])
-
-    @property
-    def further(self) -> tuple[EdgeInterval, ...]:
-        """Brackets of more edges above this one: a class between those of the two ends was met on the way."""
-        above = sorted(answer for answer in self.answers if answer[0] >= self.interval.high)
-        return tuple(EdgeInterval(a[0], b[0], a[1], b[1]) for a, b in pairwise(above) if a[1] != b[1])
 
     @property
     def steps_left(self) -> int:
@@ -207,42 +178,12 @@ class EdgeSearch:
         return f"no setting lies within the last {quantity(before.width, self.unit)}; there is no finer step"
 
 
-def edge_budget(interval: EdgeInterval, contributions: Iterable[Contribution] = (), *, unit: str = "Ω") -> Budget:
-    """The edge as one value with its uncertainty: the middle, the bracket as rectangular (width/√12), and the rest.
-
-    contributions : what else makes the settings uncertain, in `unit`: resistor as measured, contact, repeatability.
-    """
-    return Budget(interval.middle, unit, (_bracket("bracket", interval), *contributions))
-
-
 def end_budget(interval: EdgeInterval, contributions: Iterable[Contribution], *, unit: str = "Ω") -> Budget:
-    """The same without the bracket: the uncertainty of the interval's ends, for a decision on the interval itself."""
-    return Budget(interval.middle, unit, tuple(contributions))
+    """The uncertainty of the interval's ends, for a decision on the interval itself: the bracket is none of it.
 
-
-def hysteresis(
-    one: EdgeInterval, other: EdgeInterval, contributions: Iterable[Contribution] = (), *, unit: str = "Ω"
-) -> Budget:
-    """`one` minus `other`, such as trip minus release, with both brackets.
-
-    contributions : those that do not cancel between two settings of the same resistor (repeatability, resolution).
+    contributions : what makes the settings uncertain, in `unit`: resistor as measured, contact, repeatability.
     """
-    brackets = (_bracket("bracket of the first edge", one), _bracket("bracket of the second edge", other))
-    return Budget(one.middle - other.middle, unit, (*brackets, *contributions))
-
-
-def repeatability(intervals: Sequence[EdgeInterval]) -> Contribution:
-    """Scatter of an edge found several times, of the mean of the middles (GUM 4.2.3). Raises ValueError below two."""
-    if len(intervals) < 2:
-        raise ValueError(f"intervals: a scatter needs 2 searches at least, got {len(intervals)}")
-    middles = [interval.middle for interval in intervals]
-    mean = math.fsum(middles) / len(middles)
-    s = math.sqrt(math.fsum((middle - mean) ** 2 for middle in middles) / (len(middles) - 1))
-    return Contribution.from_readings("repeatability", s, len(middles), source=f"{len(middles)} searches")
-
-
-def _bracket(name: str, interval: EdgeInterval) -> Contribution:
-    return Contribution.from_resolution(name, interval.width, source="last setting of one class, first of the other")
+    return Budget(interval.middle, unit, tuple(contributions))
 
 
 def _steps(low: float, high: float, resolution: float, scale: Scale) -> int:

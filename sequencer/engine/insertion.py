@@ -8,13 +8,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from drivers.roles import Deed
-from drivers.signal_roles import Contact, SignalLine
+from drivers.signal_roles import Contact
 from drivers.text.si import si
 from drivers.trouble import InstrumentFault
 from sequencer.analysis.classes import Seen, class_of
-from sequencer.engine import fixture
+from sequencer.engine import fixture, resistors
 from sequencer.engine.scan import Scan
-from sequencer.engine.site import Setpoint, Site, Situation
+from sequencer.engine.site import Site, Situation
 from sequencer.engine.standin import StandIn, tap_volts
 
 PRECHARGE_s = 0.3
@@ -30,7 +30,7 @@ PROOF_s = 1.0
 SENSE_V = 0.005  # an open signal contact leaves no more than this on the bench's side
 TAP_LIMIT_A = 0.1
 TAP_TOLERANCE_V = 0.05  # a tap supply that stands further from what it was set to does not play its cell
-TAP_SETTLE_s = 0.2
+TAP_SETTLE_s = resistors.SETTLE_s
 MARGIN_s = 0.5  # watched longer than must be, for the first reading comes a scan late
 
 
@@ -92,15 +92,16 @@ def _prepare_signals(site: Site, situation: Situation, node_V: float) -> None:
     signals = site.bench.signals
     for line, setpoint in ((signals.id, situation.id), (signals.thermistor, situation.thermistor)):
         if line is not None and setpoint is not None:
-            set_resistor(site, line, setpoint)
-    if not signals.taps:
-        return
+            resistors.set_resistor(site, line, setpoint)
     taps = signals.taps[: site.pack.cells - 1]
-    deeds = [tap.limit(TAP_LIMIT_A) for tap in taps]
-    volts = tap_volts(node_V, site.pack.cells, situation.offsets_V)
-    deeds += [tap.volts(value_V) for tap, value_V in zip(taps, volts, strict=True)]
-    site.loop.set(*deeds, *(tap.on for tap in taps))
-    site.loop.observe(TAP_SETTLE_s)
+    volts = tap_volts(node_V, site.pack.cells, situation.offsets_V) if taps else []
+    if taps:
+        deeds = [tap.limit(TAP_LIMIT_A) for tap in taps]
+        deeds += [tap.volts(value_V) for tap, value_V in zip(taps, volts, strict=True)]
+        site.loop.set(*deeds, *(tap.on for tap in taps))
+    if signals.id is not None or signals.thermistor is not None or taps:
+        site.loop.observe(TAP_SETTLE_s)
+    resistors.measure(site, situation.id, situation.thermistor)
     _verify_taps(site, volts)
 
 
@@ -115,14 +116,6 @@ def _verify_taps(site: Site, volts: list[float]) -> None:
             if not abs(seen_V - volts[number - 1]) <= TAP_TOLERANCE_V:
                 told = f"plays cell {number} and reads {si(seen_V, 'V')}; it was set to {si(volts[number - 1], 'V')}"
                 raise InstrumentFault(f"{supply.name}.{tap.channel}", told)
-
-
-def set_resistor(site: Site, line: SignalLine, setpoint: Setpoint) -> None:
-    """Set a resistor at one of the pack's contacts, written down in Ω (1 GΩ for open, 0 for a short)."""
-    site.loop.set(line.resistor.to(setpoint))
-    ohm = {"open": 1e9, "short": 0.0}.get(setpoint, 0.0) if isinstance(setpoint, str) else setpoint
-    name = "set.id" if line is site.bench.signals.id else "set.thermistor"
-    site.loop.journal.append(name, site.loop.now_s, ohm)
 
 
 def _close(site: Site) -> None:

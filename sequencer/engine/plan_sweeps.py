@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 from drivers.text.measures import Band
 from sequencer.analysis.edges import expected_steps
-from sequencer.engine import insertion, walks
+from sequencer.engine import insertion, resistors, walks
 from sequencer.engine.targets import ends, sides
 from sequencer.model.pack import Pack
 from sequencer.model.specification import Specification
@@ -65,6 +65,7 @@ class Sweeping:
             times += self.charging if side.neighbour else self.refused
             low_ohm, high_ohm = sorted((side.end_ohm, side.beyond_ohm))
             times += self.search(expected_steps(low_ohm, high_ohm, step.resolution))
+            times += (self.charging + (self.charging if side.neighbour else self.refused)) * (step.repeats - 1)
         return times
 
     def sweep_temperature(self, step: SweepTemperature) -> Times:
@@ -75,6 +76,7 @@ class Sweeping:
             low, high = sorted(ends(band, cold, step))
             times += self.charging + self.refused
             times += self.search(expected_steps(low, high, step.resolution, "arithmetic"))
+            times += (self.charging + self.refused) * (step.repeats - 1)
         for cold, band in zip((True, False), window.run or (), strict=False):
             times += self.charging + Times(0, self._walk_s(step, cold, band))
         return times + self.charging
@@ -86,7 +88,7 @@ class Sweeping:
         legs = abs(expected_C - inner_C) / step.resolution + 2  # the first is the smallest step at 25 °C
         approach = len(walks.approach_C(inner_C, -1.0 if cold else 1.0))
         back = 1.0 if self._goes_on else walks.RELEASE_SPAN_K / walks.RELEASE_STEP_K
-        back_s = back * (dwell.start_delay + walks.DWELLS * dwell.response)
+        back_s = back * (dwell.start_delay + walks.DWELLS * dwell.response) + 2 * resistors.SETTLE_s
         return (approach + legs * walks.DWELLS) * dwell.response + back_s
 
     @property

@@ -9,6 +9,7 @@ from drivers.open_bench import OpenBench
 from sequencer.engine.loop import Loop
 from sequencer.model.curves import Curve
 from sequencer.model.pack import Pack
+from sequencer.model.preferred import nominal_in
 from sequencer.model.specification import Specification
 
 Setpoint = float | str  # Ω, or "open" or "short"
@@ -60,7 +61,7 @@ class Site:
         if self.pack.id is not None:
             return self.pack.id
         bands = self.specification.id_bands
-        return bands[0].middle_ohm if bands else "open"
+        return nominal_in(bands[0].low_ohm, bands[0].high_ohm) if bands else "open"
 
     def ohm_at(self, celsius: float) -> Setpoint:
         return "open" if self.curve is None else self.curve.ohm_at(celsius)

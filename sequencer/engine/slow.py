@@ -124,6 +124,8 @@ def channels_of(bench: OpenBench, cells: int) -> tuple[Channel, ...]:
     for name, line in (("id", signals.id), ("thermistor", signals.thermistor)):
         if line is not None:
             found += [Channel(f"set.{name}", "Ω", "setting"), Channel(f"{name}.sense", "V", "measured")]
+            if "ohms" in line.scanner.dialect.readings:  # while the charger is not connected
+                found.append(Channel(f"{name}.ohm", "Ω", "measured"))
     for number in range(1, min(len(signals.taps), cells - 1) + 1):
         found += [
             Channel(f"set.tap{number}", "V", "setting"),

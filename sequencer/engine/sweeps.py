@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from itertools import pairwise
 
 from sequencer.analysis.classes import Seen
@@ -17,6 +17,7 @@ from sequencer.model.steps import SweepId, SweepTemperature
 Show = Callable[[float | str, str], Shown]
 Label = Callable[[Seen], str]
 Chain = list[tuple[float, Shown]]
+Answer = tuple[float, str]
 
 
 def sweep_id(site: Site, step: SweepId) -> str:
@@ -46,7 +47,8 @@ def _sweep_band(band: IdBand, outward: list[Side], step: SweepId, at: Show) -> N
     for side, end in zip(outward, at_ends, strict=True):
         role = side.roles[2 if side.neighbour else 3]
         chain = [(band.middle_ohm, middle), (side.end_ohm, end), (side.beyond_ohm, at(side.beyond_ohm, role))]
-        _find_edge(chain, _band_of, step.resolution, "geometric", lambda ohm, role=side.roles[2]: at(ohm, role))  # type: ignore[misc]
+        edge = _Edge(_band_of, step.resolution, "geometric", step.repeats)
+        edge.find(chain, lambda ohm, role=side.roles[2]: at(ohm, role))  # type: ignore[misc]
 
 
 def _band_of(seen: Seen) -> str:
@@ -70,7 +72,8 @@ def sweep_starts(site: Site, step: SweepTemperature) -> str:
         return give_up(site, "temperature", LATCHED)
     try:
         for side, band in zip(("start_low", "start_high"), window.start or (), strict=False):
-            _sweep_limit(side, *ends(band, side.endswith("low"), step), step.resolution, at)
+            edge = _Edge(starts, step.resolution, "arithmetic", step.repeats)
+            _sweep_limit(side, *ends(band, side.endswith("low"), step), edge, at)
         for fault in ("open", "short"):
             at(fault, fault)
     except NoControl as none:
@@ -78,31 +81,54 @@ def sweep_starts(site: Site, step: SweepTemperature) -> str:
     return "swept"
 
 
-def _sweep_limit(side: str, inner_C: float, outer_C: float, resolution_K: float, at: Show) -> None:
+def _sweep_limit(side: str, inner_C: float, outer_C: float, edge: _Edge, at: Show) -> None:
     inside, outside = at(inner_C, f"{side}_inside"), at(outer_C, f"{side}_outside")
     chain = [(inner_C, inside), (outer_C, outside)]
     if not inside.watched.seen.flows:
         chain.insert(0, (NOMINAL_C, at(NOMINAL_C, f"{side}_nominal")))
-    _find_edge(chain, starts, resolution_K, "arithmetic", lambda celsius: at(celsius, side))
+    edge.find(chain, lambda celsius: at(celsius, side))
 
 
-def _find_edge(chain: Chain, label: Label, resolution: float, scale: Scale, at: Callable[[float], Shown]) -> None:
-    """Narrow the first change of class, from the inside of a band outward; nothing where there is none."""
-    sure = [(value, label(shown.watched.seen)) for value, shown in chain if not shown.void]
-    known = [(value, seen) for value, seen in sure if seen != UNDECIDED]
-    for (near, seen), (far, other) in pairwise(known):
-        if seen != other:
-            low, high = sorted(((near, seen), (far, other)))
-            unit = "Ω" if scale == "geometric" else "°C"
-            search = EdgeSearch.between(low[0], high[0], low[1], high[1], resolution=resolution, scale=scale, unit=unit)
-            _drive(search, label, at)
+@dataclass(frozen=True)
+class _Edge:
+    """How one edge is looked for: what is told apart, how narrow, and how often both its sides are shown."""
+
+    label: Label
+    resolution: float
+    scale: Scale
+    repeats: int
+
+    def find(self, chain: Chain, at: Callable[[float], Shown]) -> None:
+        """Narrow the first change of class, from the inside of a band outward; nothing where there is none."""
+        sure = [(value, self.label(shown.watched.seen)) for value, shown in chain if not shown.void]
+        known = [(value, seen) for value, seen in sure if seen != UNDECIDED]
+        for (near, seen), (far, other) in pairwise(known):
+            if seen != other:
+                self._show_again(self._narrowed((near, seen), (far, other), at), seen, at)
+                return
+
+    def _narrowed(self, near: Answer, far: Answer, at: Callable[[float], Shown]) -> EdgeSearch:
+        """Ask, show, tell, until the bracket is narrow enough or the search gives up."""
+        low, high = sorted((near, far))
+        unit = "Ω" if self.scale == "geometric" else "°C"
+        search = EdgeSearch.between(
+            low[0], high[0], low[1], high[1], resolution=self.resolution, scale=self.scale, unit=unit
+        )
+        while (setting := search.ask()) is not None:
+            shown = at(setting)
+            search = search.told(self.label(shown.watched.seen))
+            if not shown.watched.began:
+                search = search.controlled(not shown.void)
+        return search
+
+    def _show_again(self, search: EdgeSearch, inside: str, at: Callable[[float], Shown]) -> None:
+        """Both sides once more, now from outside inward: an edge that holds in both directions, with another setting
+        of the resistor, is the charger's and no chance.
+        """
+        if search.trouble is not None:
             return
-
-
-def _drive(search: EdgeSearch, label: Label, at: Callable[[float], Shown]) -> None:
-    """Ask, show, tell, until the bracket is narrow enough or the search gives up."""
-    while (setting := search.ask()) is not None:
-        shown = at(setting)
-        search = search.told(label(shown.watched.seen))
-        if not shown.watched.began:
-            search = search.controlled(not shown.void)
+        found = search.interval
+        inward = (found.high, found.low) if search.low_class == inside else (found.low, found.high)
+        for _ in range(self.repeats - 1):
+            for setting in inward:
+                at(setting)

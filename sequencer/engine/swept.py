@@ -17,12 +17,12 @@ from sequencer.analysis.estimates import mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.agreement import currents_differ
+from sequencer.engine.decade import Decade, in_kelvins
 from sequencer.engine.evidence import Evidence
 from sequencer.engine.found import Found
 from sequencer.engine.insertion import MEAN_s
 from sequencer.engine.targets import Side, sides, starts
 
-CONTACT_ohm = 0.1  # what a relay contact and its lead may add: common practice, no source
 APART = 0.05  # of a resistance: with a pull-up of 0.1 to 20 times it the contact's voltage moves by 0.2 % and more
 SENSE_SHARE = 0.002
 SENSE_FLOOR_V = 0.5e-3
@@ -203,19 +203,37 @@ class Points:
         first = min(others, key=lambda point: _distance(point, inside))
         if _distance(last, inside) > _distance(first, inside):
             return Found(trouble=f"answers contradict each other: {_where(first)} and {_where(last)}")
+        blurred = last.ohm == first.ohm
+        if blurred:  # shown again, this setting was answered otherwise: the edge lies somewhere around it
+            nearer = [point for point in alike if _distance(point, inside) < _distance(first, inside)]
+            further = [point for point in others if _distance(point, inside) > _distance(last, inside)]
+            if not (nearer and further):
+                return Found(trouble=f"answers contradict each other at {_where(first)}, and nothing lies around it")
+            last = max(nearer, key=lambda point: _distance(point, inside))
+            first = min(further, key=lambda point: _distance(point, inside))
+        return self._interval(last, first, [*alike, *others], place, blurred)
+
+    def _interval(self, last: Point, first: Point, shown: list[Point], place: str, blurred: bool) -> Found:
+        """The edge between two settings, as they were measured where the bench can do that."""
         assert last.ohm is not None
         assert first.ohm is not None
+        decade = Decade.of(self.evidence, self.accuracy, place)
         low, high = sorted((last.ohm, first.ohm))
-        lines = resistor_lines(self.accuracy, place, (low + high) / 2)
-        interval = EdgeInterval(low, high, "", "")
+        interval = EdgeInterval(low, high, "", "").converted(decade.ohm)
         words = f"{_where(last)}: {last.seen.kind}; {_where(first)}: {first.seen.kind}"
+        if blurred:
+            words += "; a setting between them was answered once so and once otherwise"
+        budget = end_budget(interval, decade.lines(last.ohm, first.ohm))
+        kelvins = in_kelvins(self.evidence, budget) if last.celsius is not None else ""
+        times = min(sum(point.ohm == one.ohm for point in shown) for one in (last, first))
+        repeated = f"; both shown {times} times" if times > 1 else ""
         return Found(
-            end_budget(interval, lines),
-            interval=(low, high),
-            n=len(alike) + len(others),
-            start_s=min(point.start_s for point in (*alike, *others)),
-            end_s=max(point.end_s for point in (*alike, *others)),
-            words=words,
+            budget,
+            interval=(interval.low, interval.high),
+            n=len(shown),
+            start_s=min(point.start_s for point in shown),
+            end_s=max(point.end_s for point in shown),
+            words=words + repeated + kelvins + decade.words(last.ohm, first.ohm),
         )
 
 
@@ -272,18 +290,6 @@ def _apart(one: Point, other: Point) -> bool:
     if one.ohm is None or other.ohm is None:
         return one.ohm is not other.ohm
     return abs(math.log(one.ohm / other.ohm)) > APART
-
-
-def resistor_lines(accuracy: Accuracy, place: str, ohm: float) -> list[Contribution]:
-    """Budget lines of a programmable resistor at a place, such as "id.resistor"."""
-    name, _, dialect = accuracy.file.at(place)
-    spans = sorted((span for span in dialect.accuracy.resistance if span.range >= ohm), key=lambda span: span.range)
-    if not spans:
-        raise ValueError(f"{name}: its dialect states no accuracy for {si(ohm, 'Ω')}")
-    half = spans[0].set * ohm + spans[0].residual
-    source = f"accuracy, dialect {dialect.name}"
-    contact = Contribution.from_half_width("contact", CONTACT_ohm, "rectangular", source="common practice, no source")
-    return [Contribution.from_half_width(name, half, "rectangular", source=source), contact]
 
 
 def id_findings(evidence: Evidence, accuracy: Accuracy) -> dict[str, Found]:

@@ -11,10 +11,11 @@ import numpy as np
 from sequencer.analysis.edges import EdgeInterval, end_budget
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
+from sequencer.engine.decade import Decade, in_kelvins
 from sequencer.engine.evidence import Evidence, Trace
 from sequencer.engine.found import Found
 from sequencer.engine.insertion import MEAN_s
-from sequencer.engine.swept import ended_early, given_up, resistor_lines
+from sequencer.engine.swept import ended_early, given_up
 from sequencer.engine.targets import ends
 from sequencer.engine.walks import GOES_ON, OVER_V, STOPPED
 
@@ -107,15 +108,20 @@ class Walks:
         # On the way to the first step a setting stands for one response time only: that it let the charge go on
         # says nothing, and 25 °C is the last that is known to.
         last = legs[index - 1] if index > len(probe) + len(approach) else probe[0]
-        low, high = sorted((float(last.event["ohm"]), float(stopped.event["ohm"])))
-        lines = resistor_lines(self._accuracy, "thermistor.resistor", (low + high) / 2)
+        settings = float(last.event["ohm"]), float(stopped.event["ohm"])
+        decade = Decade.of(self._evidence, self._accuracy, "thermistor.resistor")
+        low, high = sorted(settings)
+        interval = EdgeInterval(low, high, "", "").converted(decade.ohm)
+        budget = end_budget(interval, decade.lines(*settings))
         return Found(
-            end_budget(EdgeInterval(low, high, "", ""), lines),
-            interval=(low, high),
+            budget,
+            interval=(interval.low, interval.high),
             n=len(legs),
             start_s=legs[0].start_s,
             end_s=stopped.end_s,
-            words=f"charging at {_celsius(last)}, stopped at {_celsius(stopped)}; {self._back(side)}",
+            words=f"charging at {_celsius(last)}, stopped at {_celsius(stopped)}; {self._back(side)}"
+            + in_kelvins(self._evidence, budget)
+            + decade.words(*settings),
             trouble=self._no_control_after(stopped.end_s, "walk"),
         )
 

@@ -8,10 +8,9 @@ from __future__ import annotations
 
 import math
 
-from sequencer.engine import insertion
-from sequencer.engine.insertion import set_resistor
+from sequencer.engine import insertion, resistors
 from sequencer.engine.points import LATCHED, controlled, cycle_mains, give_up, is_good
-from sequencer.engine.site import NOMINAL_C, Site
+from sequencer.engine.site import NOMINAL_C, Setpoint, Site
 from sequencer.engine.targets import ends
 from sequencer.model.steps import RaiseCell, SweepTemperature
 
@@ -60,26 +59,32 @@ def walk_temperatures(site: Site, step: SweepTemperature) -> str:
     for side, band in zip(("run_low", "run_high"), window.run or (), strict=False):
         if not begin(site, step.cell_voltage):
             return give_up(site, "walk", LATCHED)
-        _walk_out(site, step, side, *ends(band, side.endswith("low"), step))
+        settings = _walk_out(site, step, side, *ends(band, side.endswith("low"), step))
         insertion.take_out(site)
+        assert site.bench.signals.thermistor is not None
+        resistors.measure_again(site, site.bench.signals.thermistor, settings)
     return "walked" if controlled(site, step.cell_voltage) else give_up(site, "walk", LATCHED)
 
 
-def _walk_out(site: Site, step: SweepTemperature, side: str, inner_C: float, outer_C: float) -> None:
+def _walk_out(site: Site, step: SweepTemperature, side: str, inner_C: float, outer_C: float) -> tuple[Setpoint, ...]:
+    """Outward until the charge stops, and back; returns the settings in Ω between which it did, or none."""
     towards = -1.0 if outer_C < inner_C else 1.0
     response_s = site.specification.dwell.response
     # The smallest step first, far inside: what stops a charge there is not the temperature.
-    if _temperature_step(site, side, NOMINAL_C + towards * step.resolution, DWELLS * response_s, "probe"):
-        return
+    last_C = NOMINAL_C + towards * step.resolution
+    if _temperature_step(site, side, last_C, DWELLS * response_s, "probe"):
+        return ()
     for celsius in approach_C(inner_C, towards):
         if _temperature_step(site, side, celsius, response_s, "approach"):
             _walk_back(site, side, celsius, -towards)
-            return
+            return site.ohm_at(last_C), site.ohm_at(celsius)
     for number in range(out_steps(inner_C, outer_C, step.resolution) + 1):
         celsius = inner_C + towards * min(number * step.resolution, abs(outer_C - inner_C))
         if _temperature_step(site, side, celsius, DWELLS * response_s, "out"):
             _walk_back(site, side, celsius, -towards)
-            return
+            return site.ohm_at(last_C), site.ohm_at(celsius)
+        last_C = celsius
+    return ()
 
 
 def approach_C(inner_C: float, towards: float) -> list[float]:
@@ -99,7 +104,7 @@ def _temperature_step(site: Site, side: str, celsius: float, dwell_s: float, way
     assert line is not None
     begun_s = site.loop.now_s
     ohm = site.ohm_at(celsius)
-    set_resistor(site, line, ohm)
+    resistors.set_resistor(site, line, ohm)
     came = _goes_on(site, dwell_s) if way == "back" else _stops(site, dwell_s)
     site.loop.event(
         "walk",

@@ -1,4 +1,4 @@
-"""Preferred values of resistors (IEC 60063): what a pack's ID resistor most likely is, and a grid to sweep over."""
+"""Preferred values of resistors (IEC 60063): what a pack's ID resistor most likely is."""
 
 from __future__ import annotations
 
@@ -31,31 +31,20 @@ def between(low_ohm: float, high_ohm: float, series: Series = "E24") -> tuple[fl
     return tuple(value for value in values if low_ohm <= value <= high_ohm)
 
 
-def nearest(ohm: float, series: Series = "E24") -> float:
-    """The value of a series with the smallest ratio to `ohm`. Raises ValueError unless it is finite and above zero."""
-    _check("ohm", ohm)
-    return min(between(ohm / 2.0, ohm * 2.0, series), key=lambda value: abs(math.log(value / ohm)))
-
-
-def smallest_from(ohm: float, series: Series = "E24") -> float:
-    """The smallest value of a series that is not below `ohm`. Raises ValueError unless it is finite and above zero."""
-    _check("ohm", ohm)
-    return between(ohm * (1.0 - 1e-12), ohm * 2.0, series)[0]
-
-
 def nominal_in(low_ohm: float, high_ohm: float) -> float:
     """What a band of resistances is most likely the tolerance of, where its nominal value is not declared.
 
-    Of the coarsest series that has values in the band the one next to the geometric middle; the middle itself where
-    not even E96 has one. Raises ValueError unless 0 < low <= high.
+    Of the coarsest series that has values in the middle half of the band (as a ratio) the one next to the geometric
+    middle; the middle itself where not even E96 has one. Raises ValueError unless 0 < low <= high.
     """
     _check("low_ohm", low_ohm)
     if not low_ohm <= high_ohm:
         raise ValueError(f"high_ohm: expected a bound not below {low_ohm!r}, got {high_ohm!r}")
     middle = math.sqrt(low_ohm * high_ohm)
+    quarter = (high_ohm / low_ohm) ** 0.25
     order: tuple[Series, ...] = ("E12", "E24", "E96")
     for series in order:
-        values = between(low_ohm, high_ohm, series)
+        values = between(middle / quarter, middle * quarter, series)
         if values:
             return min(values, key=lambda value: abs(math.log(value / middle)))
     return middle

@@ -9,6 +9,7 @@ from pydantic import BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSche
 from drivers.text.measures import Celsius, Measure, PositiveSeconds, PositiveVolts, Seconds, refuse
 
 MAX_COMPRESSION = 100.0
+MAX_REPEATS = 20
 KINDS = ("insert", "charge", "remove", "sweep_id", "sweep_temperature", "raise_cell")
 SWEEPS = {"sweep_id": "id", "sweep_temperature": "temperature", "raise_cell": "tap_trip"}  # and what they find
 
@@ -32,6 +33,20 @@ def _times(value: Any) -> float:
 _TIMES_SCHEMA = WithJsonSchema(
     {"anyOf": [{"type": "number", "minimum": 1, "maximum": MAX_COMPRESSION}, {"type": "string"}]}
 )
+
+
+def _repeats(value: Any) -> int:
+    """A count from 1 to MAX_REPEATS."""
+    text = str(value)
+    if not text.isdecimal() or not 1 <= int(text) <= MAX_REPEATS:
+        raise refuse(f'"{text}": expected a count from 1 to {MAX_REPEATS}')
+    return int(text)
+
+
+_REPEATS_SCHEMA = WithJsonSchema(
+    {"anyOf": [{"type": "integer", "minimum": 1, "maximum": MAX_REPEATS}, {"type": "string"}]}
+)
+Repeats = Annotated[int, BeforeValidator(_repeats), _REPEATS_SCHEMA]
 Share = Annotated[float, Measure("ratio", above=0)]
 Kelvins = Annotated[float, Measure("temperature difference", above=0)]
 
@@ -66,6 +81,7 @@ class SweepId(_Part):
     cell_voltage: PositiveVolts
     resolution: Share = Field(0.01, description="of an edge: the bracket is no wider than this share of it")
     outside: Share = Field(0.25, description="so far beyond a band's end a point is shown that must not select it")
+    repeats: Repeats = Field(2, description="both sides of each edge are shown so often: at first from inside outward")
 
 
 class SweepTemperature(_Part):
@@ -74,6 +90,7 @@ class SweepTemperature(_Part):
     cell_voltage: PositiveVolts
     resolution: Kelvins = Field(0.5, description="of a limit")
     beyond: Kelvins = Field(3.0, description="so far outside a declared limit the search begins")
+    repeats: Repeats = Field(2, description="both sides of each limit for starting are shown so often")
 
 
 class RaiseCell(_Part):

@@ -26,7 +26,8 @@ steps:
   - {step}
 judge: [charges, {judge}]
 """
-EDGE = "sweep_id: {cell_voltage: 3.70 V, resolution: 2 %}"
+# so narrow that the bracket is no wider than the uncertainty of its ends: that is what is put to the test
+EDGE = "sweep_id: {cell_voltage: 3.70 V, resolution: 0.02 %, repeats: 1}"
 STARTS = "sweep_temperature: {cell_voltage: 3.70 V, resolution: 1 K, beyond: 3 K}"
 CELLS = "raise_cell: {cell_voltage: 3.70 V, from: 4.20 V, to: 4.30 V, by: 10 mV}"
 ONLY_START = {

@@ -17,7 +17,7 @@ def test_every_role_says_what_it_needs() -> None:
 def test_what_is_asked_of_a_setting_or_reading_is_asked_of_one_that_is_needed(role: str) -> None:
     need = NEEDS[role]
     assert need.valued <= need.settings
-    assert need.channelled <= need.settings | set(need.readings)
+    assert need.channelled <= need.settings | set(need.readings) | set(need.may)
     assert "clear" in need.settings
     assert not need.states or "status" in need.readings["state"]
 

@@ -150,3 +150,41 @@ def test_thermometer_reads_the_room(breadth_world: Make, ask: Ask) -> None:
     found = [float(ask(breadth_world(seed=seed), "thermometer", "MEAS:TEMP?")) for seed in range(20)]
     assert all(abs(value - 23.0) < 1.0 for value in found)
     assert len(set(found)) > 5
+
+
+def test_a_resistor_is_measured_with_its_contact_open(
+    breadth_world: Make, ask: Ask, insert: Callable[..., None]
+) -> None:
+    world = breadth_world(errors=0.0)
+    ask(world, "decade_id", "OUTP:MODE RES;:RES 1234.5")
+    world.advance(0.1)
+    assert numbers(ask(world, "scanner", "MEAS:RES? (@111)")) == [pytest.approx(1234.5)]
+    ask(world, "decade_id", "OUTP:MODE OPEN")
+    world.advance(0.1)
+    assert numbers(ask(world, "scanner", "MEAS:RES? (@111,112)")) == [9.9e37, 9.9e37]
+    assert numbers(ask(world, "scanner", "MEAS:RES? (@101)")) == [pytest.approx(1.0, rel=2e-3)]  # a tap's shunt
+
+
+def test_a_pin_beside_it_spoils_a_resistance(breadth_world: Make, ask: Ask, insert: Callable[..., None]) -> None:
+    """1 kΩ with 10 kΩ to 3.3 V beside it: with 1 mA in it reads 909.09 Ω * 1.33 = 1209.09 Ω, beyond that range; with
+    0.1 mA in 909.09 Ω * (0.1 + 0.33) / 0.1 = 3909.09 Ω, by hand.
+    """
+    world = breadth_world(errors=0.0)
+    insert(world, id_ohm=1000.0)
+    world.advance(0.1)
+    assert numbers(ask(world, "scanner", "MEAS:RES? (@111)")) == [pytest.approx(3909.09, rel=1e-4)]
+
+
+def test_the_ohmmeter_errs_within_what_its_dialect_states(breadth_world: Make, ask: Ask) -> None:
+    spans = dialect("scpi-scanner").accuracy.ohmmeter
+    for stated, mine in zip(spans, scanner.OHM_SPANS, strict=True):
+        assert (stated.range, stated.reading, stated.of_range) == pytest.approx(
+            (mine.range, mine.reading, mine.of_range)
+        )
+    for seed in range(25):
+        world = breadth_world(seed=seed)
+        ask(world, "decade_id", "OUTP:MODE RES;:RES 4700")
+        world.advance(0.1)
+        true_ohm = world.instruments["decade_id"].true_ohm  # type: ignore[attr-defined]
+        (read_ohm,) = numbers(ask(world, "scanner", "MEAS:RES? (@111)"))
+        assert abs(read_ohm - true_ohm) <= 0.0001 * 4700 + 0.1 + 0.1  # reading, of range, leads

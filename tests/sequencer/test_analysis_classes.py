@@ -1,13 +1,11 @@
 """What one insertion showed. The defaults are those of the findings' table; the traces are made up here."""
 
-from itertools import pairwise
-
 import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
-from sequencer.analysis.classes import Seen, class_of, cluster_plateaus, nearest_band
+from sequencer.analysis.classes import Seen, class_of, nearest_band
 
 DECLARED = ((1.425, 1.575), (2.85, 3.15))  # 1.5 A and 3.0 A, ± 5 %
 
@@ -160,30 +158,3 @@ def test_bands_that_touch_or_share_a_current() -> None:
     assert nearest_band(3.15 * 1.19, DECLARED) == 1
     assert nearest_band(3.15 * 1.21, DECLARED) is None
     assert nearest_band(2.0, ()) is None
-
-
-def test_plateaus_in_groups() -> None:
-    current_A = [3.001, 1.499, 0.0, 2.999, 1.502, 0.001, 3.004]
-    groups = cluster_plateaus(current_A, [1e-3] * 7, full_scale_A=3.0)
-    assert [group.members for group in groups] == [(2, 5), (1, 4), (0, 3, 6)]
-    assert groups[2].mean_A == pytest.approx(3.0013, abs=1e-4)
-    assert (groups[1].low_A, groups[1].high_A) == (1.499, 1.502)
-
-
-def test_noise_wider_than_the_share_keeps_a_group_together() -> None:
-    assert len(cluster_plateaus([1.0, 1.2], [0.01, 0.01], full_scale_A=3.0)) == 2  # 0.2 A > 5 % of 3 A
-    assert len(cluster_plateaus([1.0, 1.2], [0.05, 0.05], full_scale_A=3.0)) == 1  # 3 sigma of the difference: 0.212 A
-    assert len(cluster_plateaus([1.0, 1.14], [0.0, 0.0], full_scale_A=3.0)) == 1
-    assert cluster_plateaus([], [], full_scale_A=1.0) == ()
-    with pytest.raises(ValueError, match="u_A: expected 1 values"):
-        cluster_plateaus([1.0], [], full_scale_A=1.0)
-    with pytest.raises(ValueError, match="full_scale_A"):
-        cluster_plateaus([1.0], [0.1], full_scale_A=0.0)
-
-
-@given(st.lists(st.floats(0.0, 10.0), max_size=30))
-def test_groups_hold_everything_once_and_lie_apart(current_A: list[float]) -> None:
-    groups = cluster_plateaus(current_A, [0.01] * len(current_A), full_scale_A=10.0)
-    assert sorted(member for group in groups for member in group.members) == list(range(len(current_A)))
-    for before, after in pairwise(groups):
-        assert after.low_A - before.high_A > 0.5

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable
 from typing import Any
 
@@ -10,6 +11,7 @@ import pytest
 from drivers.virtual.charger import Charger
 from drivers.virtual.resistor import Resistor
 from drivers.virtual.tap_supply import TapSupply
+from sequencer.engine import resistors
 from sequencer.engine.loop import StopFlag
 from sequencer.engine.run import Watching
 
@@ -87,6 +89,11 @@ def test_a_resistor_that_does_not_do_as_it_is_told_is_no_fail(
             usual(self)  # else it reads back what was asked for, and its relays stay
 
     monkeypatch.setattr(Resistor, "_switch", sticky)
+    measured = rehearse_full("id-bands", spec_text=ONE_BAND, changes=QUICK)
+    assert measured.ended.ended == "bench fault"
+    assert re.match(r"decade_id: was set to 4\.\d+ kΩ and measures 2\.\d+ kΩ", measured.ended.why)
+    assert (measured.failing, measured.ended.safe.verified) == (set(), True)
+    monkeypatch.setattr(resistors, "measure", lambda *_: None)  # as on a bench without ohmmeter
     found = rehearse_full("id-bands", spec_text=ONE_BAND, changes=QUICK)
     assert found.failing == set()
     assert found.verdicts["id.outside"] == "inconclusive"

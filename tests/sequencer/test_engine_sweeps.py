@@ -44,7 +44,18 @@ def points(record: Any) -> list[dict[str, Any]]:
 def test_a_search_takes_as_many_settings_as_bisection_needs(ids: Any, side: str, ratio: float) -> None:
     """ceil(log2(ln 1.25 / ln 1.01)) = ceil(log2(22.4)) = 5 settings (computed: a bracket of ratio 1.25, halved)."""
     made = [point for point in points(ids) if point["role"] == f"band1.{side}_edge"]
-    assert len(made) == math.ceil(math.log2(math.log(ratio) / math.log(1.01))) == 5
+    assert len({point["ohm"] for point in made} - {4230.0, 5170.0}) == 5
+    assert math.ceil(math.log2(math.log(ratio) / math.log(1.01))) == 5
+
+
+@pytest.mark.parametrize("side", ["lower", "upper"])
+def test_both_sides_of_an_edge_are_shown_again_from_outside_inward(ids: Any, side: str) -> None:
+    made = [point for point in points(ids) if point["role"] == f"band1.{side}_edge"]
+    outside, inside = made[-2:]
+    assert (outside["label"], inside["label"]) == ("no charge", "charges, band 1")
+    before = [point["ohm"] for point in points(ids) if point not in (outside, inside)]
+    assert {outside["ohm"], inside["ohm"]} <= set(before)
+    assert max(outside["ohm"], inside["ohm"]) / min(outside["ohm"], inside["ohm"]) <= 1.01
 
 
 def test_the_first_setting_is_the_geometric_middle(ids: Any) -> None:

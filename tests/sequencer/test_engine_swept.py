@@ -7,13 +7,15 @@ from collections.abc import Callable
 from types import SimpleNamespace
 from typing import Any
 
+import numpy as np
 import pytest
 
 from drivers.text.measures import Limit
 from sequencer.analysis.classes import Seen
 from sequencer.analysis.estimates import Estimate
 from sequencer.analysis.intervals import decide_interval
-from sequencer.engine.swept import Point, Points, resistor_lines
+from sequencer.engine.decade import Decade
+from sequencer.engine.swept import Point, Points
 
 Rehearse = Callable[..., Any]
 AMPERES = Limit("current").read
@@ -28,12 +30,16 @@ def point(role: str, ohm: float | None, kind: str = "charges", *, void: bool = F
 
 def accuracy_of(*spans: Any) -> Any:
     dialect = SimpleNamespace(name="some", accuracy=SimpleNamespace(resistance=spans))
-    return SimpleNamespace(file=SimpleNamespace(at=lambda place: ("decade", None, dialect)))
+    entry = SimpleNamespace(certificate=None)
+    return SimpleNamespace(file=SimpleNamespace(at=lambda place: ("decade", entry, dialect)))
 
 
 def points(*made: Point, given_up: str | None = None, ended: str = "complete") -> Points:
     """Points without a record: what is read from traces is not asked for."""
-    silent = SimpleNamespace(within=lambda *span: SimpleNamespace(value=SimpleNamespace(size=0)))
+    empty = np.array([])
+    silent = SimpleNamespace(
+        within=lambda *span: SimpleNamespace(value=SimpleNamespace(size=0)), time_s=empty, value=empty
+    )
     evidence: Any = SimpleNamespace(trace=lambda name: silent, ended=ended, manifest={"why": "stopped by Ctrl-C"})
     return Points(evidence, accuracy_of(SPAN), "id", tuple(made), given_up)
 
@@ -70,7 +76,7 @@ def test_an_edge_lies_between_the_last_alike_and_the_first_unlike() -> None:
     ],
 )
 def test_a_resistor_is_as_uncertain_as_its_narrowest_span_states(ohm: float, half_ohm: float, u_ohm: float) -> None:
-    resistor, contact = resistor_lines(accuracy_of(SPAN, FINE), "id.resistor", ohm)
+    resistor, contact = Decade(accuracy_of(SPAN, FINE), "id.resistor", {}).lines(ohm)
     assert (resistor.name, resistor.source) == ("decade", "accuracy, dialect some")
     assert resistor.u * math.sqrt(3) == pytest.approx(half_ohm)
     assert resistor.u == pytest.approx(u_ohm, abs=1e-5)
@@ -80,7 +86,7 @@ def test_a_resistor_is_as_uncertain_as_its_narrowest_span_states(ohm: float, hal
 
 def test_a_resistance_beyond_every_span_has_no_accuracy() -> None:
     with pytest.raises(ValueError, match=r"decade: its dialect states no accuracy for 1\.5 MΩ"):
-        resistor_lines(accuracy_of(SPAN, FINE), "id.resistor", 1.5e6)
+        Decade(accuracy_of(SPAN, FINE), "id.resistor", {}).lines(1.5e6)
 
 
 @pytest.mark.parametrize(("limit_ohm", "verdict"), [(1221.8, "pass"), (1221.7, "conditional pass")])
@@ -182,3 +188,35 @@ def test_a_shunt_that_is_not_what_it_is_declared_makes_no_verdict(rehearse_full:
     assert found.failing == set()
     assert found.verdicts["id.band1.current"] == "inconclusive"
     assert "shunt, and load minus supply, differ" in found.verdict("id.band1.current")["why"]
+
+
+def test_a_setting_answered_both_ways_widens_the_edge_to_its_neighbours() -> None:
+    made = points(
+        point("in", 1e3),
+        point("edge", 1.1e3),
+        point("edge", 1.2e3, "no charge"),
+        point("edge", 1.2e3),  # shown again: this time it charges
+        point("out", 1.4e3, "no charge"),
+    )
+    found = made.edge(ROLES, "id.resistor", label)
+    assert found.interval == (1.1e3, 1.4e3)
+    assert "answered once so and once otherwise" in found.words
+
+
+def test_a_setting_answered_both_ways_with_nothing_beyond_tells_nothing() -> None:
+    found = points(point("in", 1e3), point("edge", 1.2e3, "no charge"), point("edge", 1.2e3)).edge(
+        ROLES, "id.resistor", label
+    )
+    assert found.trouble == "answers contradict each other at 1.2 kΩ, and nothing lies around it"
+
+
+def test_an_edge_shown_in_both_directions_says_so() -> None:
+    found = points(
+        point("in", 1e3),
+        point("edge", 1.2e3),
+        point("edge", 1.21e3, "no charge"),
+        point("edge", 1.21e3, "no charge"),
+        point("edge", 1.2e3),
+    ).edge(ROLES, "id.resistor", label)
+    assert found.interval == (1.2e3, 1.21e3)
+    assert "both shown 2 times" in found.words
