@@ -27,6 +27,8 @@ _WORDS: Mapping[str, str] = {
     "temperature.start_high": "hottest start",
     "temperature.run_low": "running charge stops in the cold",
     "temperature.run_high": "running charge stops in the heat",
+    "temperature.release_low": "charge goes on again after the cold",
+    "temperature.release_high": "charge goes on again after the heat",
     "temperature.open": "thermistor open",
     "temperature.short": "thermistor shorted",
     "tap_trip.voltage": "cell {n}: stops the charge at",

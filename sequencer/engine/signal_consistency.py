@@ -50,7 +50,7 @@ def _check_curve(specification: Bound[Specification], curve: Curve, faults: Faul
     window = specification.model.temperature
     assert window is not None
     low_C, high_C = curve.span_C
-    for key, pair in (("start", window.start), ("run", window.run)):
+    for key, pair in (("start", window.start), ("run", window.run), ("release", window.release)):
         for number, band in enumerate(pair or ()):
             for celsius in (band.low, band.high):
                 if celsius is not None and not low_C <= celsius <= high_C:

@@ -3,7 +3,7 @@ it goes on; read from the traces, the events only say when what was set."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -108,7 +108,35 @@ class Walks:
         # On the way to the first step a setting stands for one response time only: that it let the charge go on
         # says nothing, and 25 °C is the last that is known to.
         last = legs[index - 1] if index > len(probe) + len(approach) else probe[0]
-        settings = float(last.event["ohm"]), float(stopped.event["ohm"])
+        words = f"charging at {_celsius(last)}, stopped at {_celsius(stopped)}; {self._back(side)}"
+        trouble = self._no_control_after(stopped.end_s, "walk")
+        return replace(self._between(last, stopped, len(legs), words, trouble), start_s=legs[0].start_s)
+
+    def release(self, side: str) -> Found:
+        """Where a charge that had stopped went on by itself on the way back, in ohms; `side` is "low" or "high"."""
+        finding = f"temperature.run_{side}"
+        stopped = self.temperature(f"run_{side}")
+        if stopped.absent is not None or stopped.trouble is not None:
+            return Found(absent=stopped.absent, trouble=stopped.trouble)
+        back = self.legs(finding, "back")
+        if not back:
+            return Found(none="the charge had not stopped") if stopped.none else Found(absent="it was not walked back")
+        resumed = next((leg for leg in back if self._goes_on(leg)), None)
+        if resumed is None:
+            words = f"did not go on by itself as far as {_celsius(back[-1])}"
+            return Found(none=words, start_s=back[0].start_s, end_s=back[-1].end_s)
+        index = back.index(resumed)
+        before = back[index - 1] if index else self._stopping(finding)
+        return self._between(before, resumed, len(back), f"off at {_celsius(before)}, on at {_celsius(resumed)}")
+
+    def _stopping(self, finding: str) -> Leg:
+        """The leg in which the charge stopped."""
+        legs = [leg for way in ("approach", "out") for leg in self.legs(finding, way)]
+        return next(leg for leg in legs if leg.stop_s is not None)
+
+    def _between(self, one: Leg, other: Leg, count: int, words: str, trouble: str | None = None) -> Found:
+        """The interval between two settings of the thermistor, as they were measured where the bench can do that."""
+        settings = float(one.event["ohm"]), float(other.event["ohm"])
         decade = Decade.of(self._evidence, self._accuracy, "thermistor.resistor")
         low, high = sorted(settings)
         interval = EdgeInterval(low, high, "", "").converted(decade.ohm)
@@ -116,13 +144,11 @@ class Walks:
         return Found(
             budget,
             interval=(interval.low, interval.high),
-            n=len(legs),
-            start_s=legs[0].start_s,
-            end_s=stopped.end_s,
-            words=f"charging at {_celsius(last)}, stopped at {_celsius(stopped)}; {self._back(side)}"
-            + in_kelvins(self._evidence, budget)
-            + decade.words(*settings),
-            trouble=self._no_control_after(stopped.end_s, "walk"),
+            n=count,
+            start_s=one.start_s,
+            end_s=other.end_s,
+            words=words + in_kelvins(self._evidence, budget) + decade.words(*settings),
+            trouble=trouble,
         )
 
     def _never_stopped(self, side: str, last: Leg) -> Found:
@@ -315,6 +341,7 @@ def walk_findings(evidence: Evidence, accuracy: Accuracy) -> dict[str, Found]:
     window = evidence.specification.temperature
     if (made & {"temperature.run_low", "temperature.run_high"} or given_up(evidence, "walk")) and window and window.run:
         found |= {f"temperature.{side}": walks.temperature(side) for side in ("run_low", "run_high")}
+        found |= {f"temperature.release_{side}": walks.release(side) for side in ("low", "high")}
     if "tap_trip" in made or given_up(evidence, "tap_trip"):
         for cell in range(1, evidence.pack.cells + 1):
             found |= {f"tap_trip.cell{cell}.{what}": one for what, one in walks.cell(cell).items()}

@@ -67,7 +67,10 @@ def walk_temperatures(site: Site, step: SweepTemperature) -> str:
 
 
 def _walk_out(site: Site, step: SweepTemperature, side: str, inner_C: float, outer_C: float) -> tuple[Setpoint, ...]:
-    """Outward until the charge stops, and back; returns the settings in Ω between which it did, or none."""
+    """Outward until the charge stops, and back until it goes on.
+
+    Returns the settings in Ω on both sides of the stop and of the way back, as far as there were any.
+    """
     towards = -1.0 if outer_C < inner_C else 1.0
     response_s = site.specification.dwell.response
     # The smallest step first, far inside: what stops a charge there is not the temperature.
@@ -76,13 +79,11 @@ def _walk_out(site: Site, step: SweepTemperature, side: str, inner_C: float, out
         return ()
     for celsius in approach_C(inner_C, towards):
         if _temperature_step(site, side, celsius, response_s, "approach"):
-            _walk_back(site, side, celsius, -towards)
-            return site.ohm_at(last_C), site.ohm_at(celsius)
+            return site.ohm_at(last_C), site.ohm_at(celsius), *_walk_back(site, side, celsius, -towards)
     for number in range(out_steps(inner_C, outer_C, step.resolution) + 1):
         celsius = inner_C + towards * min(number * step.resolution, abs(outer_C - inner_C))
         if _temperature_step(site, side, celsius, DWELLS * response_s, "out"):
-            _walk_back(site, side, celsius, -towards)
-            return site.ohm_at(last_C), site.ohm_at(celsius)
+            return site.ohm_at(last_C), site.ohm_at(celsius), *_walk_back(site, side, celsius, -towards)
         last_C = celsius
     return ()
 
@@ -119,13 +120,21 @@ def _temperature_step(site: Site, side: str, celsius: float, dwell_s: float, way
     return came
 
 
-def _walk_back(site: Site, side: str, celsius: float, inward: float) -> None:
-    """Back inward in steps of 1 K until the charge goes on, for at most RELEASE_SPAN_K and not beyond 25 °C."""
+def _walk_back(site: Site, side: str, celsius: float, inward: float) -> tuple[Setpoint, ...]:
+    """Back inward in steps of 1 K until the charge goes on, for at most RELEASE_SPAN_K and not beyond 25 °C.
+
+    Returns the settings in Ω between which it went on, or none.
+    """
     dwell_s = site.specification.dwell.start_delay + DWELLS * site.specification.dwell.response
+    last_C = celsius
     for number in range(1, round(RELEASE_SPAN_K / RELEASE_STEP_K) + 1):
         back_C = celsius + inward * number * RELEASE_STEP_K
-        if inward * (back_C - NOMINAL_C) > 0 or _temperature_step(site, side, back_C, dwell_s, "back"):
-            return
+        if inward * (back_C - NOMINAL_C) > 0:
+            break
+        if _temperature_step(site, side, back_C, dwell_s, "back"):
+            return site.ohm_at(last_C), site.ohm_at(back_C)
+        last_C = back_C
+    return ()
 
 
 def raise_cells(site: Site, step: RaiseCell) -> str:

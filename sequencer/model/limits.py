@@ -136,5 +136,6 @@ class Declared:
         if what in ("open", "short"):
             said: str | None = getattr(window, what)
             return said or "no charge"
-        pair = window.start if what.startswith("start") else window.run
-        return None if pair is None else pair[0 if what.endswith("low") else 1]
+        pair: Any = getattr(window, what.partition("_")[0])
+        found: Band | None = None if pair is None else pair[0 if what.endswith("low") else 1]
+        return found

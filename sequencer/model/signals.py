@@ -81,6 +81,7 @@ class TemperatureWindow(_Part):
     curve: str = Field(description="name of a shipped thermistor curve, or path of a curve file")
     start: Ends | None = None
     run: Ends | None = None
+    release: Ends | None = Field(None, description="where a charge that stopped goes on by itself, on the way back")
     open: Declared | None = None
     short: Declared | None = None
     rule: Rule | None = None

@@ -30,9 +30,7 @@ judge: [charges, {judge}]
 EDGE = "sweep_id: {cell_voltage: 3.70 V, resolution: 0.02 %, repeats: 1}"
 STARTS = "sweep_temperature: {cell_voltage: 3.70 V, resolution: 1 K, beyond: 3 K}"
 CELLS = "raise_cell: {cell_voltage: 3.70 V, from: 4.20 V, to: 4.30 V, by: 10 mV}"
-ONLY_START = {
-    "start: [5 °C ± 2 °C, 40 °C ± 2 °C], run: [0 °C ± 2 °C, 45 °C ± 2 °C]": "start: [5 °C ± 2 °C, 40 °C ± 2 °C]"
-}
+ONLY_START = {"\n  run: [0 °C ± 2 °C, 45 °C ± 2 °C]\n  release: [2 °C ± 2 °C, 43 °C ± 2 °C]": ""}
 
 
 def written(folder: Path, name: str, step: str, judge: str) -> str:
