@@ -1,6 +1,7 @@
 """Defects: ways in which a virtual charger is wrong, on purpose, with a size. Data, and three operators on a charger.
 
-A change names a value in a charger file by its path ("id_bands.0.id.1") and says what becomes of it:
+A change names a value in a charger file by its path ("id_bands.0.id.1"; in a list also "last") and says what becomes
+of it:
 
     "+size", "-40 mV"     add: a quantity of the value's own kind, or a share of the value ("+6 %")
     "*size", "*150 %"     scale: by a share
@@ -37,6 +38,7 @@ from drivers.virtual.imperfection import generator
 DEFECTS = Path(__file__).parent / "defects"
 NEWEST = 1
 SIZE = "size"
+LAST = "last"
 _TERM = re.compile(r"\s*([+\-*])\s*([^+\-*]+?)\s*(?=[+\-*]|$)")
 
 
@@ -299,9 +301,16 @@ def _node_at(node: Node | None, path: str) -> Node | None:
 def _child(node: Node | None, part: str) -> Node | None:
     if isinstance(node, Mapped):
         return node.entries.get(part)
-    if isinstance(node, Listing) and part.isdecimal() and int(part) < len(node.items):
-        return node.items[int(part)]
+    if isinstance(node, Listing) and (number := _number_in(node, part)) is not None:
+        return node.items[number]
     return None
+
+
+def _number_in(node: Listing, part: str) -> int | None:
+    """Which item of a list a path means: its number, from 0, or its last one. None where there is no such item."""
+    if part == LAST:
+        return len(node.items) - 1 if node.items else None
+    return int(part) if part.isdecimal() and int(part) < len(node.items) else None
 
 
 def _changed(node: Node | None, path: tuple[str, ...], step: _Step) -> Node:
@@ -314,8 +323,9 @@ def _changed(node: Node | None, path: tuple[str, ...], step: _Step) -> Node:
         made = _changed(child, rest, step)
         return replace(node, entries=_with(node.entries, part, made), keys=_with(node.keys, part, step.place))
     if isinstance(node, Listing) and child is not None:
-        items = list(node.items)
-        items[int(part)] = _changed(child, rest, step)
+        items, number = list(node.items), _number_in(node, part)
+        assert number is not None
+        items[number] = _changed(child, rest, step)
         return replace(node, items=tuple(items))
     raise ValueError(f"there is no '{part}'")
 

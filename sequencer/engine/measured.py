@@ -187,23 +187,29 @@ class ChargeStep:
 
     def _zeros(self) -> str | None:
         """Why the shunt's zero is not one, with the mains off before or after the charge; None where it is."""
-        switched = self._evidence.events("mains")
-        first_on_s = next((event["t"] for event in switched if event["on"]), 0.0)
-        last_off_s = next((event["t"] for event in reversed(switched) if not event["on"]), math.inf)
         at_rest = self._accuracy.current(0.0)
         allowed_A = math.sqrt(3.0) * sum(line.contribution for line in at_rest)
-        for when, start_s, end_s in (
-            ("before", first_on_s - ZERO_s, first_on_s - LAST_SCAN_s),
-            ("after", last_off_s + ZERO_s, math.inf),
-        ):
+        for start_s, end_s in self._mains_off():
             rest = self._current.within(start_s, end_s)
             if rest.value.size < FEWEST:
                 continue
             zero_A = float(np.mean(rest.value))
             if not -allowed_A - IDLE_A <= zero_A <= allowed_A:
+                when = "before" if start_s < self._window.start_s else "after"
                 told = f"the current reads {si(zero_A, 'A')} with the charger's mains off {when} the charge"
                 return f"{told}; its uncertainty there is {si(allowed_A, 'A')}"
         return None
+
+    def _mains_off(self) -> list[tuple[float, float]]:
+        """Times in which nothing can come from the charger: the last moments before the mains first come on, and
+        from a while after each time they go off until they come on again (a latched charger is cycled)."""
+        switched = self._evidence.events("mains")
+        on_s = [event["t"] for event in switched if event["on"]]
+        first_on_s = on_s[0] if on_s else 0.0
+        off_s = [event["t"] for event in switched if not event["on"] and event["t"] >= first_on_s]
+        again_s = [min((one for one in on_s if one > off), default=math.inf) for off in off_s]
+        rests = [(off + ZERO_s, again - LAST_SCAN_s) for off, again in zip(off_s, again_s, strict=True)]
+        return [(first_on_s - ZERO_s, first_on_s - LAST_SCAN_s), *rests]
 
     @staticmethod
     def _readings(estimate: Estimate, sensitivity: float = 1.0) -> list[Contribution]:

@@ -8,6 +8,7 @@ from sequencer.engine import fixture, methods
 from sequencer.engine.inputs import Inputs
 from sequencer.engine.plan_sweeps import Sweeping, Times
 from sequencer.engine.standin import Events, Follow, StandIn
+from sequencer.engine.targets import passed_over
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import FullCharge, Step
 from sequencer.model.specification import Specification
@@ -54,6 +55,8 @@ def plan_of(inputs: Inputs) -> Plan:
 
 def _times(step: Step, stand_in: StandIn, sweeping: Sweeping, first: bool) -> Times:
     specification, pack = sweeping.specification, sweeping.pack
+    if passed_over(step, specification) is not None:
+        return Times()
     if step.insert is not None:
         taken_out = Times(0, -2 * specification.dwell.clear)  # that is the 'remove' step's
         return sweeping.charging + taken_out + (Times(0, FIRST_s) if first else Times())
@@ -131,6 +134,10 @@ def _notes(inputs: Inputs) -> list[str]:
     missing = inputs.bench.bench.hardware.missing()
     if missing:
         notes.append(f"no {', no '.join(missing)} declared: protection hangs on the program alone")
+    for step in inputs.procedure.model.steps:
+        why = passed_over(step, inputs.specification.model)
+        if why is not None:
+            notes.append(f"{step.kind} is passed over: {why}")
     compressed = [step.charge.compression for step in inputs.procedure.model.steps if step.charge is not None]
     if any(times > 1 for times in compressed):
         notes.append("compressed charge: times and time-based ends of the charger are not judged")

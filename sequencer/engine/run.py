@@ -24,6 +24,7 @@ from sequencer.engine.scan import Scan
 from sequencer.engine.site import Site
 from sequencer.engine.slow import SlowGroup, channels_of
 from sequencer.engine.standin import Events
+from sequencer.engine.targets import passed_over
 from sequencer.model.findings import findings_text
 from sequencer.model.procedure import Step
 
@@ -152,6 +153,10 @@ def _steps(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> 
     for number, step in enumerate(inputs.procedure.model.steps, 1):
         if number not in kept:
             loop.event("step-left-out", step=number, does=step.kind)
+            continue
+        why = passed_over(step, site.specification)
+        if why is not None:
+            loop.event("step-passed-over", step=number, does=step.kind, why=why)
             continue
         words = _words(step)
         watching.says(words)

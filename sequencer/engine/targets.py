@@ -9,9 +9,19 @@ from drivers.text.measures import Band
 from sequencer.analysis.classes import Seen
 from sequencer.model.signals import IdBand
 from sequencer.model.specification import Specification
-from sequencer.model.steps import SweepTemperature
+from sequencer.model.steps import Step, SweepTemperature
 
 SideName = Literal["lower", "upper"]
+
+
+def passed_over(step: Step, specification: Specification) -> str | None:
+    """Why a step shows nothing that this specification speaks of, and is not carried out; None where it is.
+
+    A charger for a pack without cell taps declares no trip: nothing would be judged by raising a cell.
+    """
+    if step.raise_cell is not None and specification.tap_trip is None:
+        return "the specification declares no tap_trip"
+    return None
 
 
 @dataclass(frozen=True)

@@ -16,8 +16,8 @@ from sequencer.model.limits import Declared
 
 
 def test_products_ship_as_specification_and_charger() -> None:
-    assert {"sprayer", "lantern"} <= set(shipped_products())
-    assert "bellows" not in shipped_products()  # a charger without a specification of its name
+    assert {"sprayer", "lantern", "barrow", "bellows"} <= set(shipped_products())
+    assert "sprayer-power" not in shipped_products()  # a charger without a specification of its name
 
 
 def test_every_shipped_defect_is_tried_and_can_be_found_by_acceptance() -> None:

@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 
 from drivers.text.binding import Bound, bind
 from drivers.text.document import compose
-from drivers.text.faults import Faults
+from drivers.text.faults import BadInput, Faults
 from drivers.text.quantity import UNIT_IN_CODE, UNITS
 from drivers.virtual.charger_file import CHARGERS, ChargerFile, load_charger
 from drivers.virtual.defects import (
@@ -95,6 +95,21 @@ def test_shipped_defects_make_chargers_at_both_ends_of_their_range(name: str) ->
 def test_at_least_twelve_ship() -> None:
     assert len(shipped_defects()) >= 12
     assert {path.stem for path in DEFECTS.glob("*.yaml")} == set(shipped_defects())
+
+
+# paths
+
+
+def test_the_last_of_a_list_is_another_stage_on_another_charger() -> None:
+    for name, count in (("bellows", 1), ("lantern", 2), ("barrow", 3)):
+        stages = changed("{stages.last.until: +40 mV}", name).stages
+        sound = charger(name).model.stages
+        assert len(stages) == count
+        assert stages[:-1] == sound[:-1]
+        assert stages[-1].until == pytest.approx((sound[-1].until or 0.0) + 0.040)
+    assert not charger("sprayer").model.stages[-1].until
+    with pytest.raises(BadInput, match=r"there is no 'last'"):
+        changed("{name.last: x}")
 
 
 # sizes

@@ -35,6 +35,35 @@ def test_a_charger_meter_that_reads_wrong_is_never_held_against_the_charger(
     assert done.verdicts["charge.stage1.current"] == "pass"  # which hangs on no voltage
 
 
+LATCHED = """packmime: procedure 1
+name: latched
+purpose: A sweep that latches the charger, then a charge.
+steps:
+  - insert: {cell_voltage: 3.7 V}
+    expect: charges
+  - remove: {}
+  - sweep_id: {cell_voltage: 3.7 V, resolution: 20 %, outside: 25 %}
+  - insert: {cell_voltage: 4.0 V}
+  - charge: {compression: 20, after: 20 s}
+    finding: charge
+  - remove: {}
+judge: [charge.stage.current, charge.current_after_end]
+"""
+
+
+def test_mains_cycled_before_the_charge_leave_its_zeros_alone(rehearse_full: Callable[..., Any], tmp_path: Any) -> None:
+    """A zero is read while the mains are off, not from then on to the end of the record."""
+    (tmp_path / "latched.yaml").write_text(LATCHED, "utf-8")
+    done = rehearse_full(str(tmp_path / "latched.yaml"), spec="bellows", charger={"fault_latch": "mains"})
+    evidence = open_evidence(done.record)
+    cycled = [event["t"] for event in evidence.events("mains") if not event["on"]]
+    window = evidence.window("charge")
+    assert window is not None
+    assert cycled
+    assert max(cycled) < window.start_s
+    assert set(done.verdicts.values()) == {"pass"}
+
+
 def test_each_value_is_what_the_record_shows(rehearse: Callable[..., Any]) -> None:
     """Plain means over the stretches that the verdicts name, worked out again here."""
     done = rehearse(changes=QUICK)
