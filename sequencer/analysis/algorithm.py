@@ -17,6 +17,7 @@ from sequencer.analysis.wording import quantity
 
 BEST = 0.98  # a passive log never makes one surer
 FULL_FALL = 0.5  # of the current: from here on a constant-voltage phase is beyond doubt
+CLEAR_FALL = 0.06  # of a slope: more than a limit in power makes of what the voltage rises by in a few samples
 FEW_SAMPLES = 10
 OSCILLATION = 0.02  # of the plateau
 
@@ -137,8 +138,11 @@ def _flag_course(doubt: _Doubt, trace: Trace, course: Course) -> None:
     kinds = {phase.kind for phase in course.phases}
     if course.interrupted:
         doubt.cast(0.97, "interruption")
-    if "taper" in kinds:
+    slopes = [phase for phase in course.phases if phase.kind == "taper"]
+    if any(phase.fall >= CLEAR_FALL or phase.stop - phase.start >= FEW_SAMPLES for phase in slopes):
         doubt.cast(0.95, "thermal-foldback")
+    elif slopes:  # too few samples of too small a fall: a power limit would look the same
+        doubt.cast(0.95, "undersampled")
     if "constant-power" in kinds and kinds & {"cc", "cv"}:
         doubt.cast(0.97, "power-limited")
     for kind in ("float", "top-up"):

@@ -8,7 +8,8 @@ from typing import Literal
 
 import numpy as np
 
-from sequencer.analysis.regulation import Held, held_voltage, holds_power, tolerance_V
+from sequencer.analysis.power import holds_power, onset_of_limit, power_of
+from sequencer.analysis.regulation import Held, held_voltage, tolerance_V
 from sequencer.analysis.segments import Segment, cut
 from sequencer.analysis.trace import Trace
 
@@ -47,6 +48,7 @@ def phases_of_run(trace: Trace, start: int, stop: int) -> list[Phase]:
     segments = cut(trace.time_s, trace.current_A, start, stop, scale_A=trace.scale_A, noise_A=trace.noise_A)
     segments = [segment for segment in segments if not _rises(trace, segment)]
     phases = _slopes_joined(trace, _regulated(trace, segments), FRAGMENT_TIME * trace.duration(start, stop))
+    phases = _power_joined(trace, phases)
     least_s = LEAST_TIME * trace.duration(start, stop)
     lasting = [p for p in phases if p.kind == "cv" or trace.duration(p.start, p.stop) >= least_s]
     lasting = [p for p in lasting if p.stop - p.start >= (LEAST_SLOPE if p.kind == "taper" else 2)]
@@ -147,6 +149,40 @@ def _slopes_joined(trace: Trace, phases: list[Phase], fragment_s: float) -> list
         else:
             joined.append(phase)
     return joined
+
+
+def _power_joined(trace: Trace, phases: list[Phase]) -> list[Phase]:
+    """One power is one phase, with the plateau before it: where the voltage hardly moves, it looks like a plateau too,
+    and a short plateau like a part of the slope."""
+    joined: list[Phase] = []
+    for limited, group in itertools.groupby(phases, lambda p: p.kind in ("cc", "taper", "constant-power")):
+        run = list(group)
+        joined += _power_limited(trace, run) if limited else run
+    return joined
+
+
+def _power_limited(trace: Trace, run: list[Phase]) -> list[Phase]:
+    """The last phase at constant power reaches as far to both sides as its power does."""
+    last = next((number for number in reversed(range(len(run))) if _ends_in_power(trace, run[number])), None)
+    if last is None:
+        return run
+    watts = power_of(trace, run[last].start, run[last].stop)
+    for first, end in itertools.product(range(last + 1), range(len(run), last, -1)):
+        start, stop = run[first].start, run[end - 1].stop
+        onset = onset_of_limit(trace, start, stop, watts)
+        if onset is not None:
+            level_A = float(np.median(trace.current_A[start : max(onset, start + 1)]))
+            plateau = [Phase("cc", start, onset, level_A)] if onset - start >= LEAST_SLOPE else []
+            fall = 1.0 - float(trace.current_A[stop - 1]) / float(trace.current_A[onset])
+            limited = Phase("constant-power", onset, stop, float(trace.current_A[onset]), fall)
+            return [*run[:first], *plateau, limited, *run[end:]]
+    return run
+
+
+def _ends_in_power(trace: Trace, phase: Phase) -> bool:
+    """A slope may begin with a plateau that is too short to stand for itself; its power is not held from the start."""
+    later = phase.start + (phase.stop - phase.start) // 2
+    return phase.kind == "constant-power" or (phase.kind == "taper" and holds_power(trace, later, phase.stop))
 
 
 def _small_steps_joined(phases: list[Phase]) -> list[Phase]:

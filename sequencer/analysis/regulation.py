@@ -1,7 +1,7 @@
-"""What the charger holds while its current falls: the voltage, the power, or neither. Voltage beside current decides.
+"""Whether the charger holds the voltage while its current falls. Voltage beside current decides.
 
-Field practice: constant voltage is a voltage within ±0.3 % (or 3 σ) while the current falls by half or more; constant
-power is V I within 1 to 2 %; in a thermal foldback the voltage falls with the current.
+Field practice: constant voltage is a voltage within ±0.3 % (or 3 σ) while the current falls by half or more; in a
+thermal foldback the voltage falls with the current.
 """
 
 from __future__ import annotations
@@ -16,7 +16,6 @@ from sequencer.analysis.smoothing import despiked, moving_mean, width_for
 from sequencer.analysis.trace import Trace
 
 VOLTAGE_SHARE = 0.003
-POWER_SHARE = 0.015
 LADDER_SHARE = 0.01
 LEAST_FALL = 0.05  # of the current before: less shows a knee, not what is held after it
 LADDER_LEVELS = 6  # so many levels in small steps at a held voltage are one regulation in digital steps
@@ -72,18 +71,6 @@ def _held_within(trace: Trace, segments: list[Segment], last: int, share: float)
     flats = sum(segment.kind == "flat" for segment in group)
     voltage = float(np.median(trace.voltage_V[start:stop]))
     return first, Held(start, stop, voltage, fall, flats if flats >= LADDER_LEVELS else 0)
-
-
-def holds_power(trace: Trace, start: int, stop: int) -> bool:
-    """Whether V I stays within ±1.5 % while the current falls by more than that allows by chance."""
-    current = trace.current_A[start:stop]
-    power = trace.voltage_V[start:stop] * current
-    width = width_for(trace.noise_A, 0.003 * trace.scale_A, max(1, (stop - start) // 10))
-    smooth = moving_mean(power, width)
-    middle = float(np.median(smooth))
-    fall = 1.0 - _smooth_end(trace, start, stop) / float(np.mean(current[:width]))
-    spread = float(np.quantile(np.abs(smooth - middle), 0.95))
-    return spread <= POWER_SHARE * middle and fall > 2.0 * POWER_SHARE
 
 
 def _reach_back(trace: Trace, segments: list[Segment], last: int, share: float) -> tuple[int, int]:
