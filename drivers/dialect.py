@@ -248,6 +248,9 @@ class Dialect(Written):
     least: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value)), _SETTABLE_SCHEMA]] = Field(
         default_factory=dict, description="load: voltage below which it no longer sinks its full current"
     )
+    sinks: PositiveAmperes | None = Field(
+        None, description="tap supply: current that one channel absorbs; nothing, unless said"
+    )
 
     @model_validator(mode="after")
     def _complete(self) -> Dialect:
@@ -262,6 +265,12 @@ class Dialect(Written):
             raise refuse(f"a dialect of role '{self.role}' also needs {', '.join(lacking)}")
         if "ohms" in self.readings and not self.accuracy.ohmmeter:
             raise refuse("readings.ohms: what it reads is uncertain by how much? 'accuracy.ohmmeter' is missing")
+        return self
+
+    @model_validator(mode="after")
+    def _absorbs(self) -> Dialect:
+        if self.sinks is not None and self.role != "tap supply":
+            raise refuse(f"'sinks' belongs to a tap supply; this is a dialect of role '{self.role}'")
         return self
 
     @model_validator(mode="after")

@@ -11,13 +11,16 @@ import math
 from collections.abc import Callable
 from typing import NamedTuple
 
+from drivers.virtual.balancing import LOOK_s, moved_A
 from drivers.virtual.charger_plan import ChargerPlan, FaultLatch, IdBand, TapMonitor, Temperature
+from drivers.virtual.history import Pulses
 from drivers.virtual.node import ApartLaw, Drive, NodeLaw
 from drivers.virtual.terminals import OPEN, Terminals
 
 PACK_PRESENT_V = 0.5  # per cell: below this a charger sees no pack; common practice, no source
 OPEN_RATIO = 20.0  # an ID above so many pull-ups, and above twice the highest band, is none; common practice, no source
 ALWAYS_V = -math.inf
+BALANCES = ("charging", "ended")
 
 
 class Watch(NamedTuple):
@@ -54,6 +57,8 @@ class Charger:
         self._dead = False  # latched for good
         self._over = False  # a cell stands too high, behind the filter
         self._band: IdBand | None = None  # as read at insertion
+        self._looks = 0  # at the cells, to balance them
+        self.contacts_V: Callable[[], float] = lambda: 0.0  # what stands at its contacts now
         self._connect_pins()
 
     @property
@@ -67,6 +72,8 @@ class Charger:
         if "thermistor" in signals:
             signals["thermistor"].pin = temperature.pin if temperature else None
         self.terminals.tap_drain_A = self.plan.tap_drain_A
+        if self.plan.balancer is not None:
+            self.terminals.moving = Pulses(self.plan.balancer.every_s, self.plan.balancer.on_s)
 
     def mains(self, on: bool) -> None:
         """Connect or disconnect the mains; on again after off starts anew."""
@@ -100,7 +107,7 @@ class Charger:
         """What the charger waits for in its state."""
         if self.state == "off":
             return []
-        found = [*self._pin_watches(), *self._cell_watches(law)]
+        found = [*self._pin_watches(), *self._cell_watches(law), *self._balance_watches()]
         present_V = law.node_at_contacts(PACK_PRESENT_V * self.plan.cells)
         if self.state == "waiting":
             return [*found, *self._at_insertion(present_V)]
@@ -149,6 +156,12 @@ class Charger:
 
     def _lower_cells(self, monitor: TapMonitor) -> list[int]:
         return [number for number in monitor.cells if number <= len(self.terminals.taps)]
+
+    def _balance_watches(self) -> list[Watch]:
+        """While it charges and after the end it compares the cells every so often."""
+        if self.plan.balancer is None or not self._has_all_taps or self.state not in BALANCES:
+            return []
+        return [Watch(("cells compared", self._looks), ALWAYS_V, True, LOOK_s, self._balance)]
 
     def _at_insertion(self, present_V: float) -> list[Watch]:
         delay_s = self.plan.start_delay_s
@@ -231,6 +244,13 @@ class Charger:
     def _enter(self, state: str) -> None:
         self.state = state
         self._entered += 1
+        if state not in BALANCES:
+            self.terminals.moved_A = ()
+
+    def _balance(self) -> None:
+        assert self.plan.balancer is not None
+        self._looks += 1
+        self.terminals.moved_A = moved_A(self.plan.balancer, self.terminals, self.contacts_V())
 
     def _start(self) -> None:
         self.stage = 0

@@ -23,7 +23,7 @@ from pydantic_core import CoreSchema, core_schema
 
 from drivers.text.measures import Flag, PositiveAmperes, PositiveOhms, PositiveSeconds, PositiveVolts, Seconds, refuse
 from drivers.text.quantity import QuantityFault, parse
-from drivers.virtual.charger_plan import IdBand, Pin, TapMonitor, Temperature, Window
+from drivers.virtual.charger_plan import Balancer, IdBand, Pin, TapMonitor, Temperature, Window
 
 
 class Part(BaseModel):
@@ -177,6 +177,64 @@ class TapMonitorText(Part):
     def monitor(self, count: int) -> TapMonitor:
         cells = self.cells or tuple(range(1, count + 1))
         return TapMonitor(self.threshold, self.filter, self.hysteresis, self.latch, cells)
+
+
+class _Moving(Part):
+    """How charge is moved through the taps: for how long, and of which cells. Without 'every' and 'for': always."""
+
+    difference: PositiveVolts | None = Field(None, description="from the mean of all cells")
+    every: PositiveSeconds | None = None
+    time: PositiveSeconds | None = Field(None, alias="for")
+    cells: Annotated[tuple[int, ...] | None, _Cells()] = None
+
+    @model_validator(mode="after")
+    def _duty_fits(self) -> _Moving:
+        if (self.every is None) is not (self.time is None):
+            raise refuse("'every' and 'for' belong together: {every: 4 s, for: 1 s}")
+        if self.every is not None and self.time is not None and self.time >= self.every:
+            raise refuse(f"on for {self.time:g} s every {self.every:g} s: 'for' must be shorter than 'every'")
+        return self
+
+    def _balancer(self, count: int, ohm: float | None, current_A: float | None, level_V: float | None) -> Balancer:
+        cells = self.cells or tuple(range(1, count + 1))
+        charges = isinstance(self, TapChargeText)
+        duty = (self.every or 0.0, self.time or 0.0)
+        return Balancer(charges, ohm, current_A, level_V, self.difference, cells, *duty)
+
+
+class BleedText(_Moving):
+    """Out of each cell above a voltage, or above the mean of all cells: through a resistance, or with a current."""
+
+    resistance: PositiveOhms | None = None
+    current: PositiveAmperes | None = None
+    above: PositiveVolts | None = None
+
+    @model_validator(mode="after")
+    def _fits(self) -> BleedText:
+        if (self.resistance is None) is (self.current is None):
+            raise refuse("a bleed has a 'resistance' or a 'current'; one of them")
+        if (self.above is None) is (self.difference is None):
+            raise refuse("a bleed begins 'above' a cell voltage, or at a 'difference' from the mean; one of them")
+        return self
+
+    def balancer(self, count: int) -> Balancer:
+        return self._balancer(count, self.resistance, self.current, self.above)
+
+
+class TapChargeText(_Moving):
+    """Into each cell below a voltage, or below the mean of all cells, with a current."""
+
+    current: PositiveAmperes
+    below: PositiveVolts | None = None
+
+    @model_validator(mode="after")
+    def _fits(self) -> TapChargeText:
+        if (self.below is None) is (self.difference is None):
+            raise refuse("a charge through taps begins 'below' a cell voltage, or at a 'difference'; one of them")
+        return self
+
+    def balancer(self, count: int) -> Balancer:
+        return self._balancer(count, None, self.current, self.below)
 
 
 def bands_fit(bands: tuple[IdBandText, ...]) -> None:

@@ -22,7 +22,15 @@ from drivers.text.measures import (
     Seconds,
     refuse,
 )
-from drivers.virtual.charger_features import IdBandText, PinText, TapMonitorText, TemperatureText, bands_fit
+from drivers.virtual.charger_features import (
+    BleedText,
+    IdBandText,
+    PinText,
+    TapChargeText,
+    TapMonitorText,
+    TemperatureText,
+    bands_fit,
+)
 from drivers.virtual.charger_plan import TAP_DRAIN_A, ChargerPlan, FaultLatch, Stage
 
 CHARGERS = Path(__file__).parent / "chargers"
@@ -85,6 +93,8 @@ class ChargerFile(Written):
     temperature: TemperatureText | None = None
     tap_monitor: TapMonitorText | None = None
     tap_current: Amperes = Field(TAP_DRAIN_A, description="into each cell tap; negative: out of it")
+    bleed: BleedText | None = Field(None, description="while charging and after the end, out of high cells")
+    tap_charge: TapChargeText | None = Field(None, description="while charging and after the end, into low cells")
     fault_latch: FaultLatch = Field(
         "none", description="what clears a fault: nothing has to, removal, the mains; for good: nothing"
     )
@@ -113,6 +123,15 @@ class ChargerFile(Written):
         highest = max((self.tap_monitor.cells or (0,)) if self.tap_monitor else (0,))
         if highest > self.cells:
             raise refuse(f"the tap monitor looks at cell {highest}; the pack has {self.cells}")
+        if self.bleed is not None and self.tap_charge is not None:
+            raise refuse("'bleed' and 'tap_charge' stand side by side; a charger balances in one way")
+        moved = max((self._moving.cells or (0,)) if self._moving else (0,))
+        if moved > self.cells:
+            raise refuse(f"cell {moved} is balanced; the pack has {self.cells}")
+
+    @property
+    def _moving(self) -> BleedText | TapChargeText | None:
+        return self.bleed or self.tap_charge
 
     def _stages_fit(self, regulated: bool) -> None:
         count = len(self.stages)
@@ -156,6 +175,7 @@ class ChargerFile(Written):
             tap_drain_A=self.tap_current,
             fault_latch=self.fault_latch,
             clear_s=self.clear,
+            balancer=self._moving.balancer(self.cells) if self._moving else None,
         )
 
 

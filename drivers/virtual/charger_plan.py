@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any, Literal, TypeAlias
 
@@ -71,6 +72,24 @@ class TapMonitor:
 
 
 @dataclass(frozen=True)
+class Balancer:
+    """Moves charge through the taps: out of each of `cells` that stands high, or (`charges`) into each that stands low.
+
+    High and low are told at `level_V`, or by `difference_V` from the mean of all cells; through a resistance across the
+    cell, or with a current. On for `on_s` every `every_s` (0: always).
+    """
+
+    charges: bool
+    ohm: float | None
+    current_A: float | None
+    level_V: float | None
+    difference_V: float | None
+    cells: tuple[int, ...]
+    every_s: float = 0.0
+    on_s: float = 0.0
+
+
+@dataclass(frozen=True)
 class ChargerPlan:
     """What a charger does, in numbers; voltages are of the whole pack. What has no default, the file model gives."""
 
@@ -93,6 +112,7 @@ class ChargerPlan:
     tap_drain_A: float = TAP_DRAIN_A  # into each tap; negative: out of it
     fault_latch: FaultLatch = "none"
     clear_s: float | None = None  # how long the pack must be gone for the charger to start anew; None: response_s
+    balancer: Balancer | None = None
 
     @property
     def drain_S(self) -> float:
@@ -104,7 +124,7 @@ class ChargerPlan:
         charger = dict(content)
         charger["stages"] = tuple(Stage(**stage) for stage in charger["stages"])
         charger["id_bands"] = tuple(IdBand(**band) for band in charger["id_bands"])
-        for key, made in (("id_pin", _pin), ("temperature", _temperature), ("tap_monitor", _monitor)):
+        for key, made in _MADE.items():
             charger[key] = None if charger[key] is None else made(charger[key])
         return cls(**charger)
 
@@ -120,3 +140,15 @@ def _temperature(content: dict[str, Any]) -> Temperature:
 
 def _monitor(content: dict[str, Any]) -> TapMonitor:
     return TapMonitor(**{**content, "cells": tuple(content["cells"])})
+
+
+def _balancer(content: dict[str, Any]) -> Balancer:
+    return Balancer(**{**content, "cells": tuple(content["cells"])})
+
+
+_MADE: dict[str, Callable[[dict[str, Any]], Any]] = {
+    "id_pin": _pin,
+    "temperature": _temperature,
+    "tap_monitor": _monitor,
+    "balancer": _balancer,
+}

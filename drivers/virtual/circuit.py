@@ -78,6 +78,7 @@ class Circuit:
         self.constants = constants
         self.charger = charger
         self.terminals = charger.terminals
+        charger.contacts_V = lambda: self._trace.value(CHARGER, self._moment_s)
         self.supply = SupplyStage()
         self.load = LoadStage()
         self.mains_on = False

@@ -72,7 +72,8 @@ class Tap:
     cell: Cell
     shunt_ohm: float
     source_ohm: float
-    shunt: Steps = field(default_factory=Steps)
+    shunt: Steps = field(default_factory=Steps)  # of what always flows
+    moved: Steps = field(default_factory=Steps)  # of what is moved between cells, while it is
 
 
 class Terminals:
@@ -92,6 +93,8 @@ class Terminals:
         self.tap_drain_A = tap_drain_A
         self.contacts: dict[str, float] = {}  # by name, Ω
         self.powered = False  # whether the charger has its mains
+        self.moved_A: tuple[float, ...] = ()  # out of each cell while the charger moves charge, lowest first
+        self.moving = ALWAYS  # when it does
         if precharge_ohm is not None:
             self.contacts |= {"b_plus": OPEN, "b_minus": OPEN, "precharge": OPEN}
         self.contacts |= dict.fromkeys(self.signals, OPEN)
@@ -123,9 +126,32 @@ class Terminals:
         return self.signals[name].met_ohm(contact_ohm, test_A, excited=self.powered)
 
     def tap_A(self, number: int) -> float:
-        """The current that the charger takes out of a tap."""
-        closed = self.contacts[f"tap{number}"] != OPEN and self._grounded
-        return self.tap_drain_A if closed and self.taps[number - 1].cell.on else 0.0
+        """The current that the charger takes out of a tap, with what it moves between cells while it does."""
+        return self._drain_A(number) + self._moving_A(number)
+
+    def _drain_A(self, number: int) -> float:
+        return self.tap_drain_A if self.reaches(number) and self.taps[number - 1].cell.on else 0.0
+
+    def _moving_A(self, number: int) -> float:
+        """What leaves at the top of the cell below less what comes back at the bottom of the cell above."""
+        return self._out_of_A(number) - self._out_of_A(number + 1)
+
+    def _out_of_A(self, cell: int) -> float:
+        """The current out of a cell; none where one of its ends does not reach the charger."""
+        if cell > len(self.moved_A) or not (self.reaches(cell - 1) and self.reaches(cell)):
+            return 0.0
+        return self.moved_A[cell - 1]
+
+    def reaches(self, junction: int) -> bool:
+        """Whether a junction is connected to the charger; 0 is B-, the one above all taps is B+."""
+        if 0 < junction <= len(self.taps):
+            return self.contacts[f"tap{junction}"] != OPEN and self._grounded
+        return self._grounded if junction == 0 else self.path_ohm != OPEN
+
+    def tap_ohm(self, number: int) -> float:
+        """What lies between a junction and the charger's pin."""
+        tap = self.taps[number - 1]
+        return tap.source_ohm + tap.shunt_ohm + self.contacts[f"tap{number}"]
 
     def junctions_V(self) -> list[float]:
         """The junctions on the bench's side, from the lowest up, against B-."""
@@ -147,12 +173,11 @@ class Terminals:
         return sum(self.tap_A(above) for above in range(number, len(self.taps) + 1))
 
     def pins_V(self) -> list[float]:
-        """The taps at the charger's pins; one that is open sinks to the pin below it."""
+        """The taps at the charger's pins while it moves nothing; one that is open sinks to the pin below it."""
         pins, below_V = [], 0.0
-        for number, (tap, junction_V) in enumerate(zip(self.taps, self.junctions_V(), strict=True), 1):
-            contact_ohm = self.contacts[f"tap{number}"]
-            if contact_ohm != OPEN and self._grounded:
-                below_V = junction_V - self.tap_A(number) * (tap.source_ohm + tap.shunt_ohm + contact_ohm)
+        for number, junction_V in enumerate(self.junctions_V(), 1):
+            if self.reaches(number):
+                below_V = junction_V - self._drain_A(number) * self.tap_ohm(number)
             pins.append(below_V)
         return pins
 
@@ -162,7 +187,12 @@ class Terminals:
         for name, signal in self.signals.items():
             signal.sense.set(t_s, signal.sense_V(self.contacts[name]) if excited else 0.0)
         for number, tap in enumerate(self.taps, 1):
-            tap.shunt.set(t_s, self.tap_A(number) * tap.shunt_ohm)
+            tap.shunt.set(t_s, self._drain_A(number) * tap.shunt_ohm)
+            tap.moved.set(t_s, self._moving_A(number) * tap.shunt_ohm)
+
+    def shunt_V(self, tap: Tap, from_s: float, to_s: float) -> float:
+        """Mean voltage over a tap's shunt, exact over any aperture."""
+        return tap.shunt.mean(from_s, to_s) + tap.moved.mean(from_s, to_s, self.moving)
 
 
 def _parallel(one_ohm: float, other_ohm: float) -> float:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from functools import partial
 from typing import TypeVar
 
 from drivers.virtual.circuit import Circuit
@@ -118,7 +119,7 @@ class Wirer:
         parts = where.split(".")
         if parts[0] == "taps":
             tap = self.taps[int(parts[1])]
-            return tap.shunt.mean, lambda test_A: tap.shunt_ohm
+            return partial(self.circuit.terminals.shunt_V, tap), lambda test_A: tap.shunt_ohm
         terminals = self.circuit.terminals
         return self._sense(terminals.signals[parts[0]]), lambda test_A: terminals.met_ohm(parts[0], test_A)
 

@@ -189,3 +189,9 @@ def test_what_can_be_set_most_is_a_voltage_or_a_current() -> None:
     assert dialect.settable == {"voltage": 60.0, "current": 0.5}
     refused(raw(settable={"voltage": "0 V"}))
     refused(raw(settable={"voltage": "60 W"}))
+
+
+def test_only_a_tap_supply_says_what_it_absorbs() -> None:
+    assert shipped("scpi-tap-supply").sinks == shipped("plain-tap-supply").sinks == 0.05
+    assert shipped("scpi-supply").sinks is None
+    assert "'sinks' belongs to a tap supply" in refused(raw(sinks="50 mA"))
