@@ -16,6 +16,7 @@ _TITLES: Mapping[str, str] = {
     "id": "ID resistor",
     "temperature": "Temperature window",
     "tap_trip": "Cell taps",
+    "balancing": "Balancing, screened",
 }
 _URGENT = ("fail", "conditional fail", "inconclusive")
 MOST = 15  # rows named at the top; more than these are no summary

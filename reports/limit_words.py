@@ -34,6 +34,9 @@ _WORDS: Mapping[str, str] = {
     "tap_trip.voltage": "cell {n}: stops the charge at",
     "tap_trip.stop_time": "cell {n}: stops within",
     "tap_trip.release": "cell {n}: once it is low again",
+    "balancing.screening": "largest balancing current, by screening",
+    "balancing.current": "cell {n}: balancing current, by screening",
+    "balancing.none_above": "absence of a balancing current",
 }
 
 

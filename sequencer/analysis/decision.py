@@ -111,6 +111,29 @@ def decide_class(seen: str, probability: float, expected: str, *, needed: float 
     return Decision("fail", None, p_conform, f"{seen} (confidence {probability:.2f}); declared is {expected}")
 
 
+def decide_screening(
+    found: tuple[float, float, float] | None, detectable: float, most: float | None, least: float, rule: Rule, unit: str
+) -> Decision:
+    """A screening for something that shall not be, or (most None) shall be there.
+
+    found : (value, u, k) of the largest amount, None where nothing was found.    detectable : Currie's detection limit.
+    most : the largest amount declared.    least : with `most` None, the smallest that must be found.
+    A screening that could not have seen what is declared is inconclusive, whatever it saw not.
+    """
+    needed = least if most is None else most
+    none = f"none found above {quantity(detectable, unit, step=resolution_of(detectable))}"
+    if found is None:
+        if detectable > needed:
+            return Decision("inconclusive", None, None, f"{none}; {quantity(needed, unit)} would not have been seen")
+        if most is None:
+            return Decision("fail", None, None, f"{none}; declared is that it is there")
+        return Decision("pass", None, None, f"{none}; declared is none above {quantity(most, unit)}")
+    value, u, k = found
+    if most is None:
+        return Decision("pass", None, None, f"found, {quantity(value, unit, step=resolution_of(k * u))}, as declared")
+    return decide(value, u, k, None, most, rule, unit=unit)
+
+
 def overall(verdicts: Iterable[str]) -> Verdict:
     """The worst of the verdicts; "not run" where nothing was judged. Raises ValueError for an unknown word."""
     return min(_known(verdicts), key=WORST_FIRST.index, default="not run")

@@ -107,3 +107,22 @@ class Accuracy:
             (span for span in dialect.accuracy.voltage if span.range >= value_V), key=lambda span: span.range
         )
         return self._stated(name, spans[0] if spans else None, value_V, 1.0, f"accuracy, dialect {dialect.name}")
+
+    def tap_scale(self, number: int, difference_A: float = 1.0) -> list[Contribution]:
+        """Of a difference between two currents of a tap, by scanner and shunt: what is of a range cancels in it."""
+        shunt = self.file.bench.wiring.taps[number - 1].shunt
+        assert shunt.nominal is not None
+        assert shunt.high is not None
+        _, _, dialect = self.file.at(f"taps.{number - 1}.meter")
+        gain = max((span.reading for span in dialect.accuracy.voltage), default=0.0)
+        tolerance, amount_A = shunt.high / shunt.nominal - 1.0, abs(difference_A)
+        return [
+            Contribution.from_half_width(
+                f"tap {number}, scanner's gain", amount_A * gain, source=f"accuracy, dialect {dialect.name}"
+            ),
+            Contribution.from_half_width(
+                f"tap {number}, shunt",
+                amount_A * tolerance,
+                source=f"bench file: {shunt.text}",
+            ),
+        ]

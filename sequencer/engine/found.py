@@ -12,7 +12,7 @@ class Found:
     """One finding: a quantity with its budget, an interval with that of its ends, a state or a class.
 
     `trouble`: it was looked for and cannot be told (inconclusive). `absent`: it was not made (not run).
-    `none`: the charger shows no such thing.
+    `none`: the charger shows no such thing. `detectable`: of a screening, what would have been found.
     """
 
     budget: Budget | None = None
@@ -26,3 +26,4 @@ class Found:
     none: str | None = None
     words: str = ""
     interval: tuple[float, float] | None = None
+    detectable: float | None = None

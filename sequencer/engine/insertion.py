@@ -48,10 +48,7 @@ class Watched:
 def place(site: Site, situation: Situation) -> None:
     """Make the instruments show `situation`, prove the node, and close the contacts."""
     loop, bench = site.loop, site.bench
-    stand_in = StandIn.inserted(site.pack, situation.cell_V)
-    loop.stand_in = None
-    _prepare_node(site, stand_in.node_V)
-    _prepare_signals(site, situation, stand_in.node_V)
+    stand_in = prepare(site, situation)
     first = site.settling_s is None
     if first:
         site.settling_s = fixture.measure_settling(loop, stand_in.node_V, fixture.NUDGE_V * site.pack.cells)
@@ -69,6 +66,15 @@ def place(site: Site, situation: Situation) -> None:
         loop.set(Deed(bench.mains, "on"))
     else:
         _close(site)
+
+
+def prepare(site: Site, situation: Situation) -> StandIn:
+    """Make the instruments show `situation`, every contact as it is."""
+    stand_in = StandIn.inserted(site.pack, situation.cell_V)
+    site.loop.stand_in = None
+    _prepare_node(site, stand_in.node_V)
+    _prepare_signals(site, situation, stand_in.node_V)
+    return stand_in
 
 
 def _mains_are_contact(site: Site) -> bool:

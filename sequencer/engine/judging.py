@@ -12,10 +12,19 @@ import numpy as np
 
 from drivers.text.measures import Rule
 from drivers.text.si import si
-from sequencer.analysis.decision import Decision, decide, decide_class, decide_state, exit_status, overall
+from sequencer.analysis.decision import (
+    Decision,
+    decide,
+    decide_class,
+    decide_screening,
+    decide_state,
+    exit_status,
+    overall,
+)
 from sequencer.analysis.intervals import decide_interval
 from sequencer.analysis.uncertainty import Budget
 from sequencer.engine.accuracy import Accuracy
+from sequencer.engine.balanced import as_data, balance_findings, beyond_screening
 from sequencer.engine.evidence import Evidence, Window, open_evidence
 from sequencer.engine.found import Found
 from sequencer.engine.judgements import changes, latest, new_judgement, write_json
@@ -35,7 +44,13 @@ TRIP_LIMITS = {
 }
 
 #: How the limits begin that a kind of step gives findings for.
-GIVES = {"charge": "charge.", "sweep_id": "id.", "sweep_temperature": "temperature.", "raise_cell": "tap_trip."}
+GIVES = {
+    "charge": "charge.",
+    "sweep_id": "id.",
+    "sweep_temperature": "temperature.",
+    "raise_cell": "tap_trip.",
+    "watch_taps": "balancing.",
+}
 
 
 @dataclass(frozen=True)
@@ -66,14 +81,18 @@ def judge(record: Path, asked: Rejudging, utc: str) -> Judgement:
     found, classification = _findings(evidence, rows)
     verdicts = [_verdict(row, found.get(row.name) or _not_made(row, evidence)) for row in rows]
     words = [verdict["verdict"] for verdict in verdicts]
-    document = {"overall": overall(words), "rehearsal": bool(evidence.manifest["rehearsal"]), "verdicts": verdicts}
+    counted = [one["verdict"] for one in verdicts if not beyond_screening(one, evidence)]
+    document = {"overall": overall(counted), "rehearsal": bool(evidence.manifest["rehearsal"]), "verdicts": verdicts}
     folder = new_judgement(record)
     (folder / "specification.yaml").write_bytes(evidence.specification_bytes)
     write_json(folder / "verdicts.json", document)
     write_json(folder / "findings.json", {**_findings_document(found, classification), **_maps(evidence)})
     write_json(folder / "budgets.json", {name: one.budget.as_dict() for name, one in found.items() if one.budget})
     write_json(folder / "judgement.json", _judgement_document(evidence, asked, folder, document, previous, utc))
-    left_out = sum(one["verdict"] == "not run" and _given_up(one["limit"], evidence) for one in verdicts)
+    left_out = sum(
+        beyond_screening(one, evidence) or (one["verdict"] == "not run" and _given_up(one["limit"], evidence))
+        for one in verdicts
+    )
     trip = evidence.trip
     return Judgement(folder, document, exit_status(words, left_out=left_out), bool(trip and trip["cause"] == "bench"))
 
@@ -95,7 +114,8 @@ def _signal_findings(evidence: Evidence) -> dict[str, Found]:
     """What sweeps and walks found; nothing where there were none."""
     accuracy = _accuracy(evidence)
     starts = start_findings(evidence, accuracy)
-    return {**id_findings(evidence, accuracy), **starts, **walk_findings(evidence, accuracy)}
+    swept = {**id_findings(evidence, accuracy), **starts, **walk_findings(evidence, accuracy)}
+    return {**swept, **balance_findings(evidence, accuracy)}
 
 
 def _maps(evidence: Evidence) -> dict[str, Any]:
@@ -103,7 +123,8 @@ def _maps(evidence: Evidence) -> dict[str, Any]:
     accuracy = _accuracy(evidence)
     points = [one for name in ("id", "temperature") for one in Points.of(evidence, accuracy, name).as_list(name)]
     walks = Walks(evidence, accuracy).as_list() if evidence.events("walk") else []
-    return {"points": points, "walks": walks}
+    balancing = as_data(evidence, accuracy)
+    return {"points": points, "walks": walks, **({} if balancing is None else {"balancing": balancing})}
 
 
 def _accuracy(evidence: Evidence) -> Accuracy:
@@ -215,7 +236,7 @@ def _verdict(row: LimitRow, found: Found) -> dict[str, Any]:
         "low": band.low if band else None,
         "high": band.high if band else None,
         "expected": row.expected,
-        "rule": row.rule if row.kind in ("quantity", "interval") else None,
+        "rule": row.rule if row.kind in ("quantity", "interval") or decision.guard_band is not None else None,
         "interval": None if found.interval is None or shown is None else list(found.interval),
         "declared": row.words,
         "guard_band": decision.guard_band,
@@ -256,6 +277,8 @@ def _judged(row: LimitRow, found: Found) -> Decision:
         assert row.expected is not None
         assert found.seen is not None
         return decide_class(found.seen, found.probability or 0.0, row.expected)
+    if row.kind == "absence":
+        return _screened(row, found)
     assert found.budget is not None
     assert row.band is not None
     budget = found.budget
@@ -263,6 +286,14 @@ def _judged(row: LimitRow, found: Found) -> Decision:
         low, high = found.interval
         return decide_interval(low, high, budget.u, budget.k, row.band.low, row.band.high, row.rule, unit=row.unit)
     return decide(budget.value, budget.u, budget.k, row.band.low, row.band.high, row.rule, unit=row.unit)
+
+
+def _screened(row: LimitRow, found: Found) -> Decision:
+    assert found.detectable is not None
+    budget = found.budget
+    amount = None if budget is None else (budget.value, budget.u, budget.k)
+    most = None if row.band is None else row.band.high
+    return decide_screening(amount, found.detectable, most, row.least or 0.0, row.rule, row.unit)
 
 
 def _with_words(decision: Decision, words: str) -> Decision:

@@ -26,6 +26,8 @@ if TYPE_CHECKING:
     from sequencer.engine.record import RecordFolder
 
 SLOW_PATIENCE_s = 1.0
+CLOSE_s = 0.2  # how often the slow group is asked while the taps are watched
+GOLDEN = 0.6180339887498949  # its multiples fill any period evenly
 SMALLEST_TAP_MOVE_V = 0.001
 SMALLEST_MOVE_V = 0.0005  # half of the resolution of common supplies: smaller moves would not be made
 
@@ -74,6 +76,7 @@ class Loop:
     stand_in_words: dict[str, object] | None = None
     slow: SlowGroup | None = None
     tap_offsets_V: tuple[float, ...] = ()  # of each cell against the mean; empty: no taps are played
+    closely: bool = False  # the taps are watched: fast, and never in step with what the charger does
     _set_V: float | None = None
     _load_A: float = 0.0
     _mains: int = 0
@@ -148,7 +151,7 @@ class Loop:
         waited = wall_seconds()
         if self.stop.why is not None:
             raise Interrupted(self.stop.why)
-        period_s = self.pace.period_s(self.now_s)
+        period_s = self._period_s(self.now_s)
         scan = self._scanner.scan(wait_s=period_s)
         asked = wall_seconds()
         self._write(scan, period_s)
@@ -161,9 +164,16 @@ class Loop:
         self._look_around(scan)
         self._follow(scan)
         self.last = scan
-        self._next_s = scan.time_s + self.pace.period_s(scan.time_s)
+        self._next_s = scan.time_s + self._period_s(scan.time_s) + self._out_of_step_s()
         self.on_scan(scan)
         return scan
+
+    def _period_s(self, time_s: float) -> float:
+        return FAST_s if self.closely else self.pace.period_s(time_s)
+
+    def _out_of_step_s(self) -> float:
+        """Readings at a fixed pace would show one moment of a balancing that goes on and off at that pace."""
+        return FAST_s * (self.shares.scans * GOLDEN % 1.0) if self.closely else 0.0
 
     def _write(self, scan: Scan, period_s: float) -> None:
         failure = self.record.failure
@@ -205,7 +215,7 @@ class Loop:
         begun = wall_seconds()
         for channel, time_s, value in self.slow.ask(wait_s=SLOW_PATIENCE_s):
             self.journal.append(channel, time_s, value, SampleFlag.GOOD if value == value else SampleFlag.OVERLOAD)
-        self._slow_s = scan.time_s + SLOW_PERIOD_s
+        self._slow_s = scan.time_s + (CLOSE_s if self.closely else SLOW_PERIOD_s)
         self.shares.exchange_s += wall_seconds() - begun
 
     def _follow(self, scan: Scan) -> None:
@@ -217,7 +227,7 @@ class Loop:
         if self.stand_in is None or not self.follow:
             return
         dt_s = 0.0 if self.last is None else scan.time_s - self.last.time_s
-        follow = self.follow[self.pace.period_s(scan.time_s)]
+        follow = self.follow[self._period_s(scan.time_s)]
         node_V = self.stand_in.move(dt_s, max(current_A, 0.0), follow)
         if scan.charger_V.good:
             self.stand_in.choose_compression(scan.time_s, scan.charger_V.value, current_A, self.events)

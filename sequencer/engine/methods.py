@@ -75,7 +75,7 @@ def charge(site: Site, step: FullCharge) -> str:
     cutoff = specification.charge.cutoff
     if cutoff is not None and cutoff.low is not None:
         floor_A = min(floor_A, 0.5 * cutoff.low)
-    faded = _Faded(floor_A, max(3.0, 3.0 * specification.dwell.response))
+    faded = Faded(floor_A, max(3.0, 3.0 * specification.dwell.response))
     begun_s = loop.now_s
     came = loop.observe(step.longest, faded)
     loop.observe(step.after)
@@ -92,7 +92,7 @@ def charge(site: Site, step: FullCharge) -> str:
 
 
 @dataclass
-class _Faded:
+class Faded:
     """True once the current has stayed below the floor for `hold_s`."""
 
     floor_A: float

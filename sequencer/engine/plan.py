@@ -68,6 +68,8 @@ def _times(step: Step, stand_in: StandIn, sweeping: Sweeping, first: bool) -> Ti
         return sweeping.sweep_temperature(step.sweep_temperature)
     if step.raise_cell is not None:
         return sweeping.raise_cells(step.raise_cell)
+    if step.watch_taps is not None:
+        return sweeping.watch_taps(step.watch_taps)
     return Times(0, 2 * specification.dwell.clear)
 
 

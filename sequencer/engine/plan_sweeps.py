@@ -9,12 +9,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from drivers.text.measures import Band
+from sequencer.analysis.balance import sequence
 from sequencer.analysis.edges import expected_steps
-from sequencer.engine import insertion, resistors, walks
+from sequencer.engine import insertion, resistors, tap_watch, walks
 from sequencer.engine.targets import ends, sides
 from sequencer.model.pack import Pack
 from sequencer.model.specification import Specification
-from sequencer.model.steps import RaiseCell, SweepId, SweepTemperature
+from sequencer.model.steps import RaiseCell, SweepId, SweepTemperature, WatchTaps
 
 PLACE_s = (
     0.3 + insertion.TAP_SETTLE_s + insertion.SIGNALS_s + insertion.PRECHARGE_s
@@ -110,3 +111,8 @@ class Sweeping:
         timed = Times(0, approach_s + dwell.response)  # the stop once more, by a clear step; inserted anew if latched
         again = timed if self._goes_on else timed + self.charging
         return (self.charging + walk + again) * self.pack.cells + self.charging
+
+    def watch_taps(self, step: WatchTaps) -> Times:
+        """Prepared, zeros, put in; every phase; taken out, zeros."""
+        phases_s = len(sequence(self.pack.cells)) * tap_watch.phase_s(step)
+        return self.charging + Times(0, PLACE_s + 2 * tap_watch.zero_s(step) + phases_s)

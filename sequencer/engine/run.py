@@ -12,7 +12,7 @@ from drivers.clock import wall_seconds
 from drivers.open_bench import OpenBench
 from drivers.safe import SafeState, to_safe_state
 from drivers.trouble import BenchFault
-from sequencer.engine import fixture, methods, startup, sweeps, walks
+from sequencer.engine import fixture, methods, startup, sweeps, tap_watch, walks
 from sequencer.engine.channels import CHANNELS
 from sequencer.engine.guard import Bounds, Guard, Trip
 from sequencer.engine.inputs import Inputs
@@ -193,6 +193,8 @@ def _words(step: Step) -> str:
         return "sweeping the thermistor: where a charge starts, where it goes on, open, short"
     if step.raise_cell is not None:
         return "raising one cell after the other until the charge stops"
+    if step.watch_taps is not None:
+        return "watching the tap currents while the cells stand apart"
     return "taking the pack out"
 
 
@@ -208,6 +210,8 @@ def _do(step: Step, site: Site) -> str:
         return f"{started}; {walks.walk_temperatures(site, step.sweep_temperature)}"
     if step.raise_cell is not None:
         return walks.raise_cells(site, step.raise_cell)
+    if step.watch_taps is not None:
+        return tap_watch.watch_taps(site, step.watch_taps)
     methods.remove(site)
     return "removed"
 

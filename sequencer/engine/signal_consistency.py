@@ -6,13 +6,15 @@ from drivers.bench_file import BenchFile
 from drivers.text.binding import Bound
 from drivers.text.faults import Faults
 from drivers.text.si import si
+from sequencer.analysis.balance import sequence
 from sequencer.engine.site import NOMINAL_C
-from sequencer.engine.targets import ends, sides
+from sequencer.engine.tap_watch import phase_s
+from sequencer.engine.targets import ends, passed_over, sides
 from sequencer.model.curves import Curve
 from sequencer.model.pack import Pack
 from sequencer.model.procedure import Procedure
 from sequencer.model.specification import Specification
-from sequencer.model.steps import RaiseCell, Step, SweepId, SweepTemperature
+from sequencer.model.steps import RaiseCell, Step, SweepId, SweepTemperature, WatchTaps
 
 
 def check(
@@ -41,6 +43,8 @@ def check(
             _check_temperature(procedure, place, step.sweep_temperature, specification, curve, bench, faults)
         if step.raise_cell is not None:
             _check_raise(procedure, place, step.raise_cell, pack, bench, faults)
+        if step.watch_taps is not None and passed_over(step, specification.model) is None:
+            _check_watch(procedure, place, step.watch_taps, specification, pack, bench, faults)
 
 
 Where = tuple[str | int, ...]
@@ -79,7 +83,7 @@ def _check_start(
     procedure: Bound[Procedure], place: Where, step: Step, pack: Bound[Pack], bench: BenchFile, faults: Faults
 ) -> None:
     """Every voltage at which a pack is put in: within the pack's table, and one that the load can sink."""
-    start = step.insert or step.sweep_id or step.sweep_temperature or step.raise_cell
+    start = step.insert or step.sweep_id or step.sweep_temperature or step.raise_cell or step.watch_taps
     if start is None:
         return
     name, _, dialect = bench.at("node.load")
@@ -89,7 +93,7 @@ def _check_start(
             f"{si(node_V, 'V')} at the node is less than the load '{name}' can sink its current at, {si(least_V, 'V')}"
         )
         faults.add(procedure.place(*place, "cell_voltage"), f"{told}: a higher voltage, or another load")
-    sweep = step.sweep_id or step.sweep_temperature or step.raise_cell  # an insert's is checked elsewhere
+    sweep = start if step.insert is None else None  # an insert's is checked elsewhere
     low_V, high_V = pack.model.ocv[0][1], pack.model.ocv[-1][1]
     if sweep is not None and not low_V <= sweep.cell_voltage <= high_V:
         told = f"{si(sweep.cell_voltage, 'V')} lies outside the pack's table, {low_V:g} V to {high_V:g} V"
@@ -173,3 +177,49 @@ def _check_raise(
     if pack.model.cells > 1 and lowest_V < pack.model.ocv[0][1]:
         told = f"with one cell at {si(step.end, 'V')} the others fall to {si(lowest_V, 'V')}, below the pack's table"
         faults.add(procedure.place(*place, "to"), told)
+
+
+def _check_watch(
+    procedure: Bound[Procedure],
+    place: Where,
+    step: WatchTaps,
+    specification: Bound[Specification],
+    pack: Bound[Pack],
+    bench: BenchFile,
+    faults: Faults,
+) -> None:
+    """The charge must go on at its first current for all that time, with every cell below what stops it."""
+    wiring, cells = bench.bench.wiring, pack.model.cells
+    if not wiring.taps or wiring.node.contacts is None:
+        faults.add(procedure.place(*place), "the bench has no 'taps' or no 'node.contacts' in its wiring")
+        return
+    if cells < 2:
+        faults.add(procedure.place(*place), "a pack of one cell has no other cell to be balanced with")
+        return
+    for number in range(cells - 1):
+        dialect = bench.at(f"taps.{number}.meter")[2]
+        if not dialect.accuracy.voltage:
+            told = f"the dialect '{dialect.name}' states no accuracy of voltage; no tap current could be judged"
+            faults.add(bench.bound.place("wiring", "taps", number, "meter"), told)
+    stages = specification.model.charge.stages
+    current_A = stages[0].current.high or 0.0
+    relaxation = pack.model.relaxation
+    ohm = pack.model.resistance + (relaxation.resistance if relaxation is not None else 0.0)
+    mean_V = step.cell_voltage + current_A * ohm / cells
+    events_V, trip = specification.model.events_V, specification.model.tap_trip
+    if events_V and mean_V >= events_V[0][0]:
+        told = f"with the drop of {si(current_A, 'A')} the cells reach {si(mean_V, 'V')}; at {si(events_V[0][0], 'V')}"
+        faults.add(procedure.place(*place, "cell_voltage"), f"{told} the first stage is declared to end")
+    highest_V = mean_V + step.offset
+    if trip is not None and trip.voltage.low is not None and highest_V >= trip.voltage.low:
+        told = f"a high cell reaches {si(highest_V, 'V')}; at {si(trip.voltage.low, 'V')} it may stop the charge"
+        faults.add(procedure.place(*place, "cell_voltage"), told)
+    if highest_V > bench.bench.limits.tap:
+        told = f"a high cell reaches {si(highest_V, 'V')}, above the bench's limit for a tap"
+        faults.add(procedure.place(*place, "cell_voltage"), f"{told}, {si(bench.bench.limits.tap, 'V')}")
+    seconds = len(sequence(cells)) * phase_s(step)
+    charge_Ah = current_A * seconds / 3600.0
+    if charge_Ah > bench.bench.limits.charge:
+        told = f"{si(charge_Ah, 'Ah')} flow in {seconds / 60:.0f} min; the bench allows for"
+        told = f"{told} {si(bench.bench.limits.charge, 'Ah')} in one run: a shorter period, or a higher limit there"
+        faults.add(procedure.place(*place, "longest_period"), told)

@@ -99,6 +99,7 @@ class StandIn:
     relaxation_V: float = 0.0
     compression: float = 1.0
     trail: Trail = field(default_factory=Trail)
+    held: bool = False  # the state of charge stands still
 
     @classmethod
     def inserted(cls, pack: Pack, cell_V: float) -> StandIn:
@@ -113,7 +114,7 @@ class StandIn:
         """Let `current_A` flow for `dt_s`; returns the next node voltage to set."""
         if dt_s > 0:
             charge_Ah = current_A * dt_s * self.compression / 3600.0
-            self.soc += charge_Ah / self.pack.capacity
+            self.soc += 0.0 if self.held else charge_Ah / self.pack.capacity
             self._relax(dt_s, current_A)
         target_V = self.ocv_V + self.relaxation_V + current_A * follow.Rv_ohm
         step_V = follow.gain * (target_V - self.node_V)

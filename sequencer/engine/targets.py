@@ -17,10 +17,12 @@ SideName = Literal["lower", "upper"]
 def passed_over(step: Step, specification: Specification) -> str | None:
     """Why a step shows nothing that this specification speaks of, and is not carried out; None where it is.
 
-    A charger for a pack without cell taps declares no trip: nothing would be judged by raising a cell.
+    A charger for a pack without cell taps declares no trip: nothing would be judged by raising a cell, or by watching.
     """
     if step.raise_cell is not None and specification.tap_trip is None:
         return "the specification declares no tap_trip"
+    if step.watch_taps is not None and specification.balancing is None:
+        return "the specification declares nothing about balancing"
     return None
 
 

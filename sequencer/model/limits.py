@@ -16,6 +16,7 @@ class LimitRow:
     """One thing to be judged: `band` for a quantity or an interval, `expected` for a state or a class.
 
     Neither: not declared. `place`: which stage, band or cell, from 1. `words`: how the specification writes the limit.
+    `least`: the smallest amount of what is expected to be found.
     """
 
     name: str
@@ -27,6 +28,7 @@ class LimitRow:
     expected: str | None = None
     place: int | None = None
     words: str | None = None
+    least: float | None = None
 
     @property
     def declared(self) -> bool:
@@ -57,10 +59,16 @@ class Declared:
         if each is None:
             return [self._row(name, name, None, rule)]
         family, _, what = name.rpartition(".")
-        if each == "cell" and spec.tap_trip is None:
+        if each == "cell" and not self._by_cell(name):
             return [self._row(name, name, 1, rule)]  # one line says that nothing is declared, not one for each cell
         top = family.partition(".")[0]
         return [self._row(f"{top}.{each}{place}.{what}", name, place, rule) for place in range(1, counts[each] + 1)]
+
+    def _by_cell(self, name: str) -> bool:
+        """Whether something is declared of each cell."""
+        if name.startswith("balancing."):
+            return self.specification.balancing is not None and self.specification.balancing.current is not None
+        return self.specification.tap_trip is not None
 
     def _row(self, label: str, name: str, place: int | None, rule: Rule | None) -> LimitRow:
         definition = definitions()[name]
@@ -70,11 +78,17 @@ class Declared:
         if band is not None and definition.unit == "Ω" and name.startswith("temperature."):
             band, words = self._in_ohms(band), band.text
         own = band.rule if band is not None and band.rule is not None else self._family_rule(name)
-        return LimitRow(label, name, definition.kind, definition.unit, rule or own, band, expected, place, words)
+        least = self._least_balancing() if name == "balancing.screening" else None
+        return LimitRow(label, name, definition.kind, definition.unit, rule or own, band, expected, place, words, least)
+
+    def _least_balancing(self) -> float | None:
+        balancing = self.specification.balancing
+        return None if balancing is None or balancing.current is None else balancing.current.low
 
     def _family_rule(self, name: str) -> Rule:
         spec = self.specification
-        family: Any = {"temperature": spec.temperature, "tap_trip": spec.tap_trip}.get(name.partition(".")[0])
+        declared = {"temperature": spec.temperature, "tap_trip": spec.tap_trip, "balancing": spec.balancing}
+        family: Any = declared.get(name.partition(".")[0])
         rule: Rule | None = getattr(family, "rule", None)
         return rule or spec.rule
 
@@ -105,7 +119,18 @@ class Declared:
                 trip = self.specification.tap_trip
                 found: Band | str | None = None if trip is None else getattr(trip, what)
                 return found
+            case "balancing":
+                return self._of_balancing(what)
         raise KeyError(name)
+
+    def _of_balancing(self, what: str) -> Band | str | None:
+        """A screening is held against either; the absence itself is declared by `none_above` alone."""
+        balancing = self.specification.balancing
+        if balancing is None:
+            return None
+        if what == "current":
+            return balancing.current
+        return balancing.most or ("found" if what == "screening" else None)
 
     def _of_charge(self, what: str) -> Band | str | None:
         charge = self.specification.charge

@@ -21,6 +21,7 @@ from sequencer.model.steps import (
     Step,
     SweepId,
     SweepTemperature,
+    WatchTaps,
 )
 
 __all__ = [
@@ -33,6 +34,7 @@ __all__ = [
     "Step",
     "SweepId",
     "SweepTemperature",
+    "WatchTaps",
     "load_procedure",
 ]
 

@@ -5,11 +5,29 @@ from __future__ import annotations
 import math
 from typing import Annotated, Any, Literal
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, GetCoreSchemaHandler, GetJsonSchemaHandler
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    ConfigDict,
+    Field,
+    GetCoreSchemaHandler,
+    GetJsonSchemaHandler,
+    model_validator,
+)
 from pydantic.json_schema import JsonSchemaValue
 from pydantic_core import CoreSchema, core_schema
 
-from drivers.text.measures import AmpereLimit, Band, Limit, Rule, SecondLimit, VoltLimit, refuse
+from drivers.text.measures import (
+    AmpereLimit,
+    Band,
+    Limit,
+    PositiveAmperes,
+    Rule,
+    SecondLimit,
+    VoltLimit,
+    refuse,
+)
+from drivers.text.si import si
 
 Declared = Literal["no charge", "charges"]
 CelsiusLimit = Annotated[Band, Limit("temperature")]
@@ -94,6 +112,29 @@ class TapTrip(_Part):
     stop_time: SecondLimit | None = None
     release: Literal["resumes", "stays off"] | None = None
     rule: Rule | None = None
+
+
+class Balancing(_Part):
+    """What a cell may exchange through the taps because it stands high or low: nothing above a current, or how much."""
+
+    none_above: PositiveAmperes | None = Field(None, description="no balancing current above this")
+    current: AmpereLimit | None = Field(None, description="what each cell gives when it stands high, or takes when low")
+    rule: Rule | None = None
+
+    @model_validator(mode="after")
+    def _one_of_both(self) -> Balancing:
+        if (self.none_above is None) is (self.current is None):
+            raise refuse("declared is 'none_above' a current, or the 'current' of a cell; one of them")
+        if self.current is not None and (self.current.low is None or self.current.low <= 0):
+            raise refuse(f'"{self.current.text}": a balancing current has a lower end above 0 A: 4 mA ± 20 %')
+        return self
+
+    @property
+    def most(self) -> Band | None:
+        """'none_above' as a limit; None where a current is declared."""
+        if self.none_above is None:
+            return None
+        return Band(None, self.none_above, None, self.rule, f"none above {si(self.none_above, 'A')}")
 
 
 class IdElsewhere(_Part):

@@ -19,7 +19,7 @@ from drivers.text.measures import (
     VoltLimit,
     refuse,
 )
-from sequencer.model.signals import IdBand, IdElsewhere, TapTrip, TemperatureWindow
+from sequencer.model.signals import Balancing, IdBand, IdElsewhere, TapTrip, TemperatureWindow
 
 Algorithm = Literal["cc-cv", "stepped-cc", "stepped-cc-cv", "cc-only", "cv-only", "constant-power", "pulsed"]
 
@@ -77,6 +77,7 @@ class Specification(Written):
     id_elsewhere: IdElsewhere = IdElsewhere()
     temperature: TemperatureWindow | None = None
     tap_trip: TapTrip | None = None
+    balancing: Balancing | None = None
 
     @model_validator(mode="after")
     def _bands_apart(self) -> Specification:

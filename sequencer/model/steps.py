@@ -10,8 +10,15 @@ from drivers.text.measures import Celsius, Measure, PositiveSeconds, PositiveVol
 
 MAX_COMPRESSION = 100.0
 MAX_REPEATS = 20
-KINDS = ("insert", "charge", "remove", "sweep_id", "sweep_temperature", "raise_cell")
-SWEEPS = {"sweep_id": "id", "sweep_temperature": "temperature", "raise_cell": "tap_trip"}  # and what they find
+MOST_OFFSET_V = 0.100
+SHORTEST_PERIOD_s, LONGEST_PERIOD_s = 2.0, 3600.0
+KINDS = ("insert", "charge", "remove", "sweep_id", "sweep_temperature", "raise_cell", "watch_taps")
+SWEEPS = {  # and what they find
+    "sweep_id": "id",
+    "sweep_temperature": "temperature",
+    "raise_cell": "tap_trip",
+    "watch_taps": "balancing",
+}
 
 
 class _Part(BaseModel):
@@ -110,6 +117,24 @@ class RaiseCell(_Part):
         return self
 
 
+class WatchTaps(_Part):
+    """Watch the currents of all cell taps while the cells stand apart, the pack's voltage and state of charge held."""
+
+    cell_voltage: PositiveVolts
+    offset: PositiveVolts = Field(0.050, description="of a high or a low cell against the mean; at most 100 mV")
+    longest_period: PositiveSeconds = Field(
+        240.0, description="longest period of a balancing that is looked for; each pattern stands for three of it"
+    )
+
+    @model_validator(mode="after")
+    def _within_reach(self) -> WatchTaps:
+        if self.offset > MOST_OFFSET_V:
+            raise refuse(f"'offset' {self.offset * 1e3:g} mV: a cell is offset by {MOST_OFFSET_V * 1e3:g} mV at most")
+        if not SHORTEST_PERIOD_s <= self.longest_period <= LONGEST_PERIOD_s:
+            raise refuse(f"'longest_period' {self.longest_period:g} s: expected 2 s to 1 h")
+        return self
+
+
 class Step(_Part):
     """One step: exactly one kind."""
 
@@ -119,6 +144,7 @@ class Step(_Part):
     sweep_id: SweepId | None = None
     sweep_temperature: SweepTemperature | None = None
     raise_cell: RaiseCell | None = None
+    watch_taps: WatchTaps | None = None
     expect: Literal["charges"] | None = Field(None, description="what must be seen; if not, a fail, and the run ends")
     finding: str | None = Field(None, description="name under which the step's findings are judged")
 

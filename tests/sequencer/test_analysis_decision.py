@@ -11,6 +11,7 @@ from sequencer.analysis.decision import (
     Decision,
     decide,
     decide_class,
+    decide_screening,
     decide_state,
     exit_status,
     overall,
@@ -218,3 +219,25 @@ def test_unknown_word_is_refused() -> None:
         overall(["passed"])
     with pytest.raises(ValueError, match=r"^left_out: "):
         exit_status(["pass"], left_out=1)
+
+
+@pytest.mark.parametrize(
+    ("found", "detectable", "most", "verdict", "words"),
+    [
+        (None, 2e-6, 1e-3, "pass", "none found above 2.0 µA; declared is none above 1 mA"),
+        (None, 2e-3, 1e-3, "inconclusive", "none found above 2.0 mA; 1 mA would not have been seen"),
+        ((3e-4, 1e-5, 2.0), 2e-6, 1e-3, "pass", "below the acceptance limit"),
+        ((9.9e-4, 1e-5, 2.0), 2e-6, 1e-3, "conditional pass", ""),
+        ((4e-3, 1e-5, 2.0), 2e-6, 1e-3, "fail", ""),
+        ((4e-3, 1e-5, 2.0), 2e-6, None, "pass", "found, 4.000 mA, as declared"),
+        (None, 2e-6, None, "fail", "none found above 2.0 µA; declared is that it is there"),
+        (None, 4e-3, None, "inconclusive", "3.2 mA would not have been seen"),
+    ],
+)
+def test_screenings(
+    found: tuple[float, float, float] | None, detectable: float, most: float | None, verdict: str, words: str
+) -> None:
+    """What would not have been seen is never a pass, and what is there is held against what is declared."""
+    decision = decide_screening(found, detectable, most, 3.2e-3, "guarded", "A")
+    assert decision.verdict == verdict
+    assert words in decision.why

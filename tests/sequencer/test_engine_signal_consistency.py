@@ -104,3 +104,20 @@ def test_every_fault_at_once(refused: Any) -> None:
         procedure={"to: 4.40 V": "to: 4.70 V", "beyond: 3 K": "beyond: 90 K"},
     )
     assert len(told.splitlines()) >= 3
+
+
+@pytest.mark.parametrize(
+    ("kinds", "words"),
+    [
+        ({"procedure": {"3.95 V": "4.10 V"}}, "reach 4.213 V; at 4.175 V the first stage is declared to end"),
+        ({"procedure": {"offset: 50 mV": "offset: 100 mV", "3.95 V": "4.00 V"}}, "at 4.2 V it may stop the charge"),
+        ({"bench": {"5 Ah": "5 Ah, tap: 4.1 V"}}, "above the bench's limit for a tap, 4.1 V"),
+        ({"procedure": {"period: 1 min": "period: 4 min"}}, "flow in 132 min; the bench allows for 5 Ah in one run"),
+        ({"bench": {"charge: 5 Ah": "charge: 1 Ah"}}, "is less than the pack's capacity"),
+        ({"procedure": {"offset: 50 mV": "offset: 0.2 V"}}, "a cell is offset by 100 mV at most"),
+        ({"procedure": {"period: 1 min": "period: 1 s"}}, "expected 2 s to 1 h"),
+        ({"pack": {"cells: 5": "cells: 1"}}, "a pack of one cell has no other cell to be balanced with"),
+    ],
+)
+def test_taps_that_cannot_be_watched(refused: Any, kinds: dict[str, Any], words: str) -> None:
+    assert words in refused("balancing-screening", **kinds)

@@ -28,7 +28,7 @@ def test_every_measurand_says_what_where_when_and_what_makes_it_inconclusive() -
     """Terms of a measurand's definition: JCGM 200:2012, 2.3 (from memory), and what a repeat of the test needs."""
     for name, definition in definitions().items():
         assert all((definition.measures, definition.when, definition.statistic, definition.inconclusive)), name
-        assert (definition.unit != "") == (definition.kind in ("quantity", "interval")), name
+        assert (definition.unit != "") == (definition.kind in ("quantity", "interval", "absence")), name
 
 
 def test_rows_follow_the_procedures_order_one_a_stage(spec: Specification) -> None:

@@ -6,6 +6,7 @@ import pytest
 
 from sequencer.engine.inputs import Asked, gather
 from sequencer.model.limits import Declared, LimitRow
+from sequencer.model.signals import Balancing
 
 
 @pytest.fixture(scope="module")
@@ -67,3 +68,25 @@ def test_what_is_declared_and_not_judged_is_known() -> None:
     assert "tap_trip.cell5.voltage" in elsewhere
     assert "charge.algorithm" in elsewhere
     assert not any(name.startswith("id.") for name in elsewhere)
+
+
+def balancing_rows(**said: str) -> dict[str, LimitRow]:
+    spec = gather(Asked("balancing-screening", "lantern", bench="virtual-in-process")).specification.model
+    names = ("balancing.screening", "balancing.current", "balancing.none_above")
+    changed = spec.model_copy(update={"balancing": Balancing.model_validate(said) if said else None})
+    return {row.name: row for row in Declared(changed, 3).rows(names)}
+
+
+def test_what_is_declared_about_balancing() -> None:
+    """None above a current: one limit, and the absence; a current: one a cell, and that it is found at all."""
+    none = balancing_rows(none_above="1 mA")
+    assert [name for name, row in none.items() if row.declared] == ["balancing.screening", "balancing.none_above"]
+    screening = none["balancing.screening"]
+    assert screening.band is not None
+    assert (screening.band.high, screening.expected, screening.least) == (0.001, None, None)
+    there = balancing_rows(current="4 mA ± 20 %", rule="simple")
+    cells = [f"balancing.cell{cell}.current" for cell in (1, 2, 3)]
+    assert [name for name, row in there.items() if row.declared] == ["balancing.screening", *cells]
+    assert (there["balancing.screening"].expected, there["balancing.screening"].least) == ("found", 0.0032)
+    assert {there[name].rule for name in cells} == {"simple"}
+    assert not any(row.declared for row in balancing_rows().values())

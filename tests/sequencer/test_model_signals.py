@@ -10,7 +10,7 @@ from hypothesis import strategies as st
 from pydantic import ValidationError
 
 from sequencer.model import preferred
-from sequencer.model.signals import IdBand, TapTrip, TemperatureWindow
+from sequencer.model.signals import Balancing, IdBand, TapTrip, TemperatureWindow
 
 
 def band(low_ohm: float, high_ohm: float) -> IdBand:
@@ -59,3 +59,21 @@ def test_unknown_words_are_refused() -> None:
         TapTrip.model_validate({"voltage": ["4.20 V", "4.28 V"], "release": "sometimes"})
     with pytest.raises(ValidationError):
         TapTrip.model_validate({"voltage": ["4.20 V", "4.28 V"], "delay": "2 s"})
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        ({}, "one of them"),
+        ({"none_above": "1 mA", "current": "4 mA ± 20 %"}, "one of them"),
+        ({"current": {"below": "4 mA"}}, "has a lower end above 0 A"),
+        ({"none_above": "0 mA"}, "must be above"),
+        ({"none_above": "1 V"}, "a voltage"),
+    ],
+)
+def test_balancing_is_declared_in_one_way(text: dict[str, object], words: str) -> None:
+    with pytest.raises(ValidationError, match=words):
+        Balancing.model_validate(text)
+    most = Balancing.model_validate({"none_above": "1 mA", "rule": "simple"}).most
+    assert most is not None
+    assert (most.low, most.high, most.rule, most.text) == (None, 0.001, "simple", "none above 1 mA")
