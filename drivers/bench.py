@@ -116,6 +116,17 @@ def _scale(value: Any) -> float:
     return number
 
 
+class Trouble(_Part):
+    """What shall go wrong on a virtual bench, and when."""
+
+    at: Seconds = Field(description="moment of the bench's time at which it happens")
+    does: Literal["load-trips", "supply-limits", "mains-lost", "mains-open", "charger-starts", "mute", "overload"] = (
+        Field(description="what happens; see drivers/README.md")
+    )
+    instrument: str | None = Field(None, description="of 'mute' and 'overload': whose")
+    lasts: Seconds | None = Field(None, description="after so long it is gone again; left out: for good")
+
+
 class Virtual(_Part):
     """The physical truth of a virtual bench. A bench with this section drives no hardware."""
 
@@ -135,6 +146,7 @@ class Virtual(_Part):
     resistor_glitch: Seconds = Field(0.02, description="a programmable resistor is open for so long while it switches")
     welded: ChannelRef | None = Field(None, description="a contact that never opens (trouble)")
     ambient: Annotated[float, Measure("temperature")] = 23.0
+    troubles: tuple[Trouble, ...] = Field((), description="what goes wrong by order, at a moment of the bench's time")
 
 
 class Bench(Written):

@@ -6,7 +6,7 @@ import re
 from dataclasses import dataclass
 from pathlib import Path
 
-from drivers.bench import Bench, Instrument
+from drivers.bench import Bench, Instrument, Trouble
 from drivers.dialect import Dialect
 from drivers.shipped import locate
 from drivers.text.binding import Bound, bind
@@ -52,6 +52,7 @@ def load_bench(path: Path, faults: Faults) -> BenchFile | None:
     known = {name: dialect for name, dialect in dialects.items() if dialect is not None}
     bench_file = BenchFile(bound, known)
     _check_roles(bench_file, faults)
+    _check_troubles(bench_file, faults)
     return bench_file if len(known) == len(dialects) else None
 
 
@@ -125,3 +126,27 @@ def _check_roles(bench_file: BenchFile, faults: Faults) -> None:
         if dialect is not None and dialect.model.role != role:
             told = f"'{name}' speaks '{dialect.model.name}', the dialect of a {dialect.model.role}"
             faults.add(_place(bench_file.bound, where), f"{told}; a {role} is needed here")
+
+
+def _check_troubles(bench_file: BenchFile, faults: Faults) -> None:
+    """Of an instrument or not, as it belongs; what cannot be taken back lasts for good."""
+    bench = bench_file.bench
+    for number, trouble in enumerate(bench.virtual.troubles if bench.virtual is not None else ()):
+        here = ("virtual", "troubles", number)
+        needs = trouble.does in ("mute", "overload")
+        if needs and trouble.instrument is None:
+            faults.add(bench_file.bound.place(*here, "does"), f"'{trouble.does}' needs an 'instrument'")
+        elif trouble.instrument is not None:
+            _check_troubled(bench_file, trouble, bench_file.bound.place(*here, "instrument"), faults)
+        if trouble.lasts is not None and trouble.does in ("load-trips", "mains-open", "charger-starts"):
+            faults.add(bench_file.bound.place(*here, "lasts"), f"'{trouble.does}' lasts for good; leave 'lasts' out")
+
+
+def _check_troubled(bench_file: BenchFile, trouble: Trouble, place: Place, faults: Faults) -> None:
+    name = trouble.instrument or ""
+    if trouble.does not in ("mute", "overload"):
+        faults.add(place, f"'{trouble.does}' is not of one instrument; leave 'instrument' out")
+    elif name not in bench_file.bench.used():
+        faults.add(place, unknown(name, bench_file.bench.used(), "instrument"))
+    elif trouble.does == "overload" and name in bench_file.dialects and bench_file.dialect(name).role != "meter":
+        faults.add(place, f"'{name}' is a {bench_file.dialect(name).role}; only a meter can be made to answer overload")

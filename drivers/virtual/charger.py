@@ -257,6 +257,10 @@ class Charger:
         self._band = self._band_read() if self._reads_id else None
         self._enter("surge" if self.plan.surge_s > 0 else "charging")
 
+    def start_by_itself(self) -> None:
+        """It delivers from now on, whatever it sees, and even without its mains (trouble)."""
+        self._start()
+
     def _charge(self) -> None:
         self._enter("charging")
 

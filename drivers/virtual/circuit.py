@@ -82,6 +82,8 @@ class Circuit:
         self.supply = SupplyStage()
         self.load = LoadStage()
         self.mains_on = False
+        self.mains_fed = True  # whether there is mains behind the switch
+        self._supply_most_A = constants.supply_most_A
         self.now_s = 0.0
         self.events = 0  # counted for ever
         self._pending: list[tuple[float, int, Callable[[], None]]] = []  # a heap; the number keeps the order given
@@ -122,7 +124,18 @@ class Circuit:
     def set_mains(self, on: bool) -> None:
         if on != self.mains_on:
             self.mains_on = on
-            self.change(lambda: self.charger.mains(on))
+            self.change(lambda: self.charger.mains(on and self.mains_fed))
+
+    # -- troubles, as acts of an event ----------------------------------------------------------------------
+
+    def feed(self, fed: bool) -> None:
+        """The mains behind the switch go, or come back; the switch does not know."""
+        self.mains_fed = fed
+        self.charger.mains(self.mains_on and fed)
+
+    def limit_supply(self, most_A: float) -> None:
+        """The supply limits its current at `most_A`, whatever it is told."""
+        self._supply_most_A = most_A
 
     # -- time ---------------------------------------------------------------------------------------------
 
@@ -217,7 +230,7 @@ class Circuit:
         seen = self._relearn_path(self.charger.drive())
         law = self._law
         self._pushed_V = law.pushed_V()
-        self._limited_V = law.limited_V(min(self.supply.limit_A, self.constants.supply_most_A))
+        self._limited_V = law.limited_V(min(self.supply.limit_A, self._supply_most_A))
         self._watches = [*self.charger.watches(seen), *self._protections(law)]
         self._find_fade(seen)
         corners = {*law.corners, self._pushed_V, self._limited_V, *(watch.node_V for watch in self._watches)}

@@ -43,6 +43,8 @@ class Instrument:
         self.circuit = circuit
         self.status = Status()
         self.messages = 0  # counted for ever
+        self.mute = False  # neither hears nor answers (trouble)
+        self.overloaded = False  # a meter: answers overload to everything (trouble)
         self._input = b""
         self._output = b""
         self._answers: list[str] = []
@@ -71,6 +73,8 @@ class Instrument:
 
     def stream(self, data: bytes) -> bytes:
         """Hear bytes of a raw socket and return all answers that became ready."""
+        if self.mute:
+            return b""
         if not self._input and data.endswith(b"\n") and data.count(b"\n") == 1:
             return self._do(data[:-1])
         return b"".join([self._do(line) for line in self._lines(data)])

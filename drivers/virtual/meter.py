@@ -100,7 +100,7 @@ class Meter(Instrument):
         top_V = RANGES_V[self._range]
         most_V = top_V if top_V == RANGES_V[-1] else OVER_RANGE * top_V
         value = self._adc.read(true_V, self.circuit.now_s, self._range, self.cycles)
-        if abs(value) > most_V:
+        if abs(value) > most_V or self.overloaded:
             return math.copysign(OVERLOAD, value)
         if self._ideal:
             return value

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from drivers.virtual.charger_plan import ChargerPlan
+from drivers.virtual.troubles import Trouble
 
 if TYPE_CHECKING:
     from drivers.bench import Bench
@@ -57,6 +58,7 @@ class Plan:
     glitch_s: float = 0.02
     welded: tuple[str, int] | None = None  # instrument and channel
     ambient_C: float = 23.0
+    troubles: tuple[Trouble, ...] = ()
 
     def to_json(self) -> dict[str, Any]:
         return asdict(self)
@@ -68,6 +70,7 @@ class Plan:
             plan[key] = tuple((where, what) for where, what in plan[key])
         plan["taps"] = tuple(TapShunt(**tap) for tap in plan["taps"])
         plan["plain"] = tuple(plan["plain"])
+        plan["troubles"] = tuple(Trouble(**trouble) for trouble in plan.get("troubles", ()))
         plan["welded"] = tuple(plan["welded"]) if plan["welded"] else None
         plan["charger"] = ChargerPlan.from_json(plan["charger"])
         return cls(**plan)
@@ -105,6 +108,7 @@ def plan_of(bench: Bench, charger: ChargerFile) -> Plan:
         glitch_s=virtual.resistor_glitch,
         welded=(virtual.welded.instrument, _number(bench.name, virtual.welded)) if virtual.welded else None,
         ambient_C=virtual.ambient,
+        troubles=tuple(Trouble(one.at, one.does, one.instrument, one.lasts) for one in virtual.troubles),
     )
 
 

@@ -10,6 +10,7 @@ from drivers.virtual.charger import Charger
 from drivers.virtual.circuit import Circuit, Constants
 from drivers.virtual.plan import Plan, plan_of
 from drivers.virtual.terminals import Terminals
+from drivers.virtual.troubles import arrange
 from drivers.virtual.wire import Wirer, drawn_ohm, made_taps, wired_signals
 
 if TYPE_CHECKING:
@@ -38,6 +39,7 @@ class World:
         self.charger = Charger(plan.charger, terminals)
         self.circuit = Circuit(_constants(plan, seed), self.charger)
         self.instruments = Wirer(plan, seed, self.circuit, taps).instruments()
+        arrange(plan.troubles, self.circuit, self.instruments)
         self.circuit.catch_up()
 
     @classmethod
