@@ -1,9 +1,13 @@
 """The safe state: energy source away first, absorber and voltage holder kept until the current is proven gone.
 
-Order: 1 mains off. 2 two independent witnesses say that the charger no longer delivers. 3 if not, mains off once
-more. 4 if still not, load and supply stay as they are and an alarm is raised. 5 cell taps down together.
+Order: 1 mains off. 2 two witnesses say that the charger no longer delivers, and none that it does. 3 if not, mains
+off once more. 4 if still not, load and supply stay as they are and an alarm is raised. 5 cell taps down together.
 6 supply to zero while the load drains the node, then load off, supply off. 7 contacts open, each checked.
 Only what readback and meter both show is called safe. Safe means de-energised, not isolated.
+
+A witness that sees the charger deliver is not outvoted: shunt and ballast lie in one path, and a charger wired past
+both is seen by load less supply alone. Only a meter that stands still to its last digit, or that hangs behind contacts
+proven open, is no witness.
 
 All witnesses are asked in one exchange, so that any number of silent instruments costs one wait. A lost link is
 opened anew on the way, and who answers is proven before anything is said to it. Every wait has an end.
@@ -24,6 +28,9 @@ from drivers.trouble import BenchFault
 T = TypeVar("T")
 QUIET_CURRENT_A = 0.050
 PATIENCE_s = 2.0  # for the charging current to go after each try
+BALLAST_A = 0.2  # two meters on their high range: 10 mV each over 0.1 Ω, well above their accuracy statements
+READBACK_A, READBACK = 0.06, 0.02  # of supply and load: as the guard allows them, the share of the load's current
+STILL_LOOKS = 10  # so many equal readings to the last digit: a meter that does not measure
 BACKWARDS_A = -1.0  # more than this into a charger that is off is a wire off a meter, not a current
 QUIET_FOR_s = 0.3  # several looks: a charger may pulse; the whole PATIENCE_s where the mains are not proven off
 DRAIN_A = 0.080
@@ -58,6 +65,7 @@ class Look:
     mains_on: bool | None
     supply: SupplyReading | None
     load: LoadReading | None
+    charger_V: float = math.nan
 
     @property
     def difference_A(self) -> float:
@@ -74,8 +82,24 @@ class Look:
 
     @property
     def quiet(self) -> bool:
-        """Two of three see less than QUIET_CURRENT_A out of the charger (a drain from the node is allowed)."""
+        """Two see less than QUIET_CURRENT_A out of the charger (a drain is allowed), and none sees it deliver."""
+        return self.mostly_quiet and not self.delivering
+
+    @property
+    def mostly_quiet(self) -> bool:
         return sum(current_A < QUIET_CURRENT_A for current_A in self.witnesses_A) >= 2
+
+    @property
+    def delivering(self) -> set[str]:
+        """Who sees the charger deliver, by more than a tolerance explains."""
+        shunt_A, ballast_A, difference_A = self.witnesses_A
+        drawn_A = 0.0 if self.load is None else abs(self.load.current_A)
+        clear = (
+            ("shunt", shunt_A, QUIET_CURRENT_A),
+            ("ballast", ballast_A, BALLAST_A),
+            ("load less supply", difference_A, READBACK_A + READBACK * drawn_A),
+        )
+        return {name for name, current_A, least_A in clear if current_A >= least_A}
 
     @property
     def sourcing(self) -> bool:
@@ -111,6 +135,7 @@ class _Walk:
         self.bench = bench
         self.state = SafeState()
         self.taps_off = True
+        self._looks: list[Look] = []
 
     def source_away(self) -> str | None:
         """Steps 1 to 4. Returns what to tell a person if the charger is not proven quiet."""
@@ -119,17 +144,39 @@ class _Walk:
             proven = self._do(Deed(self.bench.mains, "off"))
             self.state.words.append(words if proven else f"{words}: not confirmed")
             look, quiet = self._watch(until_s, QUIET_FOR_s if proven else PATIENCE_s)
-            if quiet:
+            if quiet or (proven and self._explained(look)):
                 self.state.words.append(f"charger quiet: {_seen(look)}")
                 return None
         self.state.words.append(f"charger not proven quiet: {_seen(look)}")
         return ALARM if look.sourcing else ALARM_UNKNOWN
 
+    def _explained(self, look: Look) -> bool:
+        """Whether the one that sees the charger deliver, against two and the mains' readback, is no witness."""
+        if look.mains_on is not False or not look.mostly_quiet or len(look.delivering) != 1:
+            return False
+        (name,) = look.delivering
+        if self._stands_still(name):
+            self.state.words.append(f"the {name}'s meter stands still to its last digit: it does not measure")
+            return True
+        power = self.bench.signals.power
+        if name == "ballast" and power is not None and self._do(power.b_plus.open, power.precharge.open):
+            self.state.words.append("B+ opened: the ballast's meter hangs at open contacts")
+            return True
+        return False
+
+    def _stands_still(self, name: str) -> bool:
+        """Of shunt or ballast: equal readings for as long as was looked. Readbacks are too coarse to tell."""
+        read = {"shunt": [one.shunt_A for one in self._looks], "ballast": [one.charger_V for one in self._looks]}
+        values = read.get(name, [])
+        return len(values) >= STILL_LOOKS and len(set(values)) == 1
+
     def _watch(self, until_s: float, hold_s: float) -> tuple[Look, bool]:
         """Look until the charger has been quiet for `hold_s`, or it is not and `until_s` has passed."""
         clock = self.bench.clock
         look, since_s = self._look(reopen=True), None
+        self._looks = []
         while True:
+            self._looks.append(look)
             now_s = clock.now()
             if not look.quiet:
                 since_s = None
@@ -204,6 +251,7 @@ class _Walk:
             self._read(bench.mains.read, mains),
             self._read(bench.supply.read, supply),
             self._read(bench.load.read, load),
+            charger_V,
         )
 
     def _read(self, read: Callable[[Reply], T], reply: Reply) -> T | None:

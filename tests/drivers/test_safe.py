@@ -465,6 +465,50 @@ def test_all_links_lost() -> None:
     assert len(state.troubles) == len(NAMES), "each trouble is told once, not at every look"
 
 
+def steady(instrument: str, answer: str) -> Callable[[Job, int, float], Reply | None]:
+    """An instrument that answers every reading with the same digits."""
+    return lambda job, n, t: Reply(instrument, (answer,), t) if job.instrument == instrument else None
+
+
+def test_a_charger_wired_past_shunt_and_ballast_is_not_outvoted() -> None:
+    """Both lie in the path that it goes around: they see nothing, and what load and supply say is the only truth."""
+    stage, keeps_on = charging(), welded(told="0")
+
+    def past(job: Job, number: int, time_s: float) -> Reply | None:
+        if job.instrument == SHUNT_METER:
+            return Reply(SHUNT_METER, ("0.0",), time_s)
+        if job.instrument == CHARGER_METER:
+            return stage.exchange.inner([Job(NODE_METER, job.messages, job.fields)], 1.0)[0]
+        return keeps_on(job, number, time_s)
+
+    state = stage.walk(past)
+    assert not state.verified
+    assert stage.alarms == [ALARM]
+    assert not any(said.changes_outputs for said in stage.exchange.said)
+
+
+def test_a_live_meter_that_sees_a_current_is_not_outvoted() -> None:
+    """It reads 30 mV across 10 mΩ, never twice the same: nobody may say that it is the one that is wrong."""
+    stage = charging()
+
+    def lively(job: Job, number: int, time_s: float) -> Reply | None:
+        return Reply(SHUNT_METER, (f"{0.03 + 1e-7 * number:.9f}",), time_s) if job.instrument == SHUNT_METER else None
+
+    state = stage.walk(lively)
+    assert not state.verified
+    assert stage.alarms == [ALARM]
+    assert not any(said.changes_outputs for said in stage.exchange.said)
+
+
+@pytest.mark.parametrize(("meter", "answer"), [(SHUNT_METER, "0.03"), (CHARGER_METER, "19.5")])
+def test_a_meter_that_stands_still_is_no_witness(meter: str, answer: str) -> None:
+    stage = charging()
+    state = stage.walk(steady(meter, answer))
+    assert state.verified
+    assert stage.really_safe
+    assert any("stands still to its last digit" in words for words in state.words)
+
+
 def test_a_bench_without_a_ballast_needs_both_other_witnesses() -> None:
     file = files()[0]
     wiring = file.bench.wiring
@@ -616,11 +660,14 @@ def test_two_of_three_witnesses(mode: SupplyMode, shunt_A: float, ballast_A: flo
         safe.LoadReading(0.0, difference_A, LoadMode.ON),
     )
     quiet = [value < QUIET_A for value in (shunt_A, ballast_A, difference_A)]
-    assert look.quiet is (sum(quiet) >= 2)
+    # 10 mV of each meter over 0.1 Ω; 60 mA and 2 % of what the load draws: beyond these it is seen to deliver
+    readback_A = 0.06 + 0.02 * abs(difference_A)
+    clear = [shunt_A >= QUIET_A, ballast_A >= 0.2, difference_A >= readback_A]
+    assert look.quiet is (sum(quiet) >= 2 and not any(clear))
     assert look.sourcing is (not all(quiet))
     blind = replace(look, shunt_A=math.nan, supply=None)
     assert not blind.quiet
     # A meter behind an open contact reads 0 V against the node's 18 V: no current, and no witness either.
     behind = replace(look, ballast_A=-180.0)
-    assert behind.quiet is (quiet[0] and quiet[2])
+    assert behind.quiet is (quiet[0] and quiet[2])  # both below 50 mA: neither sees it deliver
     assert not replace(behind, supply=None).quiet
