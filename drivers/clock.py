@@ -24,6 +24,9 @@ class Clock(Protocol):
     def wait_until(self, moment_s: float) -> None:
         """Return when `now()` is at least `moment_s`; at once if it is already."""
 
+    def catch_up(self) -> None:
+        """Take in what has passed by itself: on a virtual bench the time-out of an instrument that does not answer."""
+
     def utc(self) -> str:
         """The moment as ISO 8601 in UTC, to the millisecond."""
 
@@ -58,6 +61,9 @@ class WallClock:
         while (left := moment_s - self.now()) > 0:
             time.sleep(min(left, LONGEST_SLEEP_s))
 
+    def catch_up(self) -> None:
+        """It never lags."""
+
     def utc(self) -> str:
         return iso(self._start + timedelta(seconds=self.now()))
 
@@ -83,6 +89,9 @@ class VirtualClock:
             begun = time.perf_counter()
             self._now = self._advance(left)
             self.waited_wall_s += time.perf_counter() - begun
+
+    def catch_up(self) -> None:
+        self._now = self._advance(0.0)
 
     def utc(self) -> str:
         return iso(self._start + timedelta(seconds=self.now()))

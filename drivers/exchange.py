@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import queue
 import threading
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Protocol
 
@@ -42,10 +42,24 @@ class Reply:
     fault: BenchFault | None = None
 
 
+class Pending(Protocol):
+    """Jobs that are under way."""
+
+    @property
+    def ready(self) -> bool:
+        """Whether every instrument has answered or failed."""
+
+    def replies(self) -> list[Reply]:
+        """What has come by now, one reply a job; whoever has not answered is given up."""
+
+
 class Exchange(Protocol):
     """Carries jobs to the instruments. Never raises for an instrument: a fault stands in the reply."""
 
     count: int
+
+    def begin(self, jobs: Sequence[Job]) -> Pending:
+        """Send jobs off without waiting for anybody."""
 
     def __call__(self, jobs: Sequence[Job], wait_s: float) -> list[Reply]: ...
 
@@ -87,6 +101,17 @@ def perform(session: Session, job: Job, clock: Clock) -> Reply:
     return Reply(job.instrument, fields, clock.now())
 
 
+@dataclass(frozen=True)
+class _Here:
+    """Replies that are there already."""
+
+    came: list[Reply]
+    ready: bool = True
+
+    def replies(self) -> list[Reply]:
+        return self.came
+
+
 class Inline:
     """Jobs one after the other in the caller's thread: for virtual time, in which order costs nothing."""
 
@@ -97,7 +122,13 @@ class Inline:
 
     def __call__(self, jobs: Sequence[Job], wait_s: float) -> list[Reply]:
         self.count += len(jobs)
-        return [perform(self._sessions[job.instrument], job, self._clock) for job in jobs]
+        replies = [perform(self._sessions[job.instrument], job, self._clock) for job in jobs]
+        if any(reply.fault is not None for reply in replies):
+            self._clock.catch_up()
+        return replies
+
+    def begin(self, jobs: Sequence[Job]) -> Pending:
+        return _Here(self(jobs, 0.0))
 
     def close(self) -> None:
         for session in self._sessions.values():
@@ -158,6 +189,23 @@ class _Worker:
         self._rounds.put(None)
 
 
+@dataclass(frozen=True)
+class _Underway:
+    """Rounds that workers are at, by instrument; `instruments`: of each job, in their order."""
+
+    instruments: list[str]
+    rounds: dict[str, _Round]
+    end: Callable[[str, _Round, float], list[Reply]]
+
+    @property
+    def ready(self) -> bool:
+        return all(round_.done.is_set() for round_ in self.rounds.values())
+
+    def replies(self, deadline_s: float = 0.0) -> list[Reply]:
+        replies = {name: iter(self.end(name, round_, deadline_s)) for name, round_ in self.rounds.items()}
+        return [next(replies[name]) for name in self.instruments]
+
+
 class Workers:
     """Jobs side by side, one thread an instrument: for wall time. A call lasts `wait_s` at most.
 
@@ -172,16 +220,19 @@ class Workers:
         self.count = 0
 
     def __call__(self, jobs: Sequence[Job], wait_s: float) -> list[Reply]:
-        self.count += len(jobs)
         deadline_s = self._clock.now() + wait_s
+        pending = self.begin(jobs)
+        return pending.replies(deadline_s) if isinstance(pending, _Underway) else pending.replies()
+
+    def begin(self, jobs: Sequence[Job]) -> Pending:
+        self.count += len(jobs)
+        if self._closed:
+            return _Here([self._late(job.instrument, "the link is closed (the bench was closed)") for job in jobs])
         by_instrument: dict[str, list[Job]] = {}
         for job in jobs:
             by_instrument.setdefault(job.instrument, []).append(job)
-        if self._closed:
-            return [self._late(job.instrument, "the link is closed (the bench was closed)") for job in jobs]
         rounds = {name: self._workers[name].give(mine) for name, mine in by_instrument.items()}
-        replies = {name: iter(self._end(name, round_, deadline_s)) for name, round_ in rounds.items()}
-        return [next(replies[job.instrument]) for job in jobs]
+        return _Underway([job.instrument for job in jobs], rounds, self._end)
 
     def _end(self, name: str, round_: _Round, deadline_s: float) -> list[Reply]:
         """What came back of a round by the deadline, one reply a job. Raises a bug of ours that a worker met."""

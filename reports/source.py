@@ -71,6 +71,7 @@ def read_judgement(folder: Path) -> Source:
 
     OSError, ValueError or RecordError where a file is missing or broken.
     """
+    from sequencer.engine.evidence import counted
     from sequencer.engine.record_reader import Record
 
     record = Record.open(folder.parent.parent)
@@ -81,7 +82,7 @@ def read_judgement(folder: Path) -> Source:
     return Source(
         name=folder.name,
         manifest=record.manifest or {},
-        events=record.events,
+        events=counted(record.events),
         notes=record.notes,
         series=lambda name: record.series(name) if name in held else None,
         measurands=measurands(record.input_bytes("findings.yaml")) if "findings.yaml" in given else {},

@@ -41,6 +41,7 @@ CHANNELS: tuple[Channel, ...] = (
     Channel("set.supply.voltage", "V", "setting"),
     Channel("set.load.current", "A", "setting"),
     Channel("set.mains", "1", "setting"),
+    Channel("mains.state", "1", "measured"),  # as the mains switch reads back: 1 closed, 0 open
     Channel("pack.ocv", "V", "computed"),
     Channel("pack.soc", "1", "computed"),
     Channel("pack.compression", "1", "computed"),  # how many times faster than real capacity the state of charge moves

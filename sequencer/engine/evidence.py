@@ -26,6 +26,7 @@ from sequencer.model.procedure import Procedure, load_procedure
 from sequencer.model.specification import Specification
 
 Floats = NDArray[np.float64]
+FACTS = frozenset({"mains", "contact", "note", "standin", "trip", "bench-fault", "link-lost", "link-recovered"})
 SAME_MOMENT_s = 0.06  # readings of one scan lie closer together than this in virtual and in wall time
 
 
@@ -57,6 +58,21 @@ class Trace:
         return np.where(index >= 0, self.value[np.maximum(index, 0)], np.nan)
 
 
+def counted(events: list[dict[str, Any]]) -> list[dict[str, Any]]:
+    """All events but those by which a broken step would be judged: it was repeated, and says nothing by itself.
+
+    What was switched meanwhile remains a fact.
+    """
+    begun: dict[int, int] = {}
+    void: set[int] = set()
+    for index, event in enumerate(events):
+        if event["event"] == "step-start":
+            begun[event["step"]] = index
+        elif event["event"] == "step-broken":
+            void |= set(range(begun[event["step"]], index))
+    return [event for index, event in enumerate(events) if index not in void or event["event"] in FACTS]
+
+
 @dataclass(frozen=True)
 class Evidence:
     """A record opened for judging."""
@@ -79,7 +95,7 @@ class Evidence:
         return str(self.manifest["ended"])
 
     def events(self, name: str) -> list[dict[str, Any]]:
-        return [event for event in self.record.events if event["event"] == name]
+        return [event for event in counted(self.record.events) if event["event"] == name]
 
     @property
     def trip(self) -> dict[str, Any] | None:

@@ -13,6 +13,7 @@ from typing import Literal
 from drivers.bench import Limits
 from drivers.roles import LoadMode, SupplyMode
 from drivers.text.si import si
+from drivers.trouble import BenchFault
 from sequencer.engine.scan import Scan, Seen
 from sequencer.model.pack import Pack
 
@@ -77,6 +78,14 @@ class Trip(Exception):
         return {name: getattr(self, name) for name in names}
 
 
+class LinkLost(Trip):
+    """A link that is lost: the one trip from which a run may recover."""
+
+    def __init__(self, quantity: str, fault: BenchFault) -> None:
+        self.fault = fault
+        super().__init__("bench", quantity, math.nan, "", math.nan, f"lost: {fault}")
+
+
 @dataclass
 class Guard:
     """Looks at every scan; raises Trip. Holds what it must remember: charge, equal readings, lost links."""
@@ -85,7 +94,7 @@ class Guard:
     ballast_ohm: float
     fixture_ohm: float | None = None  # all between contacts and node, once it has been measured
     connected: bool = True  # charger and node: False while B+ is open, when their meters may show anything
-    slow_s: float = 0.0  # how long a look at the slow group may hold up the next scan
+    held_s: float = 0.0  # since the scan before, by instruments that were waited for: no computer that slept
     charge_Ah: float = 0.0
     _before: Scan | None = None
     _equal: dict[str, tuple[float, int, float]] = field(default_factory=dict)
@@ -107,6 +116,14 @@ class Guard:
         self._learn_load(scan)
         self._before = scan
 
+    def forget(self, connected: bool) -> None:
+        """After the safe state, from which all begins anew; what has flowed and the run's time still count."""
+        self.connected, self.fixture_ohm = connected, None
+        self._before = self._condition_lost_s = self._drawn_A = None
+        self._apart = 0
+        self._equal.clear()
+        self._lost.clear()
+
     def _learn_load(self, scan: Scan) -> None:
         """A load in constant current draws the same from its second scan on; later it is held against that."""
         if scan.load.mode != LoadMode.ON or scan.load_seen.fault is not None:
@@ -127,7 +144,7 @@ class Guard:
             if seen.fault is not None:
                 self._lost[name] = self._lost.get(name, 0) + 1
                 if self._lost[name] >= LOST_READINGS or "link is closed" in seen.fault.what:
-                    raise Trip("bench", name, math.nan, "", math.nan, f"lost: {seen.fault}")
+                    raise LinkLost(name, seen.fault)
             elif math.isnan(seen.value):
                 raise Trip("bench", name, math.nan, "", math.nan, "its instrument answered overload or not a number")
             else:
@@ -137,7 +154,7 @@ class Guard:
         if self._before is None:
             return
         gap_s = scan.time_s - self._before.time_s
-        if gap_s > max(STALE_PERIODS * period_s, 1.0) + period_s + self.slow_s:
+        if gap_s > max(STALE_PERIODS * period_s, 1.0) + period_s + self.held_s:
             raise Trip(
                 "bench", "time between scans", gap_s, "s", STALE_PERIODS * period_s, "the computer slept or hung"
             )
@@ -264,6 +281,12 @@ class Guard:
         if scan.current_A.value < LIFTS_A:
             return "bench", "no charging current flows: it is not the charger that lifts the node"
         return "charger", "outputs stood as set, and two independent readings agree"
+
+    def unseen_A(self, scan: Scan) -> float | None:
+        """What load minus supply shows of a charging current and the shunt does not; None where the two agree."""
+        if not (scan.current_A.good and self.connected) or scan.supply_seen.fault or scan.load_seen.fault:
+            return None
+        return scan.difference_A if scan.difference_A > scan.current_A.value and not self._agree_A(scan) else None
 
     def _agree_A(self, scan: Scan) -> bool:
         margin_A = AGREE_FLOOR_A + AGREE_SHARE * abs(scan.load.current_A)

@@ -359,6 +359,12 @@ def _deviations(evidence: Evidence, asked: Rejudging) -> list[str]:
         and sha256(asked.specification[1]) != evidence.manifest["specification"]["sha256"]
     ):
         said.append("judged against another specification than the one of the run")
+    said += [
+        f"step {one['step']} ({one['does']}) was broken off at {one['at_s']:.1f} s, when the link to "
+        f"{one['instrument']} was lost; with the energy off the link was opened anew, the step repeated "
+        "and the broken one not judged"
+        for one in evidence.events("step-broken")
+    ]
     if evidence.manifest.get("ended") == "abandoned":
         said.append("the run was cut off by a crash and sealed afterwards")
     return said + [f"the record: {note}" for note in evidence.record.notes]

@@ -10,6 +10,7 @@ from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from drivers.clock import wall_seconds
+from drivers.exchange import Pending
 from drivers.open_bench import OpenBench
 from drivers.roles import Deed
 from drivers.trouble import LinkFault
@@ -87,7 +88,9 @@ class Loop:
         self._slow_s = 0.0
         self._tap_V: dict[int, float] = {} if self.slow is None else self.slow.set_V
         self.guard.connected = self.bench.signals.power is None
-        self.guard.slow_s = SLOW_PATIENCE_s if self.slow is not None and self.slow.any else 0.0
+        self._asked: Pending | None = None  # the slow group, under way
+        self._asked_s = 0.0
+        self._held_s = 0.0  # since the scan before, by instruments that were waited for
 
     @property
     def now_s(self) -> float:
@@ -108,7 +111,9 @@ class Loop:
 
     def set(self, *deeds: Deed) -> None:
         """Carry out settings between scans, prove them, write them down."""
+        begun_s = self.now_s
         self.bench.hands.do(deeds)
+        self._held_s += self.now_s - begun_s
         for deed in deeds:
             self._note(deed)
         self.look_closely()
@@ -120,6 +125,20 @@ class Loop:
 
     def event(self, name: str, /, **fields: object) -> None:
         self.record.event(round(self.now_s, 3), name, **fields)
+
+    def start_afresh(self) -> None:
+        """After the safe state in the middle of a run: nothing is energised, and no scan before counts any more."""
+        self.stand_in, self.follow, self.last, self.tap_offsets_V = None, {}, None, ()
+        self._set_V, self._load_A, self._mains = None, 0.0, 0
+        self.guard.forget(connected=self.bench.signals.power is None)
+        if self.slow is not None:
+            self.slow.forget()
+        self.journal.append("set.mains", self.now_s, 0.0)
+        self.event("mains", on=False)
+        if self.bench.signals.power is not None:
+            self.event("contact", name="b_plus", closed=False)
+        self._slow_s, self._next_s, self._asked = 0.0, self.now_s, None
+        self.look_closely()
 
     def _note(self, deed: Deed) -> None:
         bench, time_s = self.bench, self.now_s
@@ -137,6 +156,8 @@ class Loop:
             self.event("contact", name="b_plus", closed=self.guard.connected)
         elif deed.speaker is bench.mains and deed.what in ("on", "off"):
             self._mains = int(deed.what == "on")
+            if self.slow is not None:
+                self.slow.mains_on = bool(self._mains)
             self.journal.append("set.mains", time_s, self._mains)
             self.event("mains", on=bool(self._mains))
 
@@ -152,7 +173,9 @@ class Loop:
         if self.stop.why is not None:
             raise Interrupted(self.stop.why)
         period_s = self._period_s(self.now_s)
+        begun_s = self.now_s
         scan = self._scanner.scan(wait_s=period_s)
+        self._held_s += self.now_s - begun_s
         asked = wall_seconds()
         self._write(scan, period_s)
         written = wall_seconds()
@@ -160,6 +183,7 @@ class Loop:
         self.shares.exchange_s += asked - waited
         self.shares.record_s += written - asked
         self.shares.scans += 1
+        self.guard.held_s, self._held_s = self._held_s, 0.0
         self.guard.check(scan, period_s, self._set_V)
         self._look_around(scan)
         self._follow(scan)
@@ -209,13 +233,18 @@ class Loop:
         self._slow_s = 0.0
 
     def _look_around(self, scan: Scan) -> None:
-        """The slow group, when it is due."""
-        if self.slow is None or not self.slow.any or scan.time_s < self._slow_s:
+        """The slow group: asked when it is due, read at the first scan that finds it answered, never waited for."""
+        if self.slow is None:
             return
-        begun = wall_seconds()
-        for channel, time_s, value in self.slow.ask(wait_s=SLOW_PATIENCE_s):
-            self.journal.append(channel, time_s, value, SampleFlag.GOOD if value == value else SampleFlag.OVERLOAD)
-        self._slow_s = scan.time_s + (CLOSE_s if self.closely else SLOW_PERIOD_s)
+        begun, begun_s = wall_seconds(), self.now_s
+        if self._asked is None and scan.time_s >= self._slow_s:
+            self._asked, self._asked_s = self.slow.begin(), begun_s
+            self._slow_s = scan.time_s + (CLOSE_s if self.closely else SLOW_PERIOD_s)
+            self._held_s += self.now_s - begun_s
+        if self._asked is not None and (self._asked.ready or self.now_s - self._asked_s >= SLOW_PATIENCE_s):
+            replies, self._asked = self._asked.replies(), None
+            for channel, time_s, value in self.slow.read(replies):
+                self.journal.append(channel, time_s, value, SampleFlag.GOOD if value == value else SampleFlag.OVERLOAD)
         self.shares.exchange_s += wall_seconds() - begun
 
     def _follow(self, scan: Scan) -> None:
@@ -249,8 +278,9 @@ class Loop:
         ]
         if not moved:
             return
-        begun = wall_seconds()
+        begun, begun_s = wall_seconds(), self.now_s
         replies = self.bench.exchange([deed.job for deed in moved], FAST_s)
+        self._held_s += self.now_s - begun_s
         self.shares.exchange_s += wall_seconds() - begun
         for deed, reply in zip(moved, replies, strict=True):
             if not isinstance(reply.fault, LinkFault):
@@ -258,9 +288,10 @@ class Loop:
                 self._note(deed)
 
     def _move_node(self, node_V: float) -> None:
-        begun = wall_seconds()
+        begun, begun_s = wall_seconds(), self.now_s
         deed = Deed(self.bench.supply, "voltage", node_V)
         reply = self.bench.exchange([deed.job], FAST_s)[0]
+        self._held_s += self.now_s - begun_s
         self.shares.exchange_s += wall_seconds() - begun
         if isinstance(reply.fault, LinkFault):
             return  # late: the next scan of the supply shows it, and the guard counts

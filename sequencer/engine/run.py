@@ -12,7 +12,7 @@ from drivers.clock import wall_seconds
 from drivers.open_bench import OpenBench
 from drivers.safe import SafeState, to_safe_state
 from drivers.trouble import BenchFault
-from sequencer.engine import fixture, methods, startup, sweeps, tap_watch, walks
+from sequencer.engine import fixture, methods, recovery, startup, sweeps, tap_watch, walks
 from sequencer.engine.channels import CHANNELS
 from sequencer.engine.guard import Bounds, Guard, Trip
 from sequencer.engine.inputs import Inputs
@@ -150,22 +150,49 @@ def _steps(inputs: Inputs, loop: Loop, options: Options, watching: Watching) -> 
     curve = None if inputs.curve is None else inputs.curve.model
     site = Site(loop, inputs.pack.model, inputs.specification.model, curve, options.forced_delay)
     kept = _kept(inputs.procedure.model.steps, options.only)
-    for number, step in enumerate(inputs.procedure.model.steps, 1):
-        if number not in kept:
-            loop.event("step-left-out", step=number, does=step.kind)
+    steps = inputs.procedure.model.steps
+    index, broken = 0, set[int]()
+    while index < len(steps):
+        if index + 1 not in kept:
+            loop.event("step-left-out", step=index + 1, does=steps[index].kind)
+            index += 1
             continue
-        why = passed_over(step, site.specification)
+        why = passed_over(steps[index], site.specification)
         if why is not None:
-            loop.event("step-passed-over", step=number, does=step.kind, why=why)
+            loop.event("step-passed-over", step=index + 1, does=steps[index].kind, why=why)
+            index += 1
             continue
-        words = _words(step)
-        watching.says(words)
-        loop.event("step-start", step=number, does=step.kind, words=words)
-        outcome = _do(step, site)
-        loop.event("step-end", step=number, outcome=outcome)
+        try:
+            outcome = _step(steps[index], index + 1, site, watching)
+        except (Trip, BenchFault) as fault:
+            if recovery.lost_link(fault) is None or index in broken:  # lost twice in one step: no bench to be trusted
+                raise
+            broken.add(index)
+            _recovered(steps, index, site, fault, watching)
+            index = recovery.again_from(steps, index)
+            continue
         if outcome == "does not charge":
             return "the charger does not charge a nominal pack; nothing more can be shown of it"
+        index += 1
     return "every step was carried out"
+
+
+def _step(step: Step, number: int, site: Site, watching: Watching) -> str:
+    words = _words(step)
+    watching.says(words)
+    site.loop.event("step-start", step=number, does=step.kind, words=words)
+    outcome = _do(step, site)
+    site.loop.event("step-end", step=number, outcome=outcome)
+    return outcome
+
+
+def _recovered(steps: tuple[Step, ...], index: int, site: Site, fault: Trip | BenchFault, watching: Watching) -> None:
+    """Energy off, the link anew, and a control where the charger has charged before; or raise what ends the run."""
+    broken_s, does = site.loop.now_s, steps[index].kind
+    name = recovery.recover(site, fault, watching.says, watching.alarm)
+    site.loop.event("step-broken", step=index + 1, does=does, at_s=round(broken_s, 3), instrument=name)
+    if does != "remove":
+        recovery.control_again(site)
 
 
 def _kept(steps: tuple[Step, ...], only: tuple[str, ...]) -> set[int]:

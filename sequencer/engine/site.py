@@ -46,6 +46,10 @@ class Site:
     def bench(self) -> OpenBench:
         return self.loop.bench
 
+    def forget_fixture(self) -> None:
+        """What lies between charger and node is measured anew at the next insertion, as at the first."""
+        self.settling_s, self.fixture_ohm, self.zero_V = None, None, 0.0
+
     def nominal(self, cell_V: float, temperature_C: float = NOMINAL_C) -> Situation:
         """A pack that must be charged, as far as this bench plays it."""
         signals = self.bench.signals

@@ -1,17 +1,20 @@
-"""The slow group: what the scanner, the tap supplies and the thermometer say, once in a while beside the fast group."""
+"""The slow group: what scanner, tap supplies, mains switch and thermometer say, once in a while beside the fast group.
+
+Nobody waits for it: the guard goes on with the fast group while a scanner is at its channels.
+"""
 
 from __future__ import annotations
 
 import math
 from dataclasses import dataclass, field
 
-from drivers.exchange import Job, Reply
+from drivers.exchange import Job, Pending, Reply
 from drivers.open_bench import OpenBench
 from drivers.signal_roles import Lists
 from drivers.text.si import si
 from drivers.trouble import BenchFault
 from sequencer.engine.channels import Channel
-from sequencer.engine.guard import LOST_READINGS, Trip
+from sequencer.engine.guard import LOST_READINGS, LinkLost, Trip
 
 PERIOD_s = 2.0
 ASTRAY_V = 0.05  # of a cell against what its supply was set to
@@ -36,37 +39,71 @@ class SlowGroup:
     bench: OpenBench
     taps: int
     set_V: dict[int, float] = field(default_factory=dict)  # what each cell's supply was last told, by cell from 1
+    mains_on: bool = False  # as they were last switched
     _astray: dict[str, int] = field(default_factory=dict)
     _lost: dict[str, int] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         self._questions = [*self._senses(), *self._tap_volts()]
+        self._asked_on = False
 
-    @property
-    def any(self) -> bool:
-        return bool(self._questions) or self.bench.signals.thermometer is not None
-
-    def ask(self, wait_s: float) -> list[tuple[str, float, float]]:
-        """(channel, run time, value) of everything that answered. Raises Trip for a link lost, a tap too high."""
+    def begin(self) -> Pending:
+        """Ask everything, without waiting."""
         thermometer = self.bench.signals.thermometer
         jobs = [question.job for question in self._questions]
+        jobs.append(self.bench.mains.reading("state"))
         jobs += [] if thermometer is None else [thermometer.reading("celsius")]
-        replies = self.bench.exchange(jobs, wait_s)
+        self._asked_on = self.mains_on
+        return self.bench.exchange.begin(jobs)
+
+    def read(self, replies: list[Reply]) -> list[tuple[str, float, float]]:
+        """(channel, run time, value) of everything that answered.
+
+        Raises Trip for a link lost, a tap too high, mains that are off though they were switched on.
+        """
+        thermometer = self.bench.signals.thermometer
         found: list[tuple[str, float, float]] = []
         for question, reply in zip(self._questions, replies, strict=False):
             found += self._read(question, reply)
+        found += self._mains(replies[len(self._questions)])
         if thermometer is not None and replies[-1].fault is None:
             found.append(("ambient", replies[-1].time_s, thermometer.read(replies[-1])))
         return found
+
+    def _mains(self, reply: Reply) -> list[tuple[str, float, float]]:
+        """What the mains switch reads back, which need not be what it was told: an emergency stop, a coil that fell."""
+        try:
+            on = self.bench.mains.read(reply)
+        except BenchFault as fault:
+            self._count_lost(fault)
+            return []
+        self._lost[self.bench.mains.name] = 0
+        if self._asked_on and self.mains_on and not on:
+            why = (
+                f"{self.bench.mains.name} reads open though it was closed: an emergency stop, or it fell open by itself"
+            )
+            raise Trip("bench", "charger's mains", math.nan, "", math.nan, why)
+        return [("mains.state", reply.time_s, float(on))]
+
+    def _count_lost(self, fault: BenchFault) -> None:
+        """One missing answer is forgiven; raises LinkLost after so many in a row."""
+        count = self._lost.get(fault.instrument, 0) + 1
+        self._lost[fault.instrument] = count
+        if count >= LOST_READINGS:
+            raise LinkLost(fault.instrument, fault) from fault
+
+    def forget(self) -> None:
+        """After the safe state: no supply plays a cell, and nothing is missing yet."""
+        self.set_V.clear()
+        self.mains_on = False
+        self._astray.clear()
+        self._lost.clear()
 
     def _read(self, question: _Question, reply: Reply) -> list[tuple[str, float, float]]:
         try:
             values = question.speaker.answers(reply, question.what, question.channels)
         except BenchFault as fault:
-            count = self._lost.get(fault.instrument, 0) + 1
-            self._lost[fault.instrument] = count
-            if count >= LOST_READINGS:
-                raise Trip("bench", fault.instrument, float("nan"), "", float("nan"), f"lost: {fault}") from fault
+            self._count_lost(fault)
             return []
         self._lost[question.speaker.name] = 0
         named = [

@@ -266,3 +266,51 @@ def test_closing_leaves_one_that_hangs_behind_and_it_lets_go_of_its_link_by_itse
     hung.never.set()
     next(thread for thread in threading.enumerate() if thread.name == "link-hung").join(5.0)
     assert not hung.opened
+
+
+# -- begun and read later ---------------------------------------------------------------------------------------
+
+
+def test_begin_waits_for_nobody_and_holds_up_no_other_question(workers: MakeWorkers) -> None:
+    slow, quick = Fake("scanner", delay_s=0.4), Fake("meter")
+    exchange = workers(slow, quick)
+    begun = wall_seconds()
+    pending = exchange.begin([question("scanner")])
+    assert not pending.ready
+    for _ in range(5):
+        assert exchange([question("meter")], 0.2)[0].fields == ("1",)
+    assert wall_seconds() - begun < 0.35
+    while not pending.ready:
+        slow.never.wait(0.01)
+    assert [reply.fields for reply in pending.replies()] == [("1",)]
+
+
+def test_what_was_begun_and_has_not_come_is_given_up(workers: MakeWorkers) -> None:
+    hung, quick = Fake("scanner", delay_s=60.0), Fake("cells")
+    exchange = workers(hung, quick)
+    pending = exchange.begin([question("scanner"), question("cells")])
+    while not quick.heard:
+        hung.never.wait(0.01)
+    hung.never.wait(0.05)
+    late, came = pending.replies()
+    assert isinstance(late.fault, LinkFault)
+    assert "no answer in time" in late.fault.what
+    assert came.fields == ("1",)
+    again = exchange.begin([question("scanner")]).replies()[0]
+    assert again.fault is not None
+    assert "still owes an answer" in again.fault.what
+
+
+def test_in_turn_what_is_begun_is_done() -> None:
+    fake = Fake("scanner")
+    pending = Inline({"scanner": fake}, WallClock()).begin([question("scanner")])
+    assert pending.ready
+    assert pending.replies()[0].fields == ("1",)
+
+
+def test_a_closed_bench_answers_what_is_begun(workers: MakeWorkers) -> None:
+    exchange = workers(Fake("scanner"))
+    exchange.close()
+    fault = exchange.begin([question("scanner")]).replies()[0].fault
+    assert fault is not None
+    assert "the bench was closed" in fault.what

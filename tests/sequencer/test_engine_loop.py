@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
 
+from drivers.exchange import Reply
+from drivers.trouble import LinkFault
 from drivers.virtual.world import World
 from sequencer.engine.channels import CHANNELS
 from sequencer.engine.evidence import Evidence, open_evidence
@@ -88,3 +91,49 @@ def test_virtual_time_is_all_that_passes(rehearse: Callable[..., Any], monkeypat
     monkeypatch.setattr(World, "advance", lambda world, dt_s: steps.append(dt_s) or advance(world, dt_s))
     done = rehearse(changes={"start": "4.00 V", "after": "10 s"})
     assert sum(steps) == pytest.approx(done.ended.performance["run_s"], abs=0.01)
+
+
+@dataclass
+class Later:
+    """What was begun, ready only after a while; what is not ready has not come."""
+
+    inner: Any
+    clock: Any
+    ready_s: float
+
+    @property
+    def ready(self) -> bool:
+        return bool(self.clock.now() >= self.ready_s)
+
+    def replies(self) -> list[Reply]:
+        came: list[Reply] = self.inner.replies()
+        late = [Reply(one.instrument, (), one.time_s, LinkFault(one.instrument, "no answer in time")) for one in came]
+        return came if self.ready else late
+
+
+def answering_after(delay_s: float) -> Callable[[Any], None]:
+    """Every look at the slow group takes so long, as a scanner's channels do in wall time."""
+
+    def opened(bench: Any) -> None:
+        begin = bench.exchange.begin
+        bench.exchange.begin = lambda jobs: Later(begin(jobs), bench.clock, bench.clock.now() + delay_s)
+
+    return opened
+
+
+def test_a_slow_scanner_holds_up_no_scan(rehearse_full: Callable[..., Any]) -> None:
+    done = rehearse_full("charge-profile", opened=answering_after(0.8), changes={"start": "4.00 V", "after": "10 s"})
+    assert done.judged.exit_status == 0
+    evidence = open_evidence(done.record)
+    fast = evidence.trace("loop.period")
+    spacing_s, period_s = np.diff(fast.time_s), fast.value[1:]
+    assert float(np.max(spacing_s[period_s < 0.2])) == pytest.approx(0.1)
+    assert evidence.trace("tap1.voltage").value.size > 10
+    assert evidence.trace("mains.state").value.size > 10
+
+
+def test_a_scanner_that_never_comes_is_a_lost_link(rehearse_full: Callable[..., Any]) -> None:
+    done = rehearse_full("charge-profile", opened=answering_after(60.0))
+    assert "lost" in done.ended.why
+    assert done.failing == set()
+    assert done.ended.performance["run_s"] < 60.0
