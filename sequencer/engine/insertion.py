@@ -169,6 +169,15 @@ def watch(site: Site) -> Watched:
     return Watched(start_s, loop.now_s, seen, began, watch_s)
 
 
+def prove_shunt(site: Site) -> None:
+    """Before anyone calls a charger dead: raise InstrumentFault where a current flows that the shunt does not show."""
+    last = site.loop.last
+    unseen_A = None if last is None else site.loop.guard.unseen_A(last)
+    if last is not None and unseen_A is not None:
+        told = f"reads {si(last.current_A.value, 'A')} where load less supply is {si(unseen_A, 'A')}"
+        raise InstrumentFault(site.bench.shunt_meter.name, f"{told}: a wrong shunt, or a lead of its meter is off?")
+
+
 def take_out(site: Site) -> None:
     """Reverse: B+ first, then the signals; the dwell in which the charger forgets; every contact proven open.
 

@@ -137,7 +137,7 @@ class Loop:
         self.event("mains", on=False)
         if self.bench.signals.power is not None:
             self.event("contact", name="b_plus", closed=False)
-        self._slow_s, self._next_s, self._asked = 0.0, self.now_s, None
+        self._slow_s, self._next_s, self._asked, self.closely = 0.0, self.now_s, None, False
         self.look_closely()
 
     def _note(self, deed: Deed) -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from dataclasses import replace
 from itertools import pairwise
 
@@ -15,12 +16,14 @@ from sequencer.analysis.estimates import Estimate, mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
 from sequencer.engine.agreement import currents_differ
+from sequencer.engine.endings import mains_doubt, mains_known, mains_witness, resumed_s
 from sequencer.engine.evidence import Evidence, Window
 from sequencer.engine.found import Found
 from sequencer.engine.pace import FAST_s
 from sequencer.engine.stability import turning_points
 
 FEWEST = 5
+READ_BEFORE = re.compile(r"charge\.(stage\d+\.current|voltage)")  # whatever ended the charge, these were read before it
 AFTER_END_s = 5.0
 LAG_SHARE = 1.0 / 3.0
 ZERO_s = 2.0  # read for so long before the mains are on, and from so long after they are off
@@ -54,6 +57,7 @@ def measure_charges(evidence: Evidence) -> Found:
 
 
 def _charges_in(evidence: Evidence, start_s: float, end_s: float) -> Found:
+    """What one insertion shows; that nothing flows takes both ways to measure the current."""
     current = evidence.trace("charger.current").within(start_s, end_s)
     if current.value.size < FEWEST:
         return Found(trouble=f"only {current.value.size} readings")
@@ -62,6 +66,12 @@ def _charges_in(evidence: Evidence, start_s: float, end_s: float) -> Found:
     mean_A = float(np.mean(current.value))
     seen = "charges" if mean_A > 0.5 * lowest_A else "does not charge"
     words = f"{si(mean_A, 'A')} over {end_s - start_s:.0f} s"
+    if seen != "charges":
+        highest_V = min(evidence.bench.bench.limits.node, evidence.pack.cells * evidence.pack.cell_bound_V)
+        differ = currents_differ(evidence, Accuracy(evidence.bench, highest_V), start_s, end_s)
+        if differ is not None:
+            return Found(trouble=f"{words}; {differ}")
+        words += f"; {mains_known(evidence, start_s, end_s)}"
     return Found(seen=seen, n=current.value.size, start_s=start_s, end_s=end_s, words=words)
 
 
@@ -90,10 +100,22 @@ class ChargeStep:
         u_A = Budget(0.0, "A", tuple(self._accuracy.current(float(np.max(current_A))))).u
         u_V = Budget(0.0, "V", tuple(self._accuracy.volts("node.charger_voltage", float(np.max(voltage_V))))).u
         found = classify(time_s, voltage_V, current_A, current_u_A=u_A, voltage_u_V=u_V)
-        return found, measure_charge(time_s, voltage_V, current_A, found, start_s=mains_s, end_s=window.end_s)
+        # What flows again after the end is no part of the charge; `current_after_end` takes it in.
+        again_s = resumed_s(window)
+        end_s = window.end_s if again_s is None else again_s - LAST_SCAN_s
+        return found, measure_charge(time_s, voltage_V, current_A, found, start_s=mains_s, end_s=end_s)
 
     def findings(self) -> dict[str, Found]:
         """Every finding that a full charge gives, by limit name."""
+        found, doubt = self._findings(), mains_doubt(self._evidence, self._window, self.reading.ended_s)
+        if doubt is None:
+            return found
+        stands = {name for name, one in found.items() if READ_BEFORE.fullmatch(name) and one.budget is not None}
+        return {
+            name: one if name in stands else replace(one, trouble=one.trouble or doubt) for name, one in found.items()
+        }
+
+    def _findings(self) -> dict[str, Found]:
         found = {"charge.algorithm": self._algorithm()}
         for number in range(1, len(self._evidence.specification.charge.stages) + 1):
             plateau = self.reading.plateaus[number - 1] if number <= len(self.reading.plateaus) else None
@@ -150,6 +172,11 @@ class ChargeStep:
             return Found(trouble=self._swinging)
         if reading.ended:
             words = f"the current fell from {self._shown_cutoff()} to nothing at {reading.ended_s:.1f} s"
+            if mains_witness(self._evidence, self._window):
+                words += "; it charged again when its mains were cycled, so it had them"
+            again_s = resumed_s(self._window)
+            if again_s is not None:
+                words += f"; it began to charge again at {again_s:.1f} s, by itself"
             return Found(seen="ends", start_s=reading.ended_s, end_s=self._window.end_s, words=words)
         trouble = self._zero_moved or self._disagreement(self._window.end_s - LATELY_s, self._window.end_s)
         if trouble is not None:

@@ -77,6 +77,8 @@ def control(site: Site, cell_V: float) -> bool:
     watched = insertion.watch(site)
     measure_fixture_once(site, watched)
     good = is_good(site, watched)
+    if not good:
+        insertion.prove_shunt(site)
     insertion.take_out(site)
     site.vouched = good
     site.loop.event("control", start_s=round(watched.start_s, 3), end_s=round(watched.end_s, 3), good=good)
@@ -99,9 +101,9 @@ def give_up(site: Site, finding: str, why: str) -> str:
     return why
 
 
-def cycle_mains(site: Site) -> None:
+def cycle_mains(site: Site, why: str = "a control failed: the mains are cycled once") -> None:
     """Mains off and on again: what a latched charger may need."""
-    site.loop.event("note", text="a control failed: the mains are cycled once")
+    site.loop.event("note", text=why)
     site.loop.set(Deed(site.bench.mains, "off"))
     site.loop.observe(MAINS_OFF_s)
     site.loop.set(Deed(site.bench.mains, "on"))
