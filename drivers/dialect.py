@@ -160,24 +160,33 @@ def _bits(value: Any) -> Any:
     return {"mask": value} if isinstance(value, (str, int)) else value
 
 
-class VoltageSpan(BaseModel):
-    """Accuracy in one voltage range: ±(reading + of_range), half widths of a rectangular distribution."""
+class _MeasuredSpan(BaseModel):
+    """Accuracy in one range: ±(reading + of_range), half widths of a rectangular distribution."""
 
     model_config = ConfigDict(extra="forbid", frozen=True)
-    range: PositiveVolts
     reading: Ratio
     of_range: Ratio
+
+
+class VoltageSpan(_MeasuredSpan):
+    """In one voltage range."""
+
+    range: PositiveVolts
     resolution: PositiveVolts | None = None
 
 
-class CurrentSpan(BaseModel):
-    """Accuracy in one current range: ±(reading + of_range), half widths of a rectangular distribution."""
+class CurrentSpan(_MeasuredSpan):
+    """In one current range."""
 
-    model_config = ConfigDict(extra="forbid", frozen=True)
     range: PositiveAmperes
-    reading: Ratio
-    of_range: Ratio
     resolution: PositiveAmperes | None = None
+
+
+class OhmmeterSpan(_MeasuredSpan):
+    """In one range of a resistance that is measured."""
+
+    range: PositiveOhms
+    resolution: PositiveOhms | None = None
 
 
 class OhmSpan(BaseModel):
@@ -187,16 +196,6 @@ class OhmSpan(BaseModel):
     range: PositiveOhms
     set: Ratio
     residual: PositiveOhms
-
-
-class OhmmeterSpan(BaseModel):
-    """Accuracy in one range of a resistance that is measured: ±(reading + of_range), half widths, rectangular."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True)
-    range: PositiveOhms
-    reading: Ratio
-    of_range: Ratio
-    resolution: PositiveOhms | None = None
 
 
 class Accuracy(BaseModel):

@@ -74,7 +74,7 @@ def open_bench(file: BenchFile, access: Access) -> OpenBench:
     if bench.lost:
         bench.close()
         first, *others = bench.lost.values()
-        raise type(first)(first.instrument, "; also ".join([first.what, *map(str, others)]))
+        raise type(first)(first.instrument, "\n  ".join([first.what, *map(str, others)]))
     return bench
 
 

@@ -271,7 +271,10 @@ _TO_DRAIN: tuple[tuple[str, float | None], ...] = (("constant_current", None), (
 
 def _seen(look: Look) -> str:
     named = zip(("shunt", "ballast", "load less supply"), look.witnesses_A, strict=True)
-    said = ((name, "says nothing" if math.isnan(current_A) else f"{current_A:.3f} A") for name, current_A in named)
+    said = (
+        (name, "says nothing" if math.isnan(current_A) else f"{round(current_A, 3) + 0.0:.3f} A")
+        for name, current_A in named
+    )
     return ", ".join(f"{name} {words}" for name, words in said)
 
 

@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from sequencer.model.specification import Specification
 
 Json = Mapping[str, Any]
+GIVEN_UP = "given up while it charged"
 _RELEASE = {"resumes": "goes on by itself", "stays off": "stays off"}
 
 
@@ -21,6 +22,7 @@ class Row:
     """One cell, number from 1. charging_V, stopped_V : voltages of the cell at the steps of the walk, V.
 
     words : how fast it stopped, and what followed.   failed : whether its trip voltage is a fail.
+    given_up : it still charged when the walk was left, so that nothing is known of where it stops.
     """
 
     cell: int
@@ -29,6 +31,7 @@ class Row:
     found: Bracket | None
     words: tuple[str, ...]
     failed: bool
+    given_up: bool = False
 
 
 @dataclass(frozen=True)
@@ -74,13 +77,15 @@ def _row(cell: int, legs: Sequence[Json], judged: Mapping[str, Json]) -> Row:
     stopped = next((leg for leg in upward if leg.get("stop_s") is not None), None)
     name = f"tap_trip.cell{cell}.voltage"
     voltage = [judged[name]] if name in judged else []
+    left = stopped is None and any(one["verdict"] in ("inconclusive", "not run") for one in voltage)
     return Row(
         cell=cell,
         charging_V=tuple(level for level in charging if level is not None),
         stopped_V=None if stopped is None else number(stopped.get("cell_V")),
         found=brackets(voltage).get(name),
-        words=_words(cell, judged) if stopped is not None else ("did not stop",),
+        words=_words(cell, judged) if stopped is not None else (GIVEN_UP if left else "did not stop",),
         failed=any(one["verdict"] in ("fail", "conditional fail") for one in voltage),
+        given_up=left,
     )
 
 
@@ -92,12 +97,14 @@ def _words(cell: int, judged: Mapping[str, Json]) -> tuple[str, ...]:
 
 
 def _caption(rows: Sequence[Row], declared: tuple[float | None, float | None]) -> str:
-    went_on = [str(row.cell) for row in rows if row.stopped_V is None]
+    went_on = [str(row.cell) for row in rows if row.stopped_V is None and not row.given_up]
+    left = [str(row.cell) for row in rows if row.given_up]
     parts = [
         "One cell at a time is raised in steps, the pack's voltage unchanged."
         " Dots: steps at which the charge went on; cross: the step at which it stopped;"
         " bar: the trip lies between its ends.",
         "Shaded: the voltages at which it is declared to stop." if declared != (None, None) else "",
         f"Where the charge did not stop: cell{'s' * (len(went_on) > 1)} {', '.join(went_on)}." if went_on else "",
+        f"Left before anything was known: cell{'s' * (len(left) > 1)} {', '.join(left)}." if left else "",
     ]
     return " ".join(part for part in parts if part)

@@ -9,7 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from reports.canvas import BAND, BAND_TOO, CURRENT, INK, MUTED, PAPER, TRIP, VOLTAGE, frame, save_figure, settings
-from reports.profile import Level, Profile, Stage, charge_profile
+from reports.profile import Level, Profile, Stage, Trace, charge_profile
 from reports.wording import sentence
 
 if TYPE_CHECKING:
@@ -71,11 +71,11 @@ def draw(profile: Profile, *, title: str = "", width_in: float = 8.6, height_in:
         for limit_V in profile.limits_V:
             upper.axhline(limit_V, color=MUTED, linewidth=0.9, linestyle=":", zorder=2)
         span = (profile.window[1] - profile.window[0]) / factor_s
-        _levels(upper, profile.voltage_levels, factor_s, span, VOLTAGE, below=True)
-        _levels(lower, profile.current_levels, factor_s, span, CURRENT, below=False)
+        lower.set_xlim(profile.window[0] / factor_s, profile.window[1] / factor_s)
+        _levels(upper, profile.voltage_levels, profile.voltage_V, factor_s, span, VOLTAGE, below=True)
+        _levels(lower, profile.current_levels, profile.current_A, factor_s, span, CURRENT, below=False)
         _trips(upper, lower, profile, factor_s)
         lower.set_xlabel(f"time since the start / {unit}", color=INK)
-        lower.set_xlim(profile.window[0] / factor_s, profile.window[1] / factor_s)
         return figure
 
 
@@ -132,16 +132,48 @@ def _names(axes: Axes, profile: Profile, factor_s: float, width_pt: float) -> No
         )
 
 
-def _levels(axes: Axes, levels: tuple[Level, ...], factor_s: float, span: float, colour: str, *, below: bool) -> None:
+def _levels(
+    axes: Axes, levels: tuple[Level, ...], trace: Trace, factor_s: float, span: float, colour: str, *, below: bool
+) -> None:
     for number, level in enumerate(levels):
         start, stop = level.start_s / factor_s, level.end_s / factor_s
         # A little to the right, for at its start the trace itself climbs through the level; each further right than
         # the one before, for levels may lie close together.
-        place = start + (0.05 + 0.22 * number) * span
+        first = start + (0.05 + 0.22 * number) * span
+        place = _free_place(axes, level, trace, factor_s, (first, start + 0.75 * span), below=below)
         axes.plot([start, stop], [level.value] * 2, color=colour, linewidth=0.8, linestyle=(0, (5, 3)), zorder=2)
         shift, anchor = ((0, -4), "top") if below else ((0, 3), "bottom")
-        spot = (place, level.value)
-        axes.annotate(level.words, spot, shift, textcoords="offset points", va=anchor, fontsize=8.5, color=colour)
+        axes.annotate(
+            level.words,
+            (place, level.value),
+            shift,
+            textcoords="offset points",
+            va=anchor,
+            fontsize=8.5,
+            color=colour,
+            bbox={"facecolor": PAPER, "edgecolor": "none", "pad": 0.6, "alpha": 0.8},
+        )
+
+
+def _free_place(
+    axes: Axes, level: Level, trace: Trace, factor_s: float, between: tuple[float, float], *, below: bool
+) -> float:
+    """Where the words beside a level begin so that the trace does not run through them; the first where none is."""
+    to_pt = 72 / axes.figure.dpi
+    wide_pt, high_pt = axes.bbox.width * to_pt, axes.bbox.height * to_pt
+    low, high = axes.get_ylim()
+    first_x, last_x = axes.get_xlim()
+    width = 4.9 * len(level.words) / wide_pt * (last_x - first_x)  # 4.9 pt: mean advance of the 8.5 pt face
+    one_pt = (high - low) / high_pt
+    bottom, top = (level.value + one_pt * edge for edge in ((-16, -2) if below else (1, 15)))
+    inside = (trace.level > bottom) & (trace.level < top)
+    times = trace.time_s[inside] / factor_s
+    for place in np.linspace(between[0], max(between), 40):
+        if place + width > last_x:
+            break
+        if not np.any((times > place - 0.1 * width) & (times < place + 1.1 * width)):
+            return float(place)
+    return between[0]
 
 
 def _trips(upper: Axes, lower: Axes, profile: Profile, factor_s: float) -> None:

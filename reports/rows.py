@@ -171,10 +171,18 @@ def stage_rows(classification: Json) -> tuple[StageRow, ...]:
             duration=_duration(stage.get("start_s"), stage.get("end_s")),
             current=_estimate(stage.get("current_A"), "A"),
             voltage=_stage_voltage(stage),
-            charge=si(float(stage["charge_Ah"]), "Ah", 4) if stage.get("charge_Ah") is not None else wording.NOTHING,
+            charge=_stage_charge(stage),
         )
         for number, stage in enumerate(classification.get("stages") or (), 1)
     )
+
+
+def _stage_charge(stage: Json) -> str:
+    """With its expanded uncertainty; a record judged by an older program has none."""
+    charge, u = stage.get("charge_Ah"), stage.get("charge_u_Ah")
+    if charge is None:
+        return wording.NOTHING
+    return si(float(charge), "Ah", 4) if u is None else _estimate({"value": charge, "u": u}, "Ah")
 
 
 def _stage_voltage(stage: Json) -> str:

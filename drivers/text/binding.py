@@ -89,7 +89,24 @@ def _kind_is_right(node: Node, kind: str, faults: Faults) -> bool:
 
 def _report(model: type[Written], root: Node, detail: Any, faults: Faults) -> None:
     path = tuple(part for part in detail["loc"] if isinstance(part, (str, int)))
-    faults.add(find(root, path)[1], _words(model, path, detail))
+    split = _split_by_comma(root, path) if detail["type"] == "extra_forbidden" else None
+    faults.add(find(root, path)[1], split or _words(model, path, detail))
+
+
+def _split_by_comma(root: Node, path: tuple[str | int, ...]) -> str | None:
+    """What was meant by a key that begins with a digit after a value that ends with one: `{current: 3,0 A}`."""
+    parent, name = find(root, path[:-1])[0], str(path[-1])
+    if not isinstance(parent, Mapped) or name not in parent.entries or not name[:1].isdigit():
+        return None
+    keys = list(parent.entries)
+    before = keys[keys.index(name) - 1] if keys.index(name) else None
+    value, rest = parent.entries.get(before or ""), parent.entries[name]
+    if not isinstance(value, Scalar) or not isinstance(rest, Scalar) or rest.text is not None:
+        return None
+    if not (value.text or "")[-1:].isdigit():
+        return None
+    cut = f'{before}: a comma parts the entries of a mapping, so "{value.text},{name}" was cut in two'
+    return f"{cut}; write {value.text}.{name}"
 
 
 def _words(model: type[Written], path: tuple[str | int, ...], detail: Any) -> str:

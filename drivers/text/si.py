@@ -24,7 +24,7 @@ def si(value: float, unit: str, digits: int = 4) -> str:
     factor, prefixed = _scale(value, unit)
     scaled = value / factor
     decimals = 0 if scaled == 0 else max(0, digits - 1 - math.floor(math.log10(abs(scaled)) + 1e-12))
-    text = f"{scaled:.{decimals}f}"
+    text = f"{round(scaled, decimals) + 0.0:.{decimals}f}"  # + 0.0: nobody writes minus nothing
     return f"{text.rstrip('0').rstrip('.') if '.' in text else text} {prefixed}".strip()
 
 
@@ -38,7 +38,8 @@ def decimals_of(uncertainty: float) -> int:
 def pm(value: float, uncertainty: float, unit: str) -> str:
     """ "4.2031 V ± 1.9 mV" style: the value to the digits of its uncertainty, each with its prefix."""
     factor, prefixed = _scale(max(abs(value), uncertainty), unit)
-    text = f"{value / factor:.{decimals_of(uncertainty / factor)}f} {prefixed}".strip()
+    decimals = decimals_of(uncertainty / factor)
+    text = f"{round(value / factor, decimals) + 0.0:.{decimals}f} {prefixed}".strip()
     width, wide_unit = _scale(uncertainty, unit)
     return f"{text} ± {uncertainty / width:.{decimals_of(uncertainty / width)}f} {wide_unit}".strip()
 

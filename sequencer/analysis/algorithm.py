@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import itertools
+import math
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -13,7 +14,7 @@ from sequencer.analysis.sanitise import Log
 from sequencer.analysis.smoothing import despiked, moving_mean
 from sequencer.analysis.stages import Course, plateaus
 from sequencer.analysis.trace import Trace
-from sequencer.analysis.wording import quantity
+from sequencer.analysis.wording import quantity, resolution_of
 
 BEST = 0.98  # a passive log never makes one surer
 FULL_FALL = 0.5  # of the current: from here on a constant-voltage phase is beyond doubt
@@ -85,7 +86,7 @@ def _named(trace: Trace, course: Course) -> tuple[str, str]:
     levels = plateaus(trace, course.phases)
     held = _last_held(course)
     power = [phase for phase in course.phases if phase.kind == "constant-power"]
-    steps = ", ".join(quantity(phase.level_A, "A") for phase in levels)
+    steps = ", ".join(_level(trace, phase) for phase in levels)
     if len(levels) >= 2:
         if held is not None:
             return "stepped-cc-cv", f"plateaus of {steps}, then {_held_words(trace, held)}"
@@ -110,8 +111,14 @@ def _named_without(
                                 * trace.current_A[power[0].start : power[0].stop]))  # fmt: skip
         return "constant-power", f"the current falls as the voltage rises, with {quantity(watts, 'W')} throughout"
     if levels:
-        return "cc-only", f"a plateau of {quantity(levels[0].level_A, 'A')} and no held voltage after it"
+        return "cc-only", f"a plateau of {_level(trace, levels[0])} and no held voltage after it"
     return "inconclusive", "current flows, but neither a plateau nor a held voltage nor a held power is seen"
+
+
+def _level(trace: Trace, phase: Phase) -> str:
+    """A plateau to the digits that its uncertainty lets stand; without any, to six."""
+    u_A = math.hypot(trace.u_A, trace.noise_A / math.sqrt(phase.stop - phase.start))
+    return quantity(phase.level_A, "A", step=resolution_of(u_A))
 
 
 def _held_words(trace: Trace, held: Phase) -> str:

@@ -147,24 +147,28 @@ def _reason(
 ) -> str:  # fmt: skip
     step = _step_of(guard_band or high - low)
     shown = f"{quantity(low, unit, step=step)} to {quantity(high, unit, step=step)}"
-    limits = _limits(limit_low, limit_high, unit, step)
+    inside, outside = _places(limit_low, limit_high, unit, step)
     margin = f" by the guard band of {quantity(guard_band, unit, step=step)} and more" if guard_band else ""
     match verdict:
         case "pass":
-            return f"the whole interval {shown} lies inside {limits}{margin}"
+            return f"the whole interval {shown} lies {inside}{margin}"
         case "fail":
-            return f"the whole interval {shown} lies outside {limits}{margin.replace('and more', 'or more')}"
-    place = "inside" if verdict == "conditional pass" else "outside"
+            return f"the whole interval {shown} lies {outside}{margin.replace('and more', 'or more')}"
+    place = inside if verdict == "conditional pass" else outside
     across = " or within a guard band of it" if guard_band else ""
-    return f"the interval {shown} lies across a limit{across}; its middle lies {place} {limits}"
+    return f"the interval {shown} lies across a limit{across}; its middle lies {place}"
 
 
-def _limits(limit_low: float | None, limit_high: float | None, unit: str, step: float) -> str:
+def _places(limit_low: float | None, limit_high: float | None, unit: str, step: float) -> tuple[str, str]:
+    """Where a value lies that keeps the limits, and one that does not."""
     if limit_low is None:
-        return f"the upper limit {quantity(limit_high or 0.0, unit, step=step)}"
+        limit = f"the upper limit {quantity(limit_high or 0.0, unit, step=step)}"
+        return f"below {limit}", f"above {limit}"
     if limit_high is None:
-        return f"the lower limit {quantity(limit_low, unit, step=step)}"
-    return f"the limits {quantity(limit_low, unit, step=step)} to {quantity(limit_high, unit, step=step)}"
+        limit = f"the lower limit {quantity(limit_low, unit, step=step)}"
+        return f"above {limit}", f"below {limit}"
+    limits = f"the limits {quantity(limit_low, unit, step=step)} to {quantity(limit_high, unit, step=step)}"
+    return f"inside {limits}", f"outside {limits}"
 
 
 def _step_of(width: float) -> float:

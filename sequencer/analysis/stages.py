@@ -40,6 +40,7 @@ class Stage:
 
     current_A: mean of a plateau, float, rest or pulse height; where the current falls, its average over time.
     voltage_V: mean of cv, float and pulse stages, else the voltage at the stage's end.
+    charge_Ah, charge_u_Ah: charge passed, and its standard uncertainty.
     """
 
     kind: Kind
@@ -48,6 +49,7 @@ class Stage:
     current_A: Quantity
     voltage_V: Quantity
     charge_Ah: float
+    charge_u_Ah: float
 
     def as_dict(self) -> dict[str, Any]:
         """As in the stages of `classify --json`."""
@@ -58,6 +60,7 @@ class Stage:
             "current_A": self.current_A.as_dict(),
             "voltage_V": self.voltage_V.as_dict(),
             "charge_Ah": self.charge_Ah,
+            "charge_u_Ah": self.charge_u_Ah,
         }
 
 
@@ -164,7 +167,25 @@ def stage_of(trace: Trace, phase: Phase, train: PulseTrain | None) -> Stage:
     voltage = held_mean(trace, phase) if steady else end_voltage(trace, phase)
     charge = trace.charge_between(phase.start, phase.stop)
     start_s, end_s = float(trace.time_s[phase.start]), float(trace.time_s[phase.stop - 1])
-    return Stage(phase.kind, start_s, end_s, _stage_current(trace, phase, train), voltage, charge)
+    return Stage(
+        phase.kind, start_s, end_s, _stage_current(trace, phase, train), voltage, charge, _charge_u_Ah(trace, phase)
+    )
+
+
+def _charge_u_Ah(trace: Trace, phase: Phase) -> float:
+    """Of the trapezoids of a stage: the instruments' error, all in one direction; noise; one spacing at either end.
+
+    JCGM 100:2008, 5.2.2: errors common to all readings add up, independent ones in quadrature. The stage begins and
+    ends somewhere between two readings: half a spacing either way, rectangular, with the current that flows there.
+    """
+    current, time_s = trace.current_A[phase.start : phase.stop], trace.time_s[phase.start : phase.stop]
+    if time_s.size < 2:
+        return 0.0
+    common_As = trace.u_A * trace.duration(phase.start, phase.stop)
+    noise_As = trace.noise_A * float(np.sqrt(np.sum(np.diff(time_s) ** 2)))
+    edges_As = [abs(float(current[at])) * float(time_s[one] - time_s[two]) / math.sqrt(12.0)
+                for at, one, two in ((0, 1, 0), (-1, -1, -2))]  # fmt: skip
+    return math.hypot(common_As, noise_As, *edges_As) / 3600.0
 
 
 def _stage_current(trace: Trace, phase: Phase, train: PulseTrain | None) -> Quantity:

@@ -52,16 +52,17 @@ def run(
     pack: Annotated[str | None, typer.Option(help="Pack; default: the one that the specification names.")] = None,
     charger: Annotated[str | None, typer.Option(help=_CHARGER)] = None,
     order: Annotated[str | None, typer.Option(help="Order: lab, customer, sample, persons.")] = None,
-    out: Annotated[Path | None, typer.Option(help="Folder for the record; new or empty.")] = None,
+    out: Annotated[str | None, typer.Option(metavar="<path>", help="Folder for the record; new or empty.")] = None,
     set_: Annotated[list[str] | None, typer.Option("--set", metavar="NAME=VALUE", help="Change a parameter.")] = None,
     only: Annotated[list[str] | None, typer.Option(metavar="STEP", help="Carry out only steps of this kind.")] = None,
     seed: Annotated[int, typer.Option(min=0, help="Seed of the virtual bench.")] = 1,
 ) -> None:
     """Carry out a procedure and judge what it showed."""
-    from sequencer.cli.running import run_command
+    from sequencer.cli.running import folder_of, run_command
     from sequencer.engine.inputs import Asked, changes_of
 
-    run_command(Asked(procedure, spec, pack, bench, changes_of(set_ or []), seed, order), charger, out, only or [])
+    asked = Asked(procedure, spec, pack, bench, changes_of(set_ or []), seed, order)
+    run_command(asked, charger, folder_of(out), only or [])
 
 
 @app.command("check")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 import os
 import sys
 import traceback
@@ -15,6 +16,7 @@ BAD_INPUT = 2
 BENCH_FAULT = 3
 OUR_FAULT = 70
 NOBODY_LISTENS = 141  # 128 + SIGPIPE, as a shell shows it
+DISK_FULL = (errno.ENOSPC, errno.EDQUOT) if hasattr(errno, "EDQUOT") else (errno.ENOSPC,)
 TRACE = "PACKMIME_TRACE"  # set in the environment: a fault of ours shows where it happened
 P = ParamSpec("P")
 
@@ -26,19 +28,36 @@ def answers(command: Callable[P, None]) -> Callable[P, None]:
     def answering(*args: P.args, **kwargs: P.kwargs) -> None:
         try:
             command(*args, **kwargs)
+            sys.stdout.flush()
         except (typer.Exit, typer.Abort):
+            _last_words()
             raise
         except BrokenPipeError:
             # Whoever read our output has gone, as `| head` does; nothing is left to be said to anybody.
-            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            _to_nowhere()
             raise typer.Exit(NOBODY_LISTENS) from None
         except KeyboardInterrupt:
             _say("stopped by Ctrl-C; nothing was switched on")
             raise typer.Exit(BENCH_FAULT) from None
         except Exception as reason:
-            raise typer.Exit(_answer(reason)) from None
+            status = _answer(reason)
+            _last_words()
+            raise typer.Exit(status) from None
 
     return answering
+
+
+def _last_words() -> None:
+    """Empty the output here: where it cannot be written, the interpreter's own end would give a status of its own."""
+    try:
+        sys.stdout.flush()
+    except OSError as reason:
+        _say(f"what stood on standard output is lost: {reason.strerror or reason}")
+        _to_nowhere()
+
+
+def _to_nowhere() -> None:
+    os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
 
 
 def _answer(reason: Exception) -> int:
@@ -58,6 +77,9 @@ def _answer(reason: Exception) -> int:
     if isinstance(reason, BenchFault):
         _say(f"bench fault: {reason}")
         return BENCH_FAULT
+    if isinstance(reason, OSError) and reason.errno in DISK_FULL:
+        _say(f"nothing more can be written: {reason.strerror}; make room and say the command again")
+        return BENCH_FAULT  # interrupted, and nobody's wrong input
     first, *more = str(reason).splitlines() or [""]
     hint = f" ({TRACE}=1 in the environment shows more)" if more else ""
     _say(f"a fault of packmime itself: {type(reason).__name__}: {first}{hint}")

@@ -7,7 +7,7 @@ from pathlib import Path
 import typer
 
 from drivers.bench_file import BenchFile, load_bench
-from drivers.open_bench import open_bench, open_what_answers
+from drivers.open_bench import Access, open_bench, open_what_answers
 from drivers.roles import LoadMode, SupplyMode
 from drivers.shipped import locate
 from drivers.text.faults import BadInput, Fault, Faults, Place
@@ -35,10 +35,17 @@ def _bench(text: str) -> BenchFile:
     return file
 
 
+def _mark(file: BenchFile, access: Access) -> None:
+    """What is seen on a virtual bench says nothing of any real one."""
+    if file.bench.virtual is not None:
+        typer.echo(f"REHEARSAL on a virtual bench: {access.charger}, seed {access.seed}")
+
+
 def show_command(bench: str, charger: str | None) -> None:
     """Identities and output states; changes nothing on the bench."""
     file = _bench(bench)
     with access_to(file, charger_for(file, charger, None), seed=1) as access:
+        _mark(file, access)
         opened = open_bench(file, access)
         try:
             for speaker in opened.speakers:
@@ -68,6 +75,7 @@ def safe_command(bench: str, charger: str | None) -> None:
 
     file = _bench(bench)
     with access_to(file, charger_for(file, charger, None), seed=1) as access, noted_signals(StopFlag()):
+        _mark(file, access)
         opened = open_what_answers(file, access)
         try:
             state = to_safe_state(opened, lambda words: typer.echo(f"\aALARM: {words}", err=True))

@@ -68,12 +68,13 @@ def check_command(
         try:
             _check_one(text, Asked(text, spec, pack, bench, changes_of(changes)), charger, faults)
         except BadInput as bad:
-            faults.found.extend(bad.faults)
+            faults.found.extend(fault for fault in bad.faults if fault not in faults.found)
     faults.raise_if_any()
 
 
 def _check_one(text: str, asked: Asked, charger: str | None, faults: Faults) -> None:
-    kind = "procedure" if is_bare(text) else _kind_of(Path(text))
+    # What does not exist is taken for a procedure, so that the other files are looked at too.
+    kind = "procedure" if is_bare(text) or not Path(text).exists() else _kind_of(Path(text))
     if kind == "procedure":
         from sequencer.cli.access import rehearsal_charger
         from sequencer.engine.inputs import gather

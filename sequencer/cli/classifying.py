@@ -10,7 +10,7 @@ import typer
 
 from drivers.text.faults import BadInput, Fault, Faults, Place
 from drivers.text.nearest import unknown
-from drivers.text.si import clock_time, pm, si
+from drivers.text.si import clock_time, pm
 
 if TYPE_CHECKING:
     import numpy as np
@@ -113,7 +113,8 @@ def _print(found: Classification) -> None:
         current, voltage = stage["current_A"], stage["voltage_V"]
         typer.echo(
             f"  {stage['kind']:<14} {span:<28} {pm(current['value'], 2 * current['u'], 'A'):<24}"
-            f" {pm(voltage['value'], 2 * voltage['u'], 'V'):<24} {si(stage['charge_Ah'], 'Ah')}"
+            f" {pm(voltage['value'], 2 * voltage['u'], 'V'):<24}"
+            f" {pm(stage['charge_Ah'], 2 * stage['charge_u_Ah'], 'Ah')}"
         )
     if shown["voltage_limit_V"]:
         typer.echo(f"  voltage limit {pm(shown['voltage_limit_V']['value'], 2 * shown['voltage_limit_V']['u'], 'V')}")

@@ -8,7 +8,7 @@ import typer
 
 from drivers.clock import utc_now
 from drivers.open_bench import open_bench
-from drivers.text.faults import Faults, Place
+from drivers.text.faults import BadInput, Fault, Faults, Place
 from drivers.text.nearest import unknown
 from sequencer.cli.access import access_to, charger_for
 from sequencer.cli.answers import BENCH_FAULT, OUR_FAULT
@@ -42,6 +42,13 @@ def run_command(asked: Asked, charger: str | None, out: Path | None, only: list[
         finally:
             opened.close()
     raise typer.Exit(_finish(ended, terminal))
+
+
+def folder_of(text: str | None) -> Path | None:
+    """The folder that --out names. Raises BadInput for an empty text, which would mean the folder one stands in."""
+    if text is not None and not text.strip():
+        raise BadInput([Fault(Place("--out"), "a folder was expected, and nothing stands there")])
+    return None if text is None else Path(text)
 
 
 def _check_only(only: list[str]) -> None:

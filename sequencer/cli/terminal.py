@@ -73,7 +73,8 @@ class Terminal:
             self._live.stop()
 
     def say(self, words: str) -> None:
-        self._print(Text(words), soft_wrap=True)
+        # A terminal would cut a word at its edge; what is piped stays one line a sentence.
+        self._print(Text(words), soft_wrap=not self._console.is_terminal)
 
     def _print(self, what: RenderableType, *, soft_wrap: bool = False) -> None:
         """A run must not end because nobody reads what it says any more."""
@@ -83,9 +84,7 @@ class Terminal:
     def opening(self, inputs: Inputs, access: Access, folder: Path) -> None:
         model, procedure = inputs.specification.model.model, inputs.procedure.model
         if inputs.bench.bench.virtual is not None:
-            self._console.print(
-                Text(f"REHEARSAL on a virtual bench: {access.charger}, seed {access.seed}", style="bold")
-            )
+            self._print(Text(f"REHEARSAL on a virtual bench: {access.charger}, seed {access.seed}", style="bold"))
         else:
             self.say("Real instruments. Stay within reach of the emergency stop; a software stop is none.")
         self.say(f"{procedure.name}: {procedure.purpose}")
@@ -120,7 +119,7 @@ class Terminal:
             return
         self._drawn_s = wall_seconds()
         rest_s = max(self._planned_s - scan.time_s, 0.0)
-        seen = f"{scan.charger_V.value:7.3f} V  {scan.current_A.value:7.3f} A at the charger"
+        seen = f"{scan.charger_V.value:7.3f} V  {round(scan.current_A.value, 3) + 0.0:7.3f} A at the charger"
         line = f"{scan.time_s:8.1f} s  {self._words}  |  {seen}  |  about {clock_time(rest_s)} to go"
         self._live.update(Text(line, no_wrap=True, overflow="ellipsis"), refresh=True)
 

@@ -92,7 +92,8 @@ class Points:
             return Found(seen="charges", n=len(points), start_s=flowing[0].start_s, end_s=flowing[0].end_s, words=words)
         missing = len(set(roles) - {point.role for point in points})
         if missing:
-            return self.not_shown(f"{missing} of {len(roles)} points were not shown")
+            points_of = f"{missing} of {len(roles)} point{'s' * (len(roles) > 1)}"
+            return self.not_shown(f"{points_of} {'was' if missing == 1 else 'were'} not shown")
         void = [point for point in points if point.void]
         if void:
             return Found(

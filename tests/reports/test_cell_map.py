@@ -55,6 +55,16 @@ def test_a_cell_that_stops_nothing_is_told(shown: CellMap) -> None:
     assert "Where the charge did not stop: cell 4." in shown.caption
 
 
+@pytest.mark.parametrize("verdict", ["inconclusive", "not run"])
+def test_a_cell_that_was_given_up_has_not_been_seen_to_go_on(verdict: str) -> None:
+    judged = [{"limit": "tap_trip.cell1.voltage", "verdict": verdict, "value": None}]
+    made = cell_map([raised("out", 4.2), raised("out", 4.21)], judged, None)
+    assert made is not None
+    assert made.rows[0].words == ("given up while it charged",)
+    assert "did not stop" not in made.caption
+    assert "Left before anything was known: cell 1." in made.caption
+
+
 def test_the_axis_holds_every_step(shown: CellMap) -> None:
     low, high = shown.span_V
     assert all(low < level < high for row in shown.rows for level in row.charging_V)
