@@ -73,8 +73,9 @@ def check_command(
 
 
 def _check_one(text: str, asked: Asked, charger: str | None, faults: Faults) -> None:
-    # What does not exist is taken for a procedure, so that the other files are looked at too.
-    kind = "procedure" if is_bare(text) or not Path(text).exists() else _kind_of(Path(text))
+    if not is_bare(text) and not Path(text).exists():
+        _check_others(asked, faults)
+    kind = "procedure" if is_bare(text) else _kind_of(Path(text))
     if kind == "procedure":
         from sequencer.cli.access import rehearsal_charger
         from sequencer.engine.inputs import gather
@@ -85,6 +86,18 @@ def _check_one(text: str, asked: Asked, charger: str | None, faults: Faults) -> 
         _print_plan(text, plan_of(inputs))
         return
     _check_alone(Path(text), kind, faults)
+
+
+def _check_others(asked: Asked, faults: Faults) -> None:
+    """The files named beside one that is not there: it may have been meant for a procedure."""
+    from sequencer.engine.inputs import gather
+
+    try:
+        gather(asked)
+    except BadInput as bad:
+        faults.found.extend(
+            fault for fault in bad.faults if fault.place.file != "PROCEDURE" and fault not in faults.found
+        )
 
 
 def _check_alone(path: Path, kind: str, faults: Faults) -> None:

@@ -53,5 +53,13 @@ def test_faults_of_all_files_at_once(packmime: Callable, tmp_path: Path) -> None
         assert said in result.stderr
 
 
+def test_a_file_that_is_not_there_hides_no_fault_of_the_others(packmime: Callable) -> None:
+    result = packmime("check", "nosuch.yaml", "--bench", "nope.yaml", "--spec", "sprayr")
+    assert result.exit_code == 2
+    assert "3 faults" in result.stderr
+    for said in ("nosuch.yaml: cannot be read", "there is no bench file 'nope.yaml'", "sprayr"):
+        assert said in result.stderr
+
+
 def test_no_file(packmime: Callable) -> None:
     assert packmime("check").exit_code == 2

@@ -1,5 +1,7 @@
 """Files into models: all faults at once, each with place, cause and the nearest valid word."""
 
+import pytest
+
 from drivers.bench import Bench
 from drivers.text.binding import bind
 from drivers.text.document import compose
@@ -79,3 +81,22 @@ def test_an_ocv_table_that_falls_is_refused() -> None:
     pack = (FOLDERS["pack"] / "sprayer.yaml").read_text("utf-8")
     assert "must rise" in _faults(pack.replace("[40 %, 3.67 V]", "[40 %, 3.50 V]"), Pack, "pack")[0]
     assert "from 0 % to 100 %" in _faults(pack.replace("[100 %, 4.20 V]", "[99 %, 4.20 V]"), Pack, "pack")[0]
+
+
+@pytest.mark.parametrize(
+    ("entry", "told"),
+    [
+        ("{node: 26 V, current: 3,0 A, charge: 5 Ah}", 'current: a comma parts the entries of a mapping, so "3,0 A"'),
+        ("{node: 26,5 V, current: 3 A, charge: 5 Ah}", "write 26.5 V"),
+    ],
+)
+def test_a_decimal_comma_is_named(entry: str, told: str) -> None:
+    text = (FOLDERS["bench"] / "virtual.yaml").read_text("utf-8")
+    assert any(told in fault for fault in _faults(text.replace("{node: 26 V, current: 12 A, charge: 5 Ah}", entry)))
+
+
+def test_a_key_that_is_only_misspelt_is_no_decimal_comma() -> None:
+    text = (FOLDERS["bench"] / "virtual.yaml").read_text("utf-8")
+    told = _faults(text.replace("charge: 5 Ah}", "charge: 5 Ah, 2nd: 3 A}"))
+    assert len(told) == 1
+    assert "comma" not in told[0]

@@ -51,3 +51,8 @@ def test_what_is_shown_is_the_value(value: float, unit: str) -> None:
     ]
     assert float(number) * factor == pytest.approx(value, rel=1e-5)
     assert 0.999 < abs(float(number)) < 1000.1
+
+
+def test_nobody_writes_minus_nothing() -> None:
+    assert si(-0.0, "A") == "0 A"
+    assert pm(-1e-6, 1e-3, "V") == "0.0 mV ± 1 mV"

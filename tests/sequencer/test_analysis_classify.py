@@ -355,7 +355,7 @@ def test_as_the_command_prints_it(closed_form: Callable[..., Any]) -> None:
     shown = json.loads(json.dumps(classify(*closed_form().log(3)).as_dict(), allow_nan=False))
     assert list(shown) == ["algorithm", "confidence", "stages", "voltage_limit_V", "step_ratios", "cutoff_current_A",
                            "precharge", "flags", "why"]  # fmt: skip
-    assert set(shown["stages"][0]) == {"kind", "start_s", "end_s", "current_A", "voltage_V", "charge_Ah"}
+    assert set(shown["stages"][0]) == {"kind", "start_s", "end_s", "current_A", "voltage_V", "charge_Ah", "charge_u_Ah"}
     assert set(shown["voltage_limit_V"]) == {"value", "u"}
 
 
