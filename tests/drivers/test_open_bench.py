@@ -146,6 +146,7 @@ def test_all_that_refuse_are_named_together_within_10_s(real: Real) -> None:
     assert caught.value.instrument == "node_supply"
     for name in NAMES:
         assert f"{name}: nobody answers at {access.addresses[name]}" in str(caught.value)
+    assert len(str(caught.value).splitlines()) == len(NAMES), "one line each"
 
 
 def test_silent_ones_cost_one_wait_and_not_six(real: Real, monkeypatch: pytest.MonkeyPatch) -> None:

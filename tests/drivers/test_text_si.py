@@ -55,4 +55,4 @@ def test_what_is_shown_is_the_value(value: float, unit: str) -> None:
 
 def test_nobody_writes_minus_nothing() -> None:
     assert si(-0.0, "A") == "0 A"
-    assert pm(-1e-6, 1e-3, "V") == "0.0 mV ± 1 mV"
+    assert pm(-1e-6, 1e-3, "V") == "0.0 mV ± 1.0 mV"

@@ -351,6 +351,26 @@ def test_instrument_uncertainty_comes_on_top(closed_form: Callable[..., Any]) ->
         assert with_u.voltage_V.u == pytest.approx(math.hypot(without.voltage_V.u, 0.003))
 
 
+def test_an_instruments_error_adds_up_over_a_stage(closed_form: Callable[..., Any]) -> None:
+    """10 mA in one direction for as long as the stage lasts (JCGM 100:2008, 5.2.2), half a spacing at either end."""
+    for stage in classify(*closed_form().log(3), current_u_A=0.01).stages:
+        least_Ah = 0.01 * (stage.end_s - stage.start_s) / 3600.0
+        assert least_Ah <= stage.charge_u_Ah <= least_Ah + 2e-3
+
+
+def test_the_charge_of_a_known_log_lies_within_its_uncertainty(closed_form: Callable[..., Any]) -> None:
+    """3 A for 3150 s and the taper to 0.3 A, 450 s x 2.7 A (computed from the closed form): 2.625 Ah and 0.3375 Ah."""
+    for seed in range(5):
+        cc, cv = (
+            one for one in classify(*closed_form().log(seed), current_u_A=0.002).stages if one.kind in ("cc", "cv")
+        )
+        assert abs(cc.charge_Ah + cv.charge_Ah - 2.9625) <= 2 * math.hypot(cc.charge_u_Ah, cv.charge_u_Ah)
+
+
+def test_the_sentence_shows_no_more_digits_than_the_uncertainty_lets_stand(closed_form: Callable[..., Any]) -> None:
+    assert "a plateau of 3.000 A, then" in classify(*closed_form().log(3), current_u_A=0.01).why
+
+
 def test_as_the_command_prints_it(closed_form: Callable[..., Any]) -> None:
     shown = json.loads(json.dumps(classify(*closed_form().log(3)).as_dict(), allow_nan=False))
     assert list(shown) == ["algorithm", "confidence", "stages", "voltage_limit_V", "step_ratios", "cutoff_current_A",

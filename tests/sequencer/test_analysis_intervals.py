@@ -199,3 +199,14 @@ def test_what_cannot_be_decided_is_refused(arguments: tuple[float, ...], words: 
         decide_interval(*arguments, "guarded")  # type: ignore[call-arg, arg-type]
     with pytest.raises(ValueError, match="width"):
         telling_sizes(-1.0, 0.1, 2.0, "guarded")
+
+
+def test_one_sided_limits_are_said_as_sides() -> None:
+    """ "Inside the upper limit" is no English for an interval that lies below it."""
+    for low, high, words in (
+        (None, 900.0, "lies below the upper limit 900"),
+        (700.0, None, "lies above the lower limit 700"),
+        (700.0, 900.0, "lies inside the limits 700"),
+        (None, 790.0, "lies above the upper limit 790"),
+    ):
+        assert words in decide_interval(800.0, 810.0, 1.0, 2.0, low, high, "guarded", unit="Ω").why
