@@ -189,7 +189,7 @@ def test_what_the_model_was_told(cell: Cell, charge: str, period_s: int, noise: 
 
 
 def _flags_tell(found: Classification, told: Charge, cell: Cell, log: Log, period_s: int) -> None:
-    """A power limit is told where at least ten rows show it; no flag tells of what was not there."""
+    """A power limit is told where at least thirty rows show it; no flag tells of what was not there."""
     flags = set(found.flags) - {"noisy", "undersampled"}
     if told.power is None or told.algorithm == "constant-power":
         assert flags == set()
@@ -197,5 +197,5 @@ def _flags_tell(found: Classification, told: Charge, cell: Cell, log: Log, perio
     power_W = told.power * log.capacity_Ah * cell.power_V
     limited = np.abs(log.voltage_V * log.current_A / power_W - 1.0) < 1e-3
     assert flags <= {"power-limited"}
-    if np.count_nonzero(limited) >= 10 * period_s:
+    if np.count_nonzero(limited) >= 30 * period_s:
         assert flags == {"power-limited"}
