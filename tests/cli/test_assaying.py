@@ -14,7 +14,7 @@ import pytest
 from drivers.virtual.defects import DEFECTS
 from sequencer.cli.assay_outcome import Outcome
 from sequencer.cli.assay_plan import Trial
-from sequencer.cli.assay_work import carry_out
+from sequencer.cli.assay_work import carry_out, in_memory
 from sequencer.engine.loop import StopFlag
 
 
@@ -76,6 +76,17 @@ def test_bad_input_exits_2_before_anything_runs(packmime: Callable, tmp_path: Pa
     assert packmime("assay", "charge-profile", "--defects", "deed").exit_code == 2
     (tmp_path / "something").write_text("in the way", "utf-8")
     assert packmime("assay", "charge-profile", "--keep", tmp_path).exit_code == 2
+
+
+def test_records_that_nobody_keeps_stay_in_memory_where_there_is_room(
+    monkeypatch: pytest.MonkeyPatch, tmp_path: Path
+) -> None:
+    monkeypatch.delenv("TMPDIR", raising=False)
+    assert in_memory(tmp_path, 1) == tmp_path
+    assert in_memory(tmp_path, 2**62) is None
+    assert in_memory(tmp_path / "absent", 1) is None
+    monkeypatch.setenv("TMPDIR", str(tmp_path))
+    assert in_memory(tmp_path, 1) is None
 
 
 @pytest.mark.skipif(sys.platform != "linux", reason="workers are looked up in /proc")
