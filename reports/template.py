@@ -81,6 +81,11 @@ def _drawings(view: View) -> Iterator[tuple[str, str, Callable[[float], Any]]]:
 
         label = "Cell taps: the voltage of each cell at which the charge stops"
         yield "cells", label, partial(_sized, draw_cell_map, view.cell_map)
+    if view.tap_map is not None:
+        from reports.tap_figure import draw_tap_map
+
+        label = "Tap currents by screening: what each cell exchanges, and the detection limit"
+        yield "taps", label, partial(_sized, draw_tap_map, view.tap_map)
 
 
 def _sized(draw: Callable[..., Any], shown: object, width_in: float) -> Any:

@@ -15,6 +15,7 @@ from reports.id_map import IdMap, id_map
 from reports.profile import Profile, charge_profile
 from reports.rows import Budget, Pair, StageRow, VerdictRow
 from reports.source import Source
+from reports.tap_map import TapMap, tap_map
 from reports.temperature_map import TemperatureMap, temperature_map
 from reports.wording import Word, clean
 
@@ -49,6 +50,7 @@ class View:
     id_map: IdMap | None
     temperature_map: TemperatureMap | None
     cell_map: CellMap | None
+    tap_map: TapMap | None
     has_charge: bool
     algorithm: str
     algorithm_note: str
@@ -141,13 +143,14 @@ def _maps(source: Source) -> dict[str, Any]:
         "id_map": id_map(findings.get("points") or (), verdicts, declared),
         "temperature_map": temperature_map(findings, verdicts, declared, source.curve),
         "cell_map": cell_map(findings.get("walks") or (), verdicts, declared),
+        "tap_map": tap_map(findings.get("balancing"), declared),
     }
 
 
 def _has_charge(source: Source) -> bool:
     """Whether the record holds a charge, or at least nothing else that a figure could show in its place."""
     begun = any(event.get("event") == "step-start" and event.get("does") == "charge" for event in source.events)
-    shown = source.findings.get("points") or source.findings.get("walks")
+    shown = any(source.findings.get(name) for name in ("points", "walks", "balancing"))
     return bool(begun or source.findings.get("classification") or not shown)
 
 

@@ -44,6 +44,7 @@ id_bands:
   - {id: [9.0 kΩ, 11.0 kΩ], current: 4.0 A ± 5 %}
 temperature: {curve: ntc-10k-3435, start: [3 °C ± 2 °C, 45 °C ± 2 °C], run: [0 °C ± 2 °C, 50 °C ± 2 °C]}
 tap_trip: {voltage: [4.20 V, 4.28 V], stop_time: {below: 2 s}, release: resumes, rule: simple}
+balancing: {none_above: 1 mA}
 """
 CURVE = """packmime: curve 1
 name: ntc-10k-3435
@@ -88,9 +89,9 @@ def breadth_parts() -> Json:
     content, more = parts(), json.loads(Path(__file__).with_name("breadth.json").read_text(encoding="utf-8"))
     content["verdicts"]["verdicts"] += more["verdicts"]
     content["findings"]["findings"] += more["findings"]
-    content["findings"] |= {"points": more["points"], "walks": more["walks"]}
+    content["findings"] |= {name: more[name] for name in ("points", "walks", "balancing")}
     content["budgets"] |= more["budgets"]
-    content["judgement"]["not_part_of_procedure"] = ["balancing.cell1.current"]
+    content["judgement"]["not_part_of_procedure"] = ["charge.cutoff"]
     return content
 
 

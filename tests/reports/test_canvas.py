@@ -14,6 +14,8 @@ from reports.cell_figure import draw_cell_map
 from reports.cell_map import cell_map
 from reports.id_figure import draw_id_map
 from reports.id_map import id_map
+from reports.tap_figure import draw_tap_map
+from reports.tap_map import tap_map
 from reports.temperature_figure import draw_temperature_map
 from reports.temperature_map import temperature_map
 from sequencer.model.curves import Curve
@@ -22,7 +24,7 @@ from sequencer.model.specification import Specification
 SVG = "{http://www.w3.org/2000/svg}"
 
 
-@pytest.fixture(params=["charge", "id", "temperature", "cells"])
+@pytest.fixture(params=["charge", "id", "temperature", "cells", "taps"])
 def drawn(request: pytest.FixtureRequest, breadth: dict, declared: Specification, sensor: Curve) -> Callable[[], Any]:
     """Each figure, drawn anew at each call."""
     findings, verdicts = breadth["findings"], breadth["verdicts"]["verdicts"]
@@ -32,6 +34,7 @@ def drawn(request: pytest.FixtureRequest, breadth: dict, declared: Specification
         "id": lambda: draw_id_map(id_map(findings["points"], verdicts, declared)),
         "temperature": lambda: draw_temperature_map(temperature_map(findings, verdicts, declared, sensor)),
         "cells": lambda: draw_cell_map(cell_map(findings["walks"], verdicts, declared)),
+        "taps": lambda: draw_tap_map(tap_map(findings["balancing"], declared)),
     }[request.param]
 
 

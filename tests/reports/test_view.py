@@ -10,6 +10,7 @@ from reports.cell_figure import draw_cell_map
 from reports.id_figure import draw_id_map
 from reports.inputs import Measurand
 from reports.source import Source
+from reports.tap_figure import draw_tap_map
 from reports.temperature_figure import draw_temperature_map
 from reports.view import build
 from sequencer.model.curves import Curve
@@ -165,4 +166,18 @@ def test_a_record_of_insertions_alone_has_no_charge_profile(source: Callable[...
 
 def test_a_judgement_from_before_the_breadth_has_its_report(source: Callable[..., Source], content: dict) -> None:
     view = build(source(**content))
-    assert (view.id_map, view.temperature_map, view.cell_map, view.elsewhere) == (None, None, None, ())
+    assert (view.id_map, view.temperature_map, view.cell_map, view.tap_map, view.elsewhere) == (*[None] * 4, ())
+
+
+def test_no_null_in_what_a_screening_left_stops_a_report(
+    source: Callable[..., Source], breadth: dict, declared: Specification
+) -> None:
+    """Every key of it, null, and every key of its exchanges and patterns: a figure or none, never an error."""
+    whole = breadth["findings"]["balancing"]
+    bare = [whole | {key: None} for key in whole]
+    for part in ("exchanges", "patterns"):
+        bare += [whole | {part: [one | {key: None} for one in whole[part]]} for key in whole[part][0]]
+    for balancing in bare:
+        findings = breadth["findings"] | {"balancing": balancing}
+        view = build(source(**breadth | {"findings": findings}, specification=declared, cells=5))
+        assert view.tap_map is None or draw_tap_map(view.tap_map, width_in=8.6)
