@@ -60,7 +60,7 @@ NOT_COVERED = (
     "earth bond",
     "EMC",
     "digital data contacts",
-    "balancing",
+    "the absence of balancing (a screening may look for it)",
     "deep-discharge starts",
 )
 

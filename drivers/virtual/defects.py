@@ -185,6 +185,7 @@ class Fits(Part):
 
     algorithms: tuple[Algorithm, ...] = ()
     has: tuple[str, ...] = Field((), description="paths in the charger file, such as tap_monitor or id_bands.1")
+    lacks: tuple[str, ...] = Field((), description="paths that the charger file must not hold")
     cells: Annotated[str, Field(pattern=r"^\d+$")] | None = None
 
 
@@ -227,7 +228,9 @@ class Defect(Written):
             return False
         if wanted.cells is not None and int(wanted.cells) != model.cells:
             return False
-        return all(_node_at(charger.document.root, path) is not None for path in wanted.has)
+        root = charger.document.root
+        lacks = all(_node_at(root, path) is None for path in wanted.lacks)
+        return lacks and all(_node_at(root, path) is not None for path in wanted.has)
 
 
 def load_defect(name_or_path: str, faults: Faults, *, place: Place | None = None) -> Bound[Defect] | None:

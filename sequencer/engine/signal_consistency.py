@@ -196,7 +196,7 @@ def _check_watch(
     if cells < 2:
         faults.add(procedure.place(*place), "a pack of one cell has no other cell to be balanced with")
         return
-    for number in range(cells - 1):
+    for number in range(min(cells - 1, len(wiring.taps))):
         dialect = bench.at(f"taps.{number}.meter")[2]
         if not dialect.accuracy.voltage:
             told = f"the dialect '{dialect.name}' states no accuracy of voltage; no tap current could be judged"

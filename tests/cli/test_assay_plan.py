@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import shutil
 from fnmatch import fnmatchcase
 from pathlib import Path
@@ -45,9 +46,10 @@ def test_the_same_seeds_give_the_same_trials() -> None:
 def claiming(folder: Path, claims: str) -> str:
     """acceptance with other claims."""
     text = (FOLDERS["procedure"] / "acceptance.yaml").read_text("utf-8")
-    line = next(line for line in text.splitlines() if line.startswith("claims:"))
+    said = re.search(r"^claims: \{.*?\}", text, re.DOTALL | re.MULTILINE)
+    assert said is not None
     path = folder / "p.yaml"
-    path.write_text(text.replace(line, f"claims: {claims}"), "utf-8")
+    path.write_text(text.replace(said[0], f"claims: {claims}"), "utf-8")
     return str(path)
 
 

@@ -33,6 +33,20 @@ change: {voltage_per_cell: +size}
 """
 
 
+def test_a_defect_that_adds_something_fits_no_charger_that_has_it() -> None:
+    """A bleed in its drawn size, on a charger without one; none on one that balances as it is declared to."""
+    faults = Faults()
+    defect = load_defect("bleeds-through-tap", faults)
+    assert defect is not None
+    sound = charger("sprayer")
+    assert [defect.model.fits_on(one) for one in (sound, charger("aerator"))] == [True, False]
+    spoilt = spoiled(defect, Size(0.0042, "current"), sound, faults)
+    faults.raise_if_any()
+    assert spoilt is not None
+    assert spoilt.model.plan().balancer is not None
+    assert spoilt.model.plan().balancer.current_A == pytest.approx(0.0042)
+
+
 def charger(name: str) -> Bound[ChargerFile]:
     faults = Faults()
     found = load_charger(name, faults)

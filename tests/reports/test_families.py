@@ -7,6 +7,8 @@ import pytest
 from reports import families, rows
 from reports.rows import VerdictRow
 
+LAST = "Balancing, screened"
+
 
 @pytest.fixture
 def judged(breadth: dict) -> list[VerdictRow]:
@@ -20,7 +22,7 @@ def row(judged: list[VerdictRow], breadth: dict) -> Callable[..., VerdictRow]:
 
 def test_no_row_is_lost_and_each_keeps_its_order(judged: list[VerdictRow]) -> None:
     groups = families.families(judged)
-    assert [group.title for group in groups] == ["Charge", "ID resistor", "Temperature window", "Cell taps"]
+    assert [group.title for group in groups] == ["Charge", "ID resistor", "Temperature window", "Cell taps", LAST]
     assert [one.node for group in groups for one in group.rows] == [one.node for one in judged]
 
 
@@ -33,7 +35,7 @@ def test_a_family_is_as_good_as_its_worst_row(judged: list[VerdictRow]) -> None:
 def test_the_summary_names_the_worst_first(judged: list[VerdictRow]) -> None:
     words = [one.verdict.text for one in families.summary(judged).urgent]
     assert words == sorted(words, key=("fail", "conditional fail", "inconclusive").index)
-    assert words.count("fail") == 8
+    assert words.count("fail") == 9
     assert "id.band3.lower_edge" in [one.limit for one in families.summary(judged).urgent]
 
 

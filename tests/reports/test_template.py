@@ -128,7 +128,8 @@ def test_an_acceptance_is_grouped_and_sums_itself_up_first(accepted: Path) -> No
     html = (accepted / "report.html").read_text(encoding="utf-8")
     assert len(html.encode()) < MOST_BYTES
     headings = re.findall(r'<h3 class="family" id="(f\d\d)"><bdi>([^<]*)', html)
-    assert [title for _, title in headings] == ["Charge", "ID resistor", "Temperature window", "Cell taps", "Balancing, screened"]
+    titles = ["Charge", "ID resistor", "Temperature window", "Cell taps", "Balancing, screened"]
+    assert [title for _, title in headings] == titles
     links = re.findall(r'href="#([^"]+)"', html)
     assert set(links) <= set(re.findall(r' id="([^"]+)"', html)), "a link leads nowhere"
     assert html.index("Failed, or could not be told") < html.index("<h2>Verdicts</h2>")

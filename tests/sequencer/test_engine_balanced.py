@@ -57,12 +57,12 @@ def test_the_true_current_of_every_cell_lies_in_its_interval(rehearse_full: Rehe
 
 
 def test_a_declared_balancing_is_judged_cell_by_cell(rehearse_full: Rehearse) -> None:
-    """1 kΩ over 4.1 V is 4.1 mA (Ohm's law); the cell that is left out fails alone."""
+    """1 kΩ over 4.03 V is 4.03 mA (Ohm's law); the cell that is left out fails alone."""
     bleed = {"bleed": "{resistance: 1 kΩ, difference: 20 mV, cells: [1, 3]}"}
     found = screen(rehearse_full, bleed, spec_text=DECLARED)
     assert found.failing == {"balancing.cell2.current"}
     assert found.verdicts["balancing.screening"] == "pass"
-    assert found.verdict("balancing.cell1.current")["value"] == pytest.approx(4.1e-3, rel=0.02)
+    assert found.verdict("balancing.cell1.current")["value"] == pytest.approx(4.03e-3, rel=0.01)
     assert "not found; from" in found.verdict("balancing.cell2.current")["why"]
     assert found.verdicts["balancing.none_above"] == "not applicable"
 
@@ -124,7 +124,7 @@ def test_a_channel_that_gives_way_ends_the_run_as_the_benchs_doing(rehearse_full
 @pytest.mark.benchmark
 def test_a_charge_that_stops_meanwhile_is_inconclusive(rehearse_full: Rehearse) -> None:
     """A monitor far below what is declared stops the charge with each high cell, and lets it go on without the drop."""
-    low = "{threshold: 4.08 V, filter: 0.5 s, hysteresis: 20 mV, latch: false}"
+    low = "{threshold: 4.01 V, filter: 0.5 s, hysteresis: 20 mV, latch: false}"
     found = screen(rehearse_full, {"tap_monitor": low})
     screening = found.verdict("balancing.screening")
     assert screening["verdict"] == "inconclusive"
