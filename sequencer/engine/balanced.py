@@ -256,7 +256,7 @@ def _amounts(screened: Screened) -> str:
         cells = ", ".join(str(cell) for cell in sorted(one.cell for one in mine))
         named = kind.format(cells=f"cell{'s' * (len(mine) > 1)} {cells}")
         told.append(f"{_span([abs(one.out_A) for one in mine])} {named}")
-    return f"found: {'; '.join(told)}; "
+    return f"{'; '.join(told)}; "
 
 
 def conditions(screened: Screened) -> str:

@@ -7,9 +7,9 @@ import pytest
 from drivers.text.measures import Limit
 from sequencer.analysis.classes import Seen
 from sequencer.engine.inputs import FOLDERS, rebind
-from sequencer.engine.targets import ends, sides, starts
+from sequencer.engine.targets import ends, passed_over, sides, starts
 from sequencer.model.specification import Specification
-from sequencer.model.steps import SweepTemperature
+from sequencer.model.steps import Step, SweepTemperature
 
 STEP = SweepTemperature.model_validate({"cell_voltage": "3.7 V", "resolution": "0.5 K", "beyond": "3 K"})
 
@@ -67,3 +67,11 @@ def test_limits_of_temperature_open_at_one_end() -> None:
 def test_a_start_is_a_start_with_whatever_current() -> None:
     assert starts(Seen("charges", None, None, "", True)) == starts(Seen("pulses", None, None, "", True)) == "charges"
     assert starts(Seen("no charge", None, None, "", False)) == "no charge"
+
+
+def test_taps_are_watched_where_something_is_declared_about_balancing() -> None:
+    step = Step.model_validate({"watch_taps": {"cell_voltage": "3.9 V"}})
+    declared = specification("id: [4.0 kΩ, 5.0 kΩ]")
+    assert passed_over(step, declared) is None
+    bare = declared.model_copy(update={"balancing": None})
+    assert passed_over(step, bare) == "the specification declares nothing about balancing"
