@@ -151,7 +151,7 @@ def test_the_prediction_of_bench_time_holds(rehearse_full: Rehearse) -> None:
 
 @pytest.mark.benchmark
 def test_true_currents_of_many_chargers_lie_in_their_intervals(rehearse_full: Rehearse) -> None:
-    """Eight benches and chargers, sizes drawn from 30 µA to 30 mA: U is for 95 %; 48 intervals may miss 6 (1.5 %)."""
+    """Eight benches and chargers, sizes drawn from 30 µA to 30 mA: U is for 95 %; 48 intervals may miss 6 (1 %)."""
     draw, held = np.random.default_rng([SEED, 8]), 0
     for seed in range(1, 9):
         size_A, cell = float(f"{10 ** draw.uniform(-4.5, -1.5):.3g}"), int(draw.integers(1, 4))
