@@ -245,7 +245,8 @@ class Dialect(Written):
         default_factory=dict
     )
     least: dict[str, Annotated[float, BeforeValidator(lambda value: _largest(value)), _SETTABLE_SCHEMA]] = Field(
-        default_factory=dict, description="load: voltage below which it no longer sinks its full current"
+        default_factory=dict,
+        description="smallest voltage: a load no longer sinks its current, a tap supply plays no cell",
     )
     sinks: PositiveAmperes | None = Field(
         None, description="tap supply: current that one channel absorbs; nothing, unless said"

@@ -17,6 +17,7 @@ _TITLES: Mapping[str, str] = {
     "temperature": "Temperature window",
     "tap_trip": "Cell taps",
     "balancing": "Balancing, screened",
+    "low_start": "Deep-discharge start",
 }
 _URGENT = ("fail", "conditional fail", "inconclusive")
 MOST = 15  # rows named at the top; more than these are no summary

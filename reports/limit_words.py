@@ -6,7 +6,7 @@ import re
 from collections.abc import Mapping
 from typing import Any
 
-# By finding; {n} is the stage, band or cell that the limit's name carries.
+# By finding; {n} is the stage, band, cell or range that the limit's name carries.
 _WORDS: Mapping[str, str] = {
     "charges": "a nominal pack is charged",
     "charge.algorithm": "shape of the charge",
@@ -37,6 +37,13 @@ _WORDS: Mapping[str, str] = {
     "balancing.screening": "largest balancing current, by screening",
     "balancing.current": "cell {n}: balancing current, by screening",
     "balancing.none_above": "absence of a balancing current",
+    "low_start.response": "discharged pack, range {n} of start voltages",
+    "low_start.weak_cell": "cell {n} weak, the others normal",
+    "low_start.precharge_current": "current of the precharge",
+    "low_start.threshold": "precharge goes over to full current at",
+    "low_start.precharge_time": "a precharge held low is given up after",
+    "low_start.probe_current": "largest probe pulse",
+    "low_start.probe_time": "longest probe pulse",
 }
 
 

@@ -17,6 +17,7 @@ _STRUCK_OUT = ((-1, -1), (1, -1), (1, 1), (-1, 1), (-1, -1), (1, 1), (1, -1), (-
 
 _MARKS: dict[str, dict[str, Any]] = {
     "charges": {"marker": "o", "markersize": 5.5, "markerfacecolor": VOLTAGE, "markeredgecolor": PAPER},
+    "precharges": {"marker": "s", "markersize": 5.5, "markerfacecolor": PAPER, "markeredgecolor": VOLTAGE},
     "no charge": {"marker": "x", "markersize": 5.5, "markeredgecolor": INK, "markeredgewidth": 1.4},
     "pulses": {"marker": "^", "markersize": 6.5, "markerfacecolor": CURRENT, "markeredgecolor": PAPER},
     "undecided": {"marker": "D", "markersize": 5, "markerfacecolor": PAPER, "markeredgecolor": CURRENT},
@@ -28,7 +29,7 @@ _WORDS = {"void": "void, counts for nothing"}
 def plot_marks(axes: Axes, shown: Iterable[tuple[float, float, str]]) -> None:
     """Marks at (x, y), each in the style of its kind; those that charge on top of what does not."""
     spots = list(shown)
-    for order, style in enumerate(("void", "no charge", "undecided", "pulses", "charges")):
+    for order, style in enumerate(("void", "no charge", "undecided", "pulses", "precharges", "charges")):
         here = [(x, y) for x, y, kind in spots if kind == style]
         if here:
             xs, ys = zip(*here, strict=True)

@@ -81,6 +81,11 @@ def _drawings(view: View) -> Iterator[tuple[str, str, Callable[[float], Any]]]:
 
         label = "Cell taps: the voltage of each cell at which the charge stops"
         yield "cells", label, partial(_sized, draw_cell_map, view.cell_map)
+    if view.low_start_map is not None:
+        from reports.low_start_figure import draw_low_start_map
+
+        label = "Deep-discharge starts: what the charger did over the voltage per cell, and with each weak cell"
+        yield "low", label, partial(_sized, draw_low_start_map, view.low_start_map)
     if view.tap_map is not None:
         from reports.tap_figure import draw_tap_map
 

@@ -12,6 +12,7 @@ from reports import header, rows, wording
 from reports.cell_map import CellMap, cell_map
 from reports.families import Family, Summary, counted, families, summary
 from reports.id_map import IdMap, id_map
+from reports.low_start_map import LowStartMap, low_start_map
 from reports.profile import Profile, charge_profile
 from reports.rows import Budget, Pair, StageRow, VerdictRow
 from reports.source import Source
@@ -50,6 +51,7 @@ class View:
     id_map: IdMap | None
     temperature_map: TemperatureMap | None
     cell_map: CellMap | None
+    low_start_map: LowStartMap | None
     tap_map: TapMap | None
     has_charge: bool
     algorithm: str
@@ -143,6 +145,7 @@ def _maps(source: Source) -> dict[str, Any]:
         "id_map": id_map(findings.get("points") or (), verdicts, declared),
         "temperature_map": temperature_map(findings, verdicts, declared, source.curve),
         "cell_map": cell_map(findings.get("walks") or (), verdicts, declared),
+        "low_start_map": low_start_map(findings.get("low_starts") or (), verdicts, declared),
         "tap_map": tap_map(findings.get("balancing"), declared),
     }
 
@@ -150,7 +153,7 @@ def _maps(source: Source) -> dict[str, Any]:
 def _has_charge(source: Source) -> bool:
     """Whether the record holds a charge, or at least nothing else that a figure could show in its place."""
     begun = any(event.get("event") == "step-start" and event.get("does") == "charge" for event in source.events)
-    shown = any(source.findings.get(name) for name in ("points", "walks", "balancing"))
+    shown = any(source.findings.get(name) for name in ("points", "walks", "low_starts", "balancing"))
     return bool(begun or source.findings.get("classification") or not shown)
 
 

@@ -61,7 +61,6 @@ NOT_COVERED = (
     "EMC",
     "digital data contacts",
     "the absence of balancing (a screening may look for it)",
-    "deep-discharge starts",
 )
 
 BY_RULE = "set by rule, not calibrated"

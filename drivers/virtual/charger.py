@@ -1,8 +1,8 @@
 """A virtual charger as a state machine: its output stage in each state, and what it watches there.
 
 Every watch has a filter time: its condition must hold without a break for that long. The circuit finds the exact
-moment. States: off (no mains, or dead), waiting (for a pack it accepts), surge, charging, paused (until what stopped
-it is gone), fault (until it is cleared), ended.
+moment. States: off (no mains, or dead), waiting (for a pack it accepts), sizing (how low it stands), probing and
+between pulses, precharging, surge, charging, paused (until what stopped it is gone), fault (until cleared), ended.
 """
 
 from __future__ import annotations
@@ -12,7 +12,7 @@ from collections.abc import Callable
 from typing import NamedTuple
 
 from drivers.virtual.balancing import LOOK_s, moved_A
-from drivers.virtual.charger_plan import ChargerPlan, FaultLatch, IdBand, TapMonitor, Temperature
+from drivers.virtual.charger_plan import ChargerPlan, FaultLatch, IdBand, LowStart, TapMonitor, Temperature
 from drivers.virtual.history import Pulses
 from drivers.virtual.node import ApartLaw, Drive, NodeLaw
 from drivers.virtual.terminals import OPEN, Terminals
@@ -21,6 +21,7 @@ PACK_PRESENT_V = 0.5  # per cell: below this a charger sees no pack; common prac
 OPEN_RATIO = 20.0  # an ID above so many pull-ups, and above twice the highest band, is none; common practice, no source
 ALWAYS_V = -math.inf
 BALANCES = ("charging", "ended")
+ACTIVE = ("sizing", "probing", "between", "precharging", "surge", "charging")  # a pack is in, and being dealt with
 
 
 class Watch(NamedTuple):
@@ -50,6 +51,7 @@ class Charger:
         self._reads_id = plan.id_pin is not None and "id" in wired
         self._temperature: Temperature | None = plan.temperature if "thermistor" in wired else None
         self._monitor: TapMonitor | None = plan.tap_monitor if self._has_all_taps else None
+        self._pulses = 0  # probe pulses given to this pack
         self._filters = {"id": plan.id_pin.filter_s} if plan.id_pin and self._reads_id else {}
         if self._temperature:
             self._filters["thermistor"] = self._temperature.pin.filter_s
@@ -90,8 +92,13 @@ class Charger:
 
     def drive(self) -> Drive | None:
         """The output stage as it stands; None where nothing is driven."""
+        low = self.plan.low_start
         if self.state == "surge":
             return Drive(self.plan.surge_A, self.plan.limit_V)
+        if self.state == "probing" and low is not None and low.probe is not None:
+            return Drive(low.probe.current_A, self.plan.limit_V)
+        if self.state == "precharging" and low is not None and low.precharge is not None:
+            return Drive(low.precharge.current_A, self.plan.limit_V)
         if self.state == "charging":
             return Drive(self.plan.stages[self.stage].current_A * self._scale, self.plan.limit_V)
         return None
@@ -111,9 +118,11 @@ class Charger:
         present_V = law.node_at_contacts(PACK_PRESENT_V * self.plan.cells)
         if self.state == "waiting":
             return [*found, *self._at_insertion(present_V)]
-        if self.state not in ("surge", "charging"):
+        if self.state not in ACTIVE:
             return [*found, *self._at_rest(present_V)]
         found += self._stops(present_V)
+        if self.plan.low_start is not None and self.state not in ("surge", "charging"):
+            return [*found, *self._low_watches(self.plan.low_start, law)]
         if self.state == "surge":
             found.append(self._watch("surge", ALWAYS_V, True, self.plan.surge_s, self._charge))
         elif not (self._is_last() and not self.plan.ends):
@@ -162,6 +171,38 @@ class Charger:
         if self.plan.balancer is None or not self._has_all_taps or self.state not in BALANCES:
             return []
         return [Watch(("cells compared", self._looks), ALWAYS_V, True, LOOK_s, self._balance)]
+
+    def _low_watches(self, low: LowStart, law: NodeLaw | ApartLaw) -> list[Watch]:
+        """How low the pack stands, and what follows from it."""
+        probe, precharge = low.probe, low.precharge
+        if self.state == "probing" and probe is not None:
+            return [self._watch("pulse", ALWAYS_V, True, probe.on_s, self._pause)]
+        if self.state == "between" and probe is not None:
+            act = self._probe if self._pulses < probe.count else self._fault
+            return [self._watch("pause", ALWAYS_V, True, probe.off_s, act)]
+        normal_V = self._stands_at(low, low.refuse_V if precharge is None else precharge.below_V, law)
+        if self.state == "precharging" and precharge is not None:
+            found = [self._watch("normal", normal_V, True, self.plan.response_s, self._begin)]
+            timeout_s = precharge.timeout_s
+            return found + ([self._watch("timer", ALWAYS_V, True, timeout_s, self._fault)] if timeout_s else [])
+        too_low = self._probe if probe is not None else self._fault
+        return [
+            self._watch("too low", self._stands_at(low, low.refuse_V, law), False, 0.0, too_low),
+            self._watch("normal", normal_V, True, 0.0, self._begin),
+            self._watch("low", normal_V, False, 0.0, self._precharge),
+        ]
+
+    def _stands_at(self, low: LowStart, level_V: float, law: NodeLaw | ApartLaw) -> float:
+        """The node voltage from which pack and each cell looked at stand at a level per cell; inf: a cell does not."""
+        node_V = law.node_at_contacts(level_V * self.plan.cells)
+        if not (low.cells and self._has_all_taps):
+            return node_V
+        pins_V = self.terminals.pins_V()
+        if any(_cell_V(pins_V, number) < level_V for number in low.cells if number <= len(pins_V)):
+            return math.inf
+        if len(pins_V) + 1 not in low.cells:
+            return node_V
+        return max(node_V, law.node_at_contacts(level_V + pins_V[-1]))
 
     def _at_insertion(self, present_V: float) -> list[Watch]:
         delay_s = self.plan.start_delay_s
@@ -212,7 +253,8 @@ class Charger:
         """Ended, paused or at fault: the pack's removal lets it start anew, unless only the mains do."""
         found = []
         if self.state == "paused" and self._may_resume():
-            found.append(self._watch("resume", present_V, True, self.plan.response_s, self._charge))
+            act = self._charge if self.plan.low_start is None else self._size_up
+            found.append(self._watch("resume", present_V, True, self.plan.response_s, act))
         if self.state == "fault" and self._latch != "removal":
             return found
         clear_s = self.plan.response_s if self.plan.clear_s is None else self.plan.clear_s
@@ -254,12 +296,33 @@ class Charger:
 
     def _start(self) -> None:
         self.stage = 0
+        self._pulses = 0
         self._band = self._band_read() if self._reads_id else None
+        if self.plan.low_start is None:
+            self._begin()
+        else:
+            self._size_up()
+
+    def _size_up(self) -> None:
+        self._enter("sizing")
+
+    def _begin(self) -> None:
         self._enter("surge" if self.plan.surge_s > 0 else "charging")
 
     def start_by_itself(self) -> None:
         """It delivers from now on, whatever it sees, and even without its mains (trouble)."""
         self._start()
+        self._begin()
+
+    def _precharge(self) -> None:
+        self._enter("precharging")
+
+    def _probe(self) -> None:
+        self._pulses += 1
+        self._enter("probing")
+
+    def _pause(self) -> None:
+        self._enter("between")
 
     def _charge(self) -> None:
         self._enter("charging")

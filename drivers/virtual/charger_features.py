@@ -92,7 +92,7 @@ class IdBandText(Part):
         return IdBand(*self.id, self.current)
 
 
-class _Read:
+class Read:
     """A type that reads what people write by `read`, and says in the JSON Schema what that is."""
 
     schema: ClassVar[JsonSchemaValue]
@@ -107,7 +107,7 @@ class _Read:
         return dict(self.schema)
 
 
-class _Hysteresis(_Read):
+class _Hysteresis(Read):
     """Reads a share of the resistance, or ohms, into (share, ohms)."""
 
     schema: ClassVar[JsonSchemaValue] = {"type": "string", "examples": ["5 %", "300 Ω"]}
@@ -126,7 +126,7 @@ class _Hysteresis(_Read):
         return found
 
 
-class _Cells(_Read):
+class _Cells(Read):
     """Reads "all" (None) or a list of cells, counted from B-."""
 
     schema: ClassVar[JsonSchemaValue] = {

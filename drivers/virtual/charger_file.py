@@ -31,6 +31,7 @@ from drivers.virtual.charger_features import (
     TemperatureText,
     bands_fit,
 )
+from drivers.virtual.charger_low_start import LowStartText
 from drivers.virtual.charger_plan import TAP_DRAIN_A, ChargerPlan, FaultLatch, Stage
 
 CHARGERS = Path(__file__).parent / "chargers"
@@ -92,6 +93,7 @@ class ChargerFile(Written):
     id_bands: Annotated[tuple[IdBandText, ...], BeforeValidator(_tuple)] = ()
     temperature: TemperatureText | None = None
     tap_monitor: TapMonitorText | None = None
+    low_start: LowStartText | None = Field(None, description="what becomes of a discharged pack; default: full current")
     tap_current: Amperes = Field(TAP_DRAIN_A, description="into each cell tap; negative: out of it")
     bleed: BleedText | None = Field(None, description="while charging and after the end, out of high cells")
     tap_charge: TapChargeText | None = Field(None, description="while charging and after the end, into low cells")
@@ -123,6 +125,9 @@ class ChargerFile(Written):
         highest = max((self.tap_monitor.cells or (0,)) if self.tap_monitor else (0,))
         if highest > self.cells:
             raise refuse(f"the tap monitor looks at cell {highest}; the pack has {self.cells}")
+        looked_at = max(self.low_start.low_start(self.cells).cells, default=0) if self.low_start else 0
+        if looked_at > self.cells:
+            raise refuse(f"low_start looks at cell {looked_at}; the pack has {self.cells}")
         if self.bleed is not None and self.tap_charge is not None:
             raise refuse("'bleed' and 'tap_charge' stand side by side; a charger balances in one way")
         moved = max((self._moving.cells or (0,)) if self._moving else (0,))
@@ -172,6 +177,7 @@ class ChargerFile(Written):
             id_bands=tuple(band.band() for band in self.id_bands),
             temperature=self.temperature.temperature() if self.temperature else None,
             tap_monitor=self.tap_monitor.monitor(self.cells) if self.tap_monitor else None,
+            low_start=self.low_start.low_start(self.cells) if self.low_start else None,
             tap_drain_A=self.tap_current,
             fault_latch=self.fault_latch,
             clear_s=self.clear,

@@ -90,6 +90,35 @@ class Balancer:
 
 
 @dataclass(frozen=True)
+class Probe:
+    """`count` pulses of `current_A` for `on_s` each, `off_s` apart, before a pack too low is refused."""
+
+    current_A: float
+    on_s: float
+    off_s: float
+    count: int
+
+
+@dataclass(frozen=True)
+class Precharge:
+    """A small current until every level stands at `below_V` per cell; given up after `timeout_s` (None: never)."""
+
+    below_V: float
+    current_A: float
+    timeout_s: float | None = None
+
+
+@dataclass(frozen=True)
+class LowStart:
+    """What becomes of a discharged pack; voltages per cell. `cells` (1 is the lowest) are looked at one by one."""
+
+    refuse_V: float = 0.0
+    probe: Probe | None = None
+    precharge: Precharge | None = None
+    cells: tuple[int, ...] = ()
+
+
+@dataclass(frozen=True)
 class ChargerPlan:
     """What a charger does, in numbers; voltages are of the whole pack. What has no default, the file model gives."""
 
@@ -111,6 +140,7 @@ class ChargerPlan:
     tap_monitor: TapMonitor | None = None
     tap_drain_A: float = TAP_DRAIN_A  # into each tap; negative: out of it
     fault_latch: FaultLatch = "none"
+    low_start: LowStart | None = None
     clear_s: float | None = None  # how long the pack must be gone for the charger to start anew; None: response_s
     balancer: Balancer | None = None
 
@@ -146,9 +176,20 @@ def _balancer(content: dict[str, Any]) -> Balancer:
     return Balancer(**{**content, "cells": tuple(content["cells"])})
 
 
+def _low_start(content: dict[str, Any]) -> LowStart:
+    probe, precharge = content["probe"], content["precharge"]
+    return LowStart(
+        content["refuse_V"],
+        None if probe is None else Probe(**probe),
+        None if precharge is None else Precharge(**precharge),
+        tuple(content["cells"]),
+    )
+
+
 _MADE: dict[str, Callable[[dict[str, Any]], Any]] = {
     "id_pin": _pin,
     "temperature": _temperature,
     "tap_monitor": _monitor,
     "balancer": _balancer,
+    "low_start": _low_start,
 }

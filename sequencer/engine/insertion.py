@@ -70,7 +70,7 @@ def place(site: Site, situation: Situation) -> None:
 
 def prepare(site: Site, situation: Situation) -> StandIn:
     """Make the instruments show `situation`, every contact as it is."""
-    stand_in = StandIn.inserted(site.pack, situation.cell_V)
+    stand_in = StandIn.inserted(site.pack, situation.cell_V, situation.held)
     site.loop.stand_in = None
     _prepare_node(site, stand_in.node_V)
     _prepare_signals(site, situation, stand_in.node_V)

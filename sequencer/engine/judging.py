@@ -28,11 +28,14 @@ from sequencer.engine.balanced import as_data, balance_findings, beyond_screenin
 from sequencer.engine.evidence import Evidence, Window, open_evidence
 from sequencer.engine.found import Found
 from sequencer.engine.judgements import changes, latest, new_judgement, write_json
+from sequencer.engine.low_found import low_start_findings
+from sequencer.engine.low_points import LowStarts
 from sequencer.engine.manifest import program_version, sha256
 from sequencer.engine.measured import ChargeStep, measure_charges
 from sequencer.engine.swept import Points, id_findings, start_findings
 from sequencer.engine.walked import Walks, walk_findings
 from sequencer.model.limits import LimitRow
+from sequencer.model.low_start import OR
 
 # What a trip of the charger's own doing says something about; the first of them that is declared.
 TRIP_LIMITS = {
@@ -50,7 +53,10 @@ GIVES = {
     "sweep_temperature": "temperature.",
     "raise_cell": "tap_trip.",
     "watch_taps": "balancing.",
+    "start_low": "low_start.",
 }
+#: What a charger need not show: where it shows none, its limits are not applicable.
+OPTIONAL = ("charge.current_after_end", "tap_trip.release", "low_start.probe_current", "low_start.probe_time")
 
 
 @dataclass(frozen=True)
@@ -115,7 +121,7 @@ def _signal_findings(evidence: Evidence) -> dict[str, Found]:
     accuracy = _accuracy(evidence)
     starts = start_findings(evidence, accuracy)
     swept = {**id_findings(evidence, accuracy), **starts, **walk_findings(evidence, accuracy)}
-    return {**swept, **balance_findings(evidence, accuracy)}
+    return {**swept, **low_start_findings(evidence, accuracy), **balance_findings(evidence, accuracy)}
 
 
 def _maps(evidence: Evidence) -> dict[str, Any]:
@@ -124,7 +130,13 @@ def _maps(evidence: Evidence) -> dict[str, Any]:
     points = [one for name in ("id", "temperature") for one in Points.of(evidence, accuracy, name).as_list(name)]
     walks = Walks(evidence, accuracy).as_list() if evidence.events("walk") else []
     balancing = as_data(evidence, accuracy)
-    return {"points": points, "walks": walks, **({} if balancing is None else {"balancing": balancing})}
+    low = LowStarts.of(evidence, accuracy).as_list() if evidence.events("low-start") else []
+    return {
+        "points": points,
+        "walks": walks,
+        "low_starts": low,
+        **({} if balancing is None else {"balancing": balancing}),
+    }
 
 
 def _accuracy(evidence: Evidence) -> Accuracy:
@@ -263,7 +275,7 @@ def _decision(row: LimitRow, found: Found) -> Decision:
 
 def _none_seen(row: LimitRow, none: str) -> Decision:
     """The charger shows no such thing: a declared stage, phase or trip that is missing is a fail of its limit."""
-    if row.finding in ("charge.current_after_end", "tap_trip.release"):
+    if row.finding in OPTIONAL:
         return Decision("not applicable", None, None, none)
     declared = row.words or (row.band.text if row.band is not None else row.expected)
     return Decision("fail", None, None, f"{none}; declared is {declared}")
@@ -272,7 +284,8 @@ def _none_seen(row: LimitRow, none: str) -> Decision:
 def _judged(row: LimitRow, found: Found) -> Decision:
     if row.kind == "state":
         assert row.expected is not None
-        return decide_state(found.seen, row.expected)
+        allowed = row.expected.split(OR)
+        return decide_state(found.seen, found.seen if found.seen in allowed and found.seen else row.expected)
     if row.kind == "class":
         assert row.expected is not None
         assert found.seen is not None

@@ -15,7 +15,7 @@ from sequencer.analysis.classify import Classification, classify
 from sequencer.analysis.estimates import Estimate, mean_between
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.accuracy import Accuracy
-from sequencer.engine.agreement import currents_differ
+from sequencer.engine.agreement import currents_differ, voltages_differ
 from sequencer.engine.endings import mains_doubt, mains_known, mains_witness, resumed_s
 from sequencer.engine.evidence import Evidence, Window
 from sequencer.engine.found import Found
@@ -32,7 +32,6 @@ LATELY_s = 10.0  # at the end of a charge that did not end
 IDLE_A = 10e-3  # what an idle charger may take from the pack: common practice, no source
 SURGE = 1.05  # times the first plateau: more is worth a word
 CLEAR = 0.9  # probability of the class seen, from which on a stage that is missing is missing
-FIXTURE_SHARE = 0.05  # of the drop between contacts and node: a ballast that has warmed since it was measured
 STAIRS_s = 30.0  # the last steps of the stand-in before the end
 SWING_V = 0.005  # per cell: the stand-in's own small steps stay far below
 SWINGS = 6  # turns in a row, each within TURN_WITHIN of the one before: a loop, not a charger's few steps
@@ -313,29 +312,9 @@ class ChargeStep:
     def _untrusted(self, estimate: Estimate) -> str | None:
         """What makes a voltage at the contacts no reading of the charger; None where nothing does."""
         window = estimate.start_s, estimate.end_s
-        return self._swinging or self._condition_lost(*window) or self._apart(*window)
-
-    def _apart(self, start_s: float, end_s: float) -> str | None:
-        """Why the charger's meter is not what node, current and fixture say; None where it is."""
-        standin = self._evidence.manifest.get("standin") or {}
-        voltage, fixture_ohm = self._voltage.within(start_s, end_s), standin.get("Rp_ohm")
-        node_V = self._evidence.trace("node.voltage").at(voltage.time_s)
-        drop_V = self._current.at(voltage.time_s) * (fixture_ohm or math.nan)
-        gaps_V = voltage.value - node_V - drop_V
-        if not np.any(np.isfinite(gaps_V)):
-            return None
-        gap_V, largest_V = float(np.nanmean(gaps_V)), float(np.nanmax(np.abs(drop_V)))
-        warm = Contribution.from_half_width("fixture", FIXTURE_SHARE * largest_V, source="a warm ballast")
-        lines = [
-            *self._accuracy.volts("node.charger_voltage", float(np.mean(voltage.value))),
-            *self._accuracy.volts("node.voltage", float(np.nanmean(node_V))),
-            warm,
-        ]
-        allowed_V = Budget(gap_V, "V", tuple(lines)).U
-        if abs(gap_V) <= allowed_V:
-            return None
-        told = f"charger's meter, and node's with the drop between them, differ by {si(gap_V, 'V')}"
-        return f"{told}; their uncertainty is {si(allowed_V, 'V')}"
+        return (
+            self._swinging or self._condition_lost(*window) or voltages_differ(self._evidence, self._accuracy, *window)
+        )
 
     def _threshold(self, number: int, plateau: Plateau | None) -> Found:
         if plateau is None:

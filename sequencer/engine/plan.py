@@ -70,6 +70,8 @@ def _times(step: Step, stand_in: StandIn, sweeping: Sweeping, first: bool) -> Ti
         return sweeping.raise_cells(step.raise_cell)
     if step.watch_taps is not None:
         return sweeping.watch_taps(step.watch_taps)
+    if step.start_low is not None:
+        return sweeping.start_low(step.start_low)
     return Times(0, 2 * specification.dwell.clear)
 
 
@@ -140,7 +142,18 @@ def _notes(inputs: Inputs) -> list[str]:
         why = passed_over(step, inputs.specification.model)
         if why is not None:
             notes.append(f"{step.kind} is passed over: {why}")
+    notes += [f"not run, no start voltage lies within {text}" for text in _unshown(inputs)]
     compressed = [step.charge.compression for step in inputs.procedure.model.steps if step.charge is not None]
     if any(times > 1 for times in compressed):
         notes.append("compressed charge: times and time-based ends of the charger are not judged")
     return notes
+
+
+def _unshown(inputs: Inputs) -> list[str]:
+    """Declared ranges of start voltages that are judged, and that no step shows."""
+    low = inputs.specification.model.low_start
+    if low is None or "low_start.response" not in inputs.procedure.model.judge:
+        return []
+    steps = [step.start_low for step in inputs.procedure.model.steps if step.start_low is not None]
+    shown_V = [cell_V for step in steps for cell_V in step.voltages]
+    return [one.cell_voltage.text for one in low.starts if not any(one.holds(cell_V) for cell_V in shown_V)]

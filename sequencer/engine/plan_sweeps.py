@@ -12,10 +12,10 @@ from drivers.text.measures import Band
 from sequencer.analysis.balance import sequence
 from sequencer.analysis.edges import expected_steps
 from sequencer.engine import insertion, resistors, tap_watch, walks
-from sequencer.engine.targets import ends, sides
+from sequencer.engine.targets import ends, sides, threshold_levels, weak_cells
 from sequencer.model.pack import Pack
 from sequencer.model.specification import Specification
-from sequencer.model.steps import RaiseCell, SweepId, SweepTemperature, WatchTaps
+from sequencer.model.steps import RaiseCell, StartLow, SweepId, SweepTemperature, WatchTaps
 
 PLACE_s = (
     0.3 + insertion.TAP_SETTLE_s + insertion.SIGNALS_s + insertion.PRECHARGE_s
@@ -116,3 +116,41 @@ class Sweeping:
         """Prepared, zeros, put in; every phase; taken out, zeros."""
         phases_s = len(sequence(self.pack.cells)) * tap_watch.phase_s(step)
         return self.charging + Times(0, PLACE_s + 2 * tap_watch.zero_s(step) + phases_s)
+
+    def start_low(self, step: StartLow) -> Times:
+        """Each start as it is declared; what is declared nothing for is taken to be refused."""
+        low = self.specification.low_start
+        declared = {cell_V: self._declared_start(cell_V) for cell_V in step.voltages}
+        times = self.charging
+        for response in declared.values():
+            times += self._low(response)
+        precharged = [cell_V for cell_V, response in declared.items() if "precharges" in response]
+        if precharged:
+            times += Times(0, self._raised_s(step, max(precharged)))
+        if precharged and step.hold:
+            given_up_s = low.precharge.time.high if low and low.precharge and low.precharge.time else None
+            times += self._low("precharges") + Times(0, min(step.hold, given_up_s or step.hold))
+        if weak := len(weak_cells(step, self.specification, self.pack.cells)):
+            times += self._low((low.weak_cell if low else None) or "refuses") * weak
+        return times
+
+    def _declared_start(self, cell_V: float) -> str:
+        low = self.specification.low_start
+        found = next((one for one in (low.starts if low else ()) if one.holds(cell_V)), None)
+        return "refuses" if found is None else found.response
+
+    def _low(self, response: str) -> Times:
+        """One insertion; a precharge is watched as long as a refusal, and needs no control."""
+        if response == "full current":
+            return self.charging
+        return self.refused + self.charging * (0 if "precharges" not in response else -1)
+
+    def _raised_s(self, step: StartLow, from_V: float) -> float:
+        """The search for the threshold, up to the middle of what is declared for it."""
+        low, dwell = self.specification.low_start, self.specification.dwell
+        band = low.precharge.threshold_per_cell if low is not None and low.precharge is not None else None
+        levels = threshold_levels(step, band, from_V)
+        known = [end for end in (band.low, band.high) if end is not None] if band is not None else []
+        middle_V = sum(known) / len(known) if known else step.end
+        count = sum(level < middle_V for level in levels) + 1
+        return min(count, len(levels)) * walks.DWELLS * dwell.response + insertion.SETTLE_s + insertion.MEAN_s

@@ -12,7 +12,7 @@ from drivers.clock import wall_seconds
 from drivers.open_bench import OpenBench
 from drivers.safe import SafeState, to_safe_state
 from drivers.trouble import BenchFault
-from sequencer.engine import fixture, methods, recovery, startup, sweeps, tap_watch, walks
+from sequencer.engine import fixture, low_starts, methods, recovery, startup, sweeps, tap_watch, walks
 from sequencer.engine.channels import CHANNELS
 from sequencer.engine.guard import Bounds, Guard, Trip
 from sequencer.engine.inputs import Inputs
@@ -222,6 +222,9 @@ def _words(step: Step) -> str:
         return "raising one cell after the other until the charge stops"
     if step.watch_taps is not None:
         return "watching the tap currents while the cells stand apart"
+    if step.start_low is not None:
+        volts = ", ".join(f"{cell_V:g}" for cell_V in sorted(step.start_low.voltages, reverse=True))
+        return f"starting a discharged pack, at {volts} V per cell"
     return "taking the pack out"
 
 
@@ -239,6 +242,8 @@ def _do(step: Step, site: Site) -> str:
         return walks.raise_cells(site, step.raise_cell)
     if step.watch_taps is not None:
         return tap_watch.watch_taps(site, step.watch_taps)
+    if step.start_low is not None:
+        return low_starts.start_low(site, step.start_low)
     methods.remove(site)
     return "removed"
 

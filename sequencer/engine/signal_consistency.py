@@ -7,6 +7,7 @@ from drivers.text.binding import Bound
 from drivers.text.faults import Faults
 from drivers.text.si import si
 from sequencer.analysis.balance import sequence
+from sequencer.engine import low_consistency
 from sequencer.engine.site import NOMINAL_C
 from sequencer.engine.tap_watch import phase_s
 from sequencer.engine.targets import ends, passed_over, sides
@@ -45,6 +46,8 @@ def check(
             _check_raise(procedure, place, step.raise_cell, pack, bench, faults)
         if step.watch_taps is not None and passed_over(step, specification.model) is None:
             _check_watch(procedure, place, step.watch_taps, specification, pack, bench, faults)
+        if step.start_low is not None and passed_over(step, specification.model) is None:
+            low_consistency.check(procedure, place, step.start_low, pack, bench, faults)
 
 
 Where = tuple[str | int, ...]
@@ -83,7 +86,9 @@ def _check_start(
     procedure: Bound[Procedure], place: Where, step: Step, pack: Bound[Pack], bench: BenchFile, faults: Faults
 ) -> None:
     """Every voltage at which a pack is put in: within the pack's table, and one that the load can sink."""
-    start = step.insert or step.sweep_id or step.sweep_temperature or step.raise_cell or step.watch_taps
+    start = (
+        step.insert or step.sweep_id or step.sweep_temperature or step.raise_cell or step.watch_taps or step.start_low
+    )
     if start is None:
         return
     name, _, dialect = bench.at("node.load")

@@ -24,6 +24,7 @@ class Situation:
     id: Setpoint | None = None
     thermistor: Setpoint | None = None
     offsets_V: tuple[float, ...] = ()  # of each cell against the mean, lowest first; they sum to zero
+    held: bool = False  # the pack's open-circuit voltage stands where it was set, whatever is charged
 
 
 @dataclass
@@ -62,25 +63,35 @@ class Site:
 
     @property
     def nominal_id(self) -> Setpoint:
-        if self.pack.id is not None:
-            return self.pack.id
-        bands = self.specification.id_bands
-        return nominal_in(bands[0].low_ohm, bands[0].high_ohm) if bands else "open"
+        return nominal_id(self.specification, self.pack)
 
     def ohm_at(self, celsius: float) -> Setpoint:
         return "open" if self.curve is None else self.curve.ohm_at(celsius)
 
     def nominal_current(self) -> tuple[float, float]:
         """Low and high of the current that a nominal pack is declared to get, A."""
-        stage = self.specification.charge.stages[0].current
-        for band in self.specification.id_bands:
-            if isinstance(self.nominal_id, float) and band.low_ohm <= self.nominal_id <= band.high_ohm:
-                stage = band.current
-        low = stage.low if stage.low is not None and stage.low > 0 else (stage.high or 0.0)
-        return low, stage.high or math.inf
+        return nominal_current(self.specification, self.pack)
 
     def declared_currents(self) -> list[tuple[float, float]]:
         """(low, high) of each current that an ID can select; the nominal one where none are declared."""
         bands = [(band.current.low, band.current.high) for band in self.specification.id_bands]
         known = [(low, high) for low, high in bands if low is not None and high is not None and low > 0]
         return known or [self.nominal_current()]
+
+
+def nominal_id(specification: Specification, pack: Pack) -> Setpoint:
+    """The ID resistance of a pack that must be charged, Ω; "open" where none is declared."""
+    if pack.id is not None:
+        return pack.id
+    bands = specification.id_bands
+    return nominal_in(bands[0].low_ohm, bands[0].high_ohm) if bands else "open"
+
+
+def nominal_current(specification: Specification, pack: Pack) -> tuple[float, float]:
+    """Low and high of the current that a nominal pack is declared to get, A."""
+    stage, ohm = specification.charge.stages[0].current, nominal_id(specification, pack)
+    for band in specification.id_bands:
+        if isinstance(ohm, float) and band.low_ohm <= ohm <= band.high_ohm:
+            stage = band.current
+    low = stage.low if stage.low is not None and stage.low > 0 else (stage.high or 0.0)
+    return low, stage.high or math.inf

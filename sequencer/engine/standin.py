@@ -91,7 +91,10 @@ class Trail:
 
 @dataclass
 class StandIn:
-    """The pack as it stands: `node_V` is what the supply is set to."""
+    """The pack as it stands: `node_V` is what the supply is set to.
+
+    held : its open-circuit voltage stands where it was set, whatever is charged.
+    """
 
     pack: Pack
     soc: float
@@ -99,12 +102,16 @@ class StandIn:
     relaxation_V: float = 0.0
     compression: float = 1.0
     trail: Trail = field(default_factory=Trail)
-    held: bool = False  # the state of charge stands still
+    held: bool = False
 
     @classmethod
-    def inserted(cls, pack: Pack, cell_V: float) -> StandIn:
+    def inserted(cls, pack: Pack, cell_V: float, held: bool = False) -> StandIn:
         soc = pack.soc_at(cell_V)
-        return cls(pack, soc, pack.ocv_V(soc))
+        return cls(pack, soc, pack.ocv_V(soc), held=held)
+
+    def stand_at(self, cell_V: float) -> None:
+        """Another open-circuit voltage per cell; the node goes there in steps of LARGEST_MOVE_V, scan by scan."""
+        self.soc = self.pack.soc_at(cell_V)
 
     @property
     def ocv_V(self) -> float:

@@ -9,7 +9,7 @@ from drivers.text.measures import Band
 from sequencer.analysis.classes import Seen
 from sequencer.model.signals import IdBand
 from sequencer.model.specification import Specification
-from sequencer.model.steps import Step, SweepTemperature
+from sequencer.model.steps import StartLow, Step, SweepTemperature
 
 SideName = Literal["lower", "upper"]
 
@@ -23,6 +23,8 @@ def passed_over(step: Step, specification: Specification) -> str | None:
         return "the specification declares no tap_trip"
     if step.watch_taps is not None and specification.balancing is None:
         return "the specification declares nothing about balancing"
+    if step.start_low is not None and specification.low_start is None:
+        return "the specification declares no low_start"
     return None
 
 
@@ -89,6 +91,35 @@ def ends(band: Band, cold: bool, step: SweepTemperature) -> tuple[float, float]:
     known = [value for value in (band.low, band.high, band.nominal) if value is not None]
     low, high = min(known, default=0.0), max(known, default=0.0)
     return (high + step.resolution, low - step.beyond) if cold else (low - step.resolution, high + step.beyond)
+
+
+COARSE = 5  # times the small step: on the way to where the threshold is declared
+
+
+def threshold_levels(step: StartLow, threshold: Band | None, from_V: float) -> list[float]:
+    """Open-circuit voltages per cell through which a precharged pack is raised, V; small steps where none is declared.
+
+    from_V : the start voltage, at which it precharges already.
+    """
+    near_V = from_V if threshold is None or threshold.low is None else threshold.low - step.by
+    coarse = max(0, int((near_V - from_V) / (COARSE * step.by) + 1e-6))
+    levels = [from_V + number * COARSE * step.by for number in range(1, coarse + 1)]
+    base_V = levels[-1] if levels else from_V
+    fine = int((step.end - base_V) / step.by + 1e-6)
+    return [round(level, 6) for level in (*levels, *(base_V + number * step.by for number in range(1, fine + 1)))]
+
+
+def weak_offsets(cells: int, weak: int, weak_V: float, others_V: float) -> tuple[float, tuple[float, ...]]:
+    """Mean voltage of the cells, and each cell's offset from it, of a pack in which cell `weak` (from 1) is low; V."""
+    mean_V = (weak_V + (cells - 1) * others_V) / cells
+    return mean_V, tuple((weak_V if cell == weak else others_V) - mean_V for cell in range(1, cells + 1))
+
+
+def weak_cells(step: StartLow, specification: Specification, cells: int) -> range:
+    """Cells, from 1, that are shown weak; none where nothing is declared for one."""
+    low = specification.low_start
+    shown = step.weak_cell is not None and low is not None and low.weak_cell is not None
+    return range(1, cells + 1 if shown else 1)
 
 
 def starts(seen: Seen) -> str:

@@ -23,7 +23,7 @@ class Definition(BaseModel):
     kind: Kind
     unit: str = ""
     per: Literal["cell"] | None = None
-    each: Literal["stage", "band", "cell"] | None = None
+    each: Literal["stage", "band", "cell", "start"] | None = None
     measures: str
     when: str
     statistic: str

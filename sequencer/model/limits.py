@@ -15,8 +15,8 @@ from sequencer.model.specification import Specification
 class LimitRow:
     """One thing to be judged: `band` for a quantity or an interval, `expected` for a state or a class.
 
-    Neither: not declared. `place`: which stage, band or cell, from 1. `words`: how the specification writes the limit.
-    `least`: the smallest amount of what is expected to be found.
+    Neither: not declared. `place`: which stage, band, cell or range of start voltages, from 1. `words`: how the
+    specification writes the limit. `least`: the smallest amount of what is expected to be found.
     """
 
     name: str
@@ -55,20 +55,21 @@ class Declared:
     def _rows(self, name: str, rule: Rule | None) -> list[LimitRow]:
         spec = self.specification
         counts = {"stage": len(spec.charge.stages), "band": len(spec.id_bands), "cell": self.cells}
+        counts["start"] = 0 if spec.low_start is None else len(spec.low_start.starts)
         each = definitions()[name].each
         if each is None:
             return [self._row(name, name, None, rule)]
         family, _, what = name.rpartition(".")
-        if each == "cell" and not self._by_cell(name):
+        if self._undeclared(each, name):
             return [self._row(name, name, 1, rule)]  # one line says that nothing is declared, not one for each cell
         top = family.partition(".")[0]
         return [self._row(f"{top}.{each}{place}.{what}", name, place, rule) for place in range(1, counts[each] + 1)]
 
-    def _by_cell(self, name: str) -> bool:
-        """Whether something is declared of each cell."""
-        if name.startswith("balancing."):
-            return self.specification.balancing is not None and self.specification.balancing.current is not None
-        return self.specification.tap_trip is not None
+    def _undeclared(self, each: str, name: str) -> bool:
+        """Whether nothing is declared for any cell or start voltage."""
+        if name.startswith("tap_trip."):
+            return self.specification.tap_trip is None
+        return each in ("cell", "start") and self._declared(name, 1) is None
 
     def _row(self, label: str, name: str, place: int | None, rule: Rule | None) -> LimitRow:
         definition = definitions()[name]
@@ -87,7 +88,12 @@ class Declared:
 
     def _family_rule(self, name: str) -> Rule:
         spec = self.specification
-        declared = {"temperature": spec.temperature, "tap_trip": spec.tap_trip, "balancing": spec.balancing}
+        declared: dict[str, Any] = {
+            "temperature": spec.temperature,
+            "tap_trip": spec.tap_trip,
+            "balancing": spec.balancing,
+            "low_start": spec.low_start,
+        }
         family: Any = declared.get(name.partition(".")[0])
         rule: Rule | None = getattr(family, "rule", None)
         return rule or spec.rule
@@ -121,6 +127,8 @@ class Declared:
                 return found
             case "balancing":
                 return self._of_balancing(what)
+            case "low_start":
+                return self._of_low_start(what, place)
         raise KeyError(name)
 
     def _of_balancing(self, what: str) -> Band | str | None:
@@ -153,6 +161,19 @@ class Declared:
         """With bands declared, anything else must not charge, unless the specification says otherwise."""
         said: str | None = getattr(self.specification.id_elsewhere, what)
         return said or ("no charge" if self.specification.id_bands else None)
+
+    def _of_low_start(self, what: str, place: int | None) -> Band | str | None:
+        low = self.specification.low_start
+        if low is None:
+            return None
+        if what == "response":
+            return low.starts[(place or 1) - 1].response if low.starts else None
+        if what == "weak_cell":
+            return low.weak_cell
+        part: Any = low.precharge if what in ("precharge_current", "threshold", "precharge_time") else low.probe
+        keys = {"threshold": "threshold_per_cell"}
+        found: Band | None = getattr(part, keys.get(what, what.rpartition("_")[2]), None)
+        return found
 
     def _of_temperature(self, what: str) -> Band | str | None:
         window = self.specification.temperature

@@ -19,6 +19,11 @@ from drivers.text.measures import (
     refuse,
 )
 
+# Below the table's 0 % the cell's voltage goes on along a steep line, 50 V per 1: 1 V within 2 % of the capacity.
+# A steep line of small capacity is common practice; published tables of a 4.2 Ah and a 4.0 Ah cell fall by 26 and 62 V
+# per 1 at their low end (2.898 V at 1.51 % and 2.808 V at 0.50 % to 2.506 V and 2.500 V). Where a start voltage is
+# shown it is held, so no verdict hangs on this.
+EMPTY_SLOPE_V = 50.0
 CELL_MARGIN_V = 0.15  # above the full cell's OCV: still seen as the charger's, not yet a bench in danger
 
 
@@ -63,19 +68,25 @@ class Pack(Written):
         return self.cell_voltage_max or self.ocv[-1][1] + CELL_MARGIN_V
 
     def ocv_V(self, soc: float) -> float:
-        """Open-circuit voltage of the pack at a state of charge (0..1; extrapolated by the last slope outside)."""
+        """Open-circuit voltage of the pack; above 1 by the last slope, below 0 by EMPTY_SLOPE_V."""
+        if soc < 0.0:
+            return self.cells * (self.ocv[0][1] + EMPTY_SLOPE_V * soc)
         left = self._segment([point[0] for point in self.ocv], soc)
         (soc_a, volt_a), (soc_b, volt_b) = self.ocv[left], self.ocv[left + 1]
         return self.cells * (volt_a + (volt_b - volt_a) * (soc - soc_a) / (soc_b - soc_a))
 
     def slope_V(self, soc: float) -> float:
         """d OCV / d SoC of the pack, in V per 1."""
+        if soc < 0.0:
+            return self.cells * EMPTY_SLOPE_V
         left = self._segment([point[0] for point in self.ocv], soc)
         (soc_a, volt_a), (soc_b, volt_b) = self.ocv[left], self.ocv[left + 1]
         return self.cells * (volt_b - volt_a) / (soc_b - soc_a)
 
     def soc_at(self, cell_V: float) -> float:
-        """State of charge at which a cell has this open-circuit voltage, held to 0..1."""
+        """State of charge at which a cell has this open-circuit voltage, at most 1; below 0 for a discharged cell."""
+        if cell_V < self.ocv[0][1]:
+            return (cell_V - self.ocv[0][1]) / EMPTY_SLOPE_V
         left = self._segment([point[1] for point in self.ocv], cell_V)
         (soc_a, volt_a), (soc_b, volt_b) = self.ocv[left], self.ocv[left + 1]
         return min(max(soc_a + (soc_b - soc_a) * (cell_V - volt_a) / (volt_b - volt_a), 0.0), 1.0)

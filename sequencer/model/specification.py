@@ -19,6 +19,7 @@ from drivers.text.measures import (
     VoltLimit,
     refuse,
 )
+from sequencer.model.low_start import LowStart
 from sequencer.model.signals import Balancing, IdBand, IdElsewhere, TapTrip, TemperatureWindow
 
 Algorithm = Literal["cc-cv", "stepped-cc", "stepped-cc-cv", "cc-only", "cv-only", "constant-power", "pulsed"]
@@ -77,6 +78,7 @@ class Specification(Written):
     id_elsewhere: IdElsewhere = IdElsewhere()
     temperature: TemperatureWindow | None = None
     tap_trip: TapTrip | None = None
+    low_start: LowStart | None = None
     balancing: Balancing | None = None
 
     @model_validator(mode="after")

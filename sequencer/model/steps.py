@@ -10,13 +10,15 @@ from drivers.text.measures import Celsius, Measure, PositiveSeconds, PositiveVol
 
 MAX_COMPRESSION = 100.0
 MAX_REPEATS = 20
+MOST_STARTS = 12
 MOST_OFFSET_V = 0.100
 SHORTEST_PERIOD_s, LONGEST_PERIOD_s = 2.0, 3600.0
-KINDS = ("insert", "charge", "remove", "sweep_id", "sweep_temperature", "raise_cell", "watch_taps")
+KINDS = ("insert", "charge", "remove", "sweep_id", "sweep_temperature", "raise_cell", "start_low", "watch_taps")
 SWEEPS = {  # and what they find
     "sweep_id": "id",
     "sweep_temperature": "temperature",
     "raise_cell": "tap_trip",
+    "start_low": "low_start",
     "watch_taps": "balancing",
 }
 
@@ -117,6 +119,41 @@ class RaiseCell(_Part):
         return self
 
 
+def _voltages(value: Any) -> Any:
+    """A list of voltages as a tuple; the same one twice, or none at all, is refused."""
+    if isinstance(value, list):
+        if not 1 <= len(value) <= MOST_STARTS:
+            raise refuse(f"from 1 to {MOST_STARTS} start voltages were expected, such as [2.0 V, 2.5 V, 2.9 V]")
+        return tuple(value)
+    return value
+
+
+class StartLow(_Part):
+    """Put a discharged pack in, at each of these voltages per cell; find where a precharge goes over to full current.
+
+    Each is an insertion of its own, held at its voltage; what is not charged stands between two controls. Then, with
+    `weak_cell`, one cell after the other is low and the others are normal.
+    """
+
+    cell_voltage: PositiveVolts = Field(description="of the control, and of the normal cells beside a weak one")
+    voltages: Annotated[tuple[PositiveVolts, ...], BeforeValidator(_voltages)]
+    weak_cell: PositiveVolts | None = None
+    end: PositiveVolts = Field(3.30, alias="to", description="the search for the threshold ends here")
+    by: PositiveVolts = Field(0.020, description="step of that search near the declared threshold")
+    hold: Seconds = Field(0.0, description="one more precharge is held so long, to see whether it is given up")
+
+    @model_validator(mode="after")
+    def _rises(self) -> StartLow:
+        if len(set(self.voltages)) != len(self.voltages):
+            raise refuse("'voltages' names one voltage twice")
+        low = max((*self.voltages, self.weak_cell or 0.0))
+        if not low < self.end or not low < self.cell_voltage:
+            raise refuse("'to' and 'cell_voltage' must lie above every start voltage")
+        if (self.end - min(self.voltages)) / self.by > 300:
+            raise refuse("more than 300 steps from the lowest start voltage to 'to'; take a larger 'by'")
+        return self
+
+
 class WatchTaps(_Part):
     """Watch the currents of all cell taps while the cells stand apart, the pack's voltage and state of charge held."""
 
@@ -144,6 +181,7 @@ class Step(_Part):
     sweep_id: SweepId | None = None
     sweep_temperature: SweepTemperature | None = None
     raise_cell: RaiseCell | None = None
+    start_low: StartLow | None = None
     watch_taps: WatchTaps | None = None
     expect: Literal["charges"] | None = Field(None, description="what must be seen; if not, a fail, and the run ends")
     finding: str | None = Field(None, description="name under which the step's findings are judged")

@@ -45,6 +45,12 @@ id_bands:
 temperature: {curve: ntc-10k-3435, start: [3 °C ± 2 °C, 45 °C ± 2 °C], run: [0 °C ± 2 °C, 50 °C ± 2 °C]}
 tap_trip: {voltage: [4.20 V, 4.28 V], stop_time: {below: 2 s}, release: resumes, rule: simple}
 balancing: {none_above: 1 mA}
+low_start:
+  starts:
+    - {cell_voltage: [0.7 V, 1.4 V], response: refuses}
+    - {cell_voltage: [1.5 V, 2.95 V], response: [precharges, probes and refuses]}
+  precharge: {current: 0.25 A ± 20 %, threshold_per_cell: 3.00 V ± 50 mV}
+  weak_cell: refuses
 """
 CURVE = """packmime: curve 1
 name: ntc-10k-3435
@@ -89,7 +95,7 @@ def breadth_parts() -> Json:
     content, more = parts(), json.loads(Path(__file__).with_name("breadth.json").read_text(encoding="utf-8"))
     content["verdicts"]["verdicts"] += more["verdicts"]
     content["findings"]["findings"] += more["findings"]
-    content["findings"] |= {name: more[name] for name in ("points", "walks", "balancing")}
+    content["findings"] |= {name: more[name] for name in ("points", "walks", "low_starts", "balancing")}
     content["budgets"] |= more["budgets"]
     content["judgement"]["not_part_of_procedure"] = ["charge.cutoff"]
     return content

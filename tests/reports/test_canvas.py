@@ -14,6 +14,8 @@ from reports.cell_figure import draw_cell_map
 from reports.cell_map import cell_map
 from reports.id_figure import draw_id_map
 from reports.id_map import id_map
+from reports.low_start_figure import draw_low_start_map
+from reports.low_start_map import low_start_map
 from reports.tap_figure import draw_tap_map
 from reports.tap_map import tap_map
 from reports.temperature_figure import draw_temperature_map
@@ -24,7 +26,7 @@ from sequencer.model.specification import Specification
 SVG = "{http://www.w3.org/2000/svg}"
 
 
-@pytest.fixture(params=["charge", "id", "temperature", "cells", "taps"])
+@pytest.fixture(params=["charge", "id", "temperature", "cells", "taps", "low"])
 def drawn(request: pytest.FixtureRequest, breadth: dict, declared: Specification, sensor: Curve) -> Callable[[], Any]:
     """Each figure, drawn anew at each call."""
     findings, verdicts = breadth["findings"], breadth["verdicts"]["verdicts"]
@@ -35,6 +37,7 @@ def drawn(request: pytest.FixtureRequest, breadth: dict, declared: Specification
         "temperature": lambda: draw_temperature_map(temperature_map(findings, verdicts, declared, sensor)),
         "cells": lambda: draw_cell_map(cell_map(findings["walks"], verdicts, declared)),
         "taps": lambda: draw_tap_map(tap_map(findings["balancing"], declared)),
+        "low": lambda: draw_low_start_map(low_start_map(findings["low_starts"], verdicts, declared)),
     }[request.param]
 
 

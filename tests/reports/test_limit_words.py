@@ -9,8 +9,8 @@ from sequencer.model.findings import definitions
 def test_every_finding_of_the_table_has_words() -> None:
     for name, one in definitions().items():
         limit = name if one.each is None else name.replace(f".{one.each}.", f".{one.each}1.")
-        if one.each == "cell":
-            limit = name.replace(".", ".cell1.")
+        if one.each in ("cell", "start"):
+            limit = name.replace(".", f".{one.each}1.")
         assert limit_words({"finding": name, "limit": limit}), name
 
 

@@ -40,11 +40,20 @@ def test_between_published_points(soc: float, ocv_V: float) -> None:
 def test_state_of_charge_at_a_voltage() -> None:
     assert pack_of().soc_at(3.70) == pytest.approx(0.45620, abs=1e-5)  # computed
     assert pack_of(5).soc_at(3.70) == pack_of().soc_at(3.70)  # per cell
-    assert pack_of().soc_at(2.0) == 0.0
     assert pack_of().soc_at(5.0) == 1.0
 
 
-@given(st.floats(0.0, 1.0), st.integers(1, 20))
+def test_below_the_table_a_cell_falls_steeply() -> None:
+    """50 V per 1 of charge. Two published tables (21700 cells, OCV at C/32 and C/20) end at their empty side with
+    2.8981 V at 1.51 % to 2.5061 V, and 2.8080 V at 0.50 % to 2.5000 V: 26 and 62 V per 1 (computed)."""
+    pack = pack_of()
+    assert (2.8981 - 2.5061) / 0.0151 < pack.slope_V(-0.01) < (2.8080 - 2.5000) / 0.0050
+    assert pack.soc_at(1.6929) == pytest.approx(-0.02)
+    assert pack.ocv_V(0.0) == pytest.approx(2.6929)
+    assert pack.ocv_V(-1e-9) == pytest.approx(2.6929)  # without a jump at 0 %
+
+
+@given(st.floats(-0.04, 1.0), st.integers(1, 20))
 def test_there_and_back(soc: float, cells: int) -> None:
     pack = pack_of(cells)
     assert pack.soc_at(pack.ocv_V(soc) / cells) == pytest.approx(soc, abs=1e-9)
