@@ -23,6 +23,7 @@ FRAGMENT_TIME = 0.02  # of a run: what is shorter may be a piece of a slope
 LEAST_SLOPE = 4  # samples: less may be a transition
 LEAST_TIME = 0.005  # of a run: what is shorter is a transition
 FLOAT_SHARE = 0.12  # of the largest plateau: a plateau below, after the charge, is a float
+NOISE_SIGMAS = 4.0  # by so much single readings of one level may differ
 FLOAT_DROP = 0.6  # of the current before: how far the current falls at once into a float
 
 
@@ -115,11 +116,21 @@ def _slope(trace: Trace, start: int, stop: int, level_A: float) -> Phase:
 def _with_float(trace: Trace, group: list[Segment], held: Held) -> list[Phase]:
     """The held voltage, and the float where it ends in a low plateau that the current fell to at once."""
     plain = Phase("cv", held.start, held.stop, float(trace.current_A[held.start]), held.fall, held.levels)
-    for before, tail in itertools.pairwise(group if not held.levels else []):
-        low = tail.kind == "flat" and tail.level_A <= FLOAT_SHARE * trace.scale_A
-        if low and tail.level_A <= FLOAT_DROP * float(trace.current_A[before.stop - 1]):
-            return [replace(plain, stop=before.stop), Phase("float", tail.start, held.stop, tail.level_A)]
+    for number, before in enumerate(group[:-1] if not held.levels else []):
+        low = _low_plateau(trace, group[number + 1 :])
+        if low is not None and low.level_A <= FLOAT_DROP * float(trace.current_A[before.stop - 1]):
+            return [replace(plain, stop=before.stop), Phase("float", group[number + 1].start, held.stop, low.level_A)]
     return [plain]
+
+
+def _low_plateau(trace: Trace, tail: list[Segment]) -> Segment | None:
+    """The plateau of a float that begins with the first segment: noise may make a slope of its first readings."""
+    flat = next((segment for segment in tail if segment.kind == "flat"), None)
+    if flat is None or flat.level_A > FLOAT_SHARE * trace.scale_A:
+        return None
+    leading = tail[: tail.index(flat)]
+    near_A = max(SAME_LEVEL * flat.level_A, NOISE_SIGMAS * trace.noise_A)
+    return flat if all(abs(segment.level_A - flat.level_A) <= near_A for segment in leading) else None
 
 
 def _merged(trace: Trace, phases: list[Phase]) -> list[Phase]:
@@ -211,7 +222,7 @@ def _little_below(phases: list[Phase], index: int) -> bool:
 
 def same_level(trace: Trace, a_A: float, b_A: float) -> bool:
     """Whether two plateau currents are one setting."""
-    return abs(a_A - b_A) <= max(SAME_LEVEL * max(a_A, b_A), trace.noise_A)
+    return abs(a_A - b_A) <= max(SAME_LEVEL * max(a_A, b_A), 2.0 * trace.noise_A)
 
 
 def _foldback_marked(trace: Trace, phases: list[Phase]) -> list[Phase]:

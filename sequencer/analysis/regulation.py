@@ -66,7 +66,7 @@ def _held_within(trace: Trace, segments: list[Segment], last: int, share: float)
     fall = 1.0 - _smooth_end(trace, start, stop) / before if before > 0.0 else 0.0
     if fall < LEAST_FALL or _passed_later(trace, segments, stop) or _folds_back(trace, start, stop, fall):
         return None
-    if not _one_regulation(trace, group, before):
+    if not _one_regulation(trace, group, start, before):
         return None
     flats = sum(segment.kind == "flat" for segment in group)
     voltage = float(np.median(trace.voltage_V[start:stop]))
@@ -143,10 +143,13 @@ def _current_before(trace: Trace, segments: list[Segment], first: int, start: in
     return before.level_A if before.kind == "flat" else float(trace.current_A[before.stop - 1])
 
 
-def _one_regulation(trace: Trace, group: list[Segment], before_A: float) -> bool:
-    """A smooth fall, or so many and so small digital steps that nobody would call them stages."""
+def _one_regulation(trace: Trace, group: list[Segment], start: int, before_A: float) -> bool:
+    """A smooth fall, or so many and so small digital steps that nobody would call them stages.
+
+    start : where the voltage begins to be held; the last samples of a slope before a step down are no smooth fall.
+    """
     flats = [segment for segment in group if segment.kind == "flat"]
-    smooth_s = sum(trace.duration(s.start, s.stop) for s in group if s.kind != "flat")
+    smooth_s = sum(trace.duration(max(s.start, start), s.stop) for s in group if s.kind != "flat")
     flat_s = sum(trace.duration(s.start, s.stop) for s in flats)
     if not flats or smooth_s > flat_s:
         return True

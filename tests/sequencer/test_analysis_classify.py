@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from hypothesis import assume, given, settings
+from hypothesis import assume, example, given, settings
 from hypothesis import strategies as st
 from ruamel.yaml import YAML
 
@@ -251,8 +251,24 @@ def test_precharge_is_a_stage(pack: Callable[..., Any], drawn: dict[str, Any], s
     assert found.stages[0].kind == "precharge"
 
 
+NOISY_FLOATS = [  # a slope made of the first readings of a float, its first readings a plateau of their own, a held one
+    (5, 1.037109375, 0.099609375, 0.0006004551679450284, 1672780),
+    (10, 1.5474774067669879, 0.16199442872039088, 0.0007873098446132463, 635320306),
+    (10, 1.3458670800430454, 0.16635279397860636, 0.0005753109323288646, 3070649517),
+]
+
+
+def noisy(number: int) -> dict[str, Any]:
+    cells, rate, resistance, noise, seed = NOISY_FLOATS[number]
+    drawn = {"cells": cells, "rate": rate, "resistance": resistance, "noise": noise, "seed": seed}
+    return drawn | {"capacity_Ah": 0.02, "period_s": 5.0, "grid_V": 0.0}
+
+
 @FEW
 @given(CHARGES)
+@example(noisy(0))
+@example(noisy(1))
+@example(noisy(2))
 def test_float_and_top_up_after_the_charge(pack: Callable[..., Any], drawn: dict[str, Any]) -> None:
     charge = Charge(pack, drawn | {"grid_V": 0.0, "noise": min(drawn["noise"], 0.001)})
     charge.pack.constant_current(charge.current_A, charge.limit_V)
