@@ -1,6 +1,6 @@
 """The whole assay of `acceptance`: its claims are met, nobody cries wolf, and it is done in time.
 
-Bounds: 6 chargers and 12 defects in 2 minutes on 2 cores; 100 s here leave room for a busy machine.
+Bound: 6 chargers and 12 defects in 2 minutes on 2 cores, which is so much a run; more defects take longer.
 """
 
 from __future__ import annotations
@@ -31,4 +31,5 @@ def test_acceptance_finds_what_it_claims_and_nothing_on_sound_chargers() -> None
     assert len(found) >= 12
     assert all(defect["found"] for defect in shown["defects"] if defect["claimed"])
     assert sum(defect["claimed"] for defect in shown["defects"]) >= 4
-    assert spent_s < 100
+    assert len(shown["sound"]) >= 6
+    assert spent_s / runs < 120.0 / (6 + 12)
