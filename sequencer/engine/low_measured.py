@@ -32,12 +32,13 @@ def precharge_current(starts: LowStarts, limit: Band | None) -> Found:
         lines.append(
             Contribution.from_readings("repeatability", estimate.s, estimate.n_eff, source=f"{estimate.n} readings")
         )
+    count = len(starts.precharged)
     return Found(
         Budget(estimate.value, "A", tuple(lines)),
-        n=len(starts.precharged),
+        n=count,
         start_s=estimate.start_s,
         end_s=estimate.end_s,
-        words=f"at {point.where}, of {len(starts.precharged)} starts that were precharged",
+        words=f"at {point.where}" + (f", of {count} starts precharged the closest to a limit" if count > 1 else ""),
         trouble=point.astray
         or currents_differ(starts.evidence, starts.accuracy, point.end_s - MEAN_s, point.end_s)
         or _shunt_wrong(starts),
