@@ -9,9 +9,10 @@ import numpy as np
 from drivers.text.measures import Band
 from drivers.text.si import si
 from sequencer.analysis.edges import EdgeInterval, end_budget
-from sequencer.analysis.low_start import NOTHING_A, Pulse
+from sequencer.analysis.low_start import NOTHING_A, PULSE_A, Pulse
 from sequencer.analysis.uncertainty import Budget, Contribution
 from sequencer.engine.agreement import currents_differ, voltages_differ
+from sequencer.engine.evidence import Trace
 from sequencer.engine.found import Found
 from sequencer.engine.insertion import MEAN_s
 from sequencer.engine.low_points import LowStartPoint, LowStarts
@@ -19,6 +20,7 @@ from sequencer.engine.low_points import LowStartPoint, LowStarts
 APERTURE_s = 0.02  # of a reading at one cycle of a 50 Hz line: a pulse that ends within it is seen
 MEETS = 0.05  # of a pulse's largest reading: a second one within it is of the same height
 SETTLED_s = 1.0  # of a step, before its end
+NO_CONTROL = "no good control followed, though the mains were cycled: no mains behind the switch, or the charger died"
 
 
 def precharge_current(starts: LowStarts, limit: Band | None) -> Found:
@@ -62,6 +64,11 @@ def _no_precharge(starts: LowStarts) -> Found:
     unsure = next((p for p in starts.starts if p.void or starts.untold(p) is not None), None)
     if unsure is not None:
         return Found(trouble=f"whether it precharges cannot be told at {unsure.where}: {unsure.response.words}")
+    low = starts.evidence.specification.low_start
+    where = [one for one in low.starts if one.response == "precharges"] if low is not None else []
+    if where and not any(one.holds(point.cell_V) for one in where for point in starts.starts):
+        told = " or ".join(one.cell_voltage.text for one in where)
+        return starts.not_shown(f"a precharge is declared for {told}, where no start voltage of the procedure lies")
     kinds = ", ".join(f"{point.cell_V:.2f} V: {point.response.kind}" for point in starts.starts)
     return Found(none=f"no start was precharged ({kinds})", start_s=starts.starts[0].start_s)
 
@@ -78,7 +85,7 @@ def threshold(starts: LowStarts) -> Found:
         return starts.not_shown("the pack's voltage was not raised")
     number = next((n for n, event in enumerate(steps) if _over_s(starts, event) is not None), None)
     if number is None:
-        return _no_threshold(starts, steps[-1])
+        return _no_threshold(starts, raised, steps[-1])
     return _between(starts, raised, steps, number)
 
 
@@ -133,12 +140,14 @@ def _steady_before(starts: LowStarts, moment_s: float) -> str | None:
     return "the precharge had ended before full current came"
 
 
-def _no_threshold(starts: LowStarts, last: dict[str, Any]) -> Found:
+def _no_threshold(starts: LowStarts, raised: LowStartPoint, last: dict[str, Any]) -> Found:
     current = starts.evidence.trace("charger.current").within(last["end_s"] - SETTLED_s, last["end_s"]).value
     step = next((s.start_low for s in starts.evidence.procedure.steps if s.start_low is not None), None)
     if step is None or last["cell_V"] < step.end - step.by:
         return starts.not_shown(f"still precharging at {last['cell_V']:.2f} V, when it ended")
     still = bool(current.size) and float(np.mean(current)) > NOTHING_A
+    if not still and raised.void:
+        return Found(trouble=f"the precharge ended while the pack was raised; {NO_CONTROL}")
     what = "still precharging" if still else "the precharge ended without full current"
     return Found(none=f"{what} with the pack at {last['cell_V']:.2f} V per cell", end_s=last["end_s"])
 
@@ -167,10 +176,22 @@ def precharge_time(starts: LowStarts, limit: Band | None) -> Found:
         Contribution.from_half_width("spacing of the readings at the start", first_half_s, source="pace"),
     )
     value_s = float(current.time_s[stop]) - half_s - begin_s
-    what = "full current" if current.value[stop] > starts.full_A else "no current"
+    full = bool(current.value[stop] > starts.full_A)
+    what = "full current" if full else "no current"
     return Found(
-        Budget(value_s, "s", lines), n=1, start_s=begin_s, end_s=float(current.time_s[stop]), words=f"then {what}"
-    )
+        Budget(value_s, "s", lines), n=1, start_s=begin_s, end_s=float(current.time_s[stop]), words=f"then {what}",
+        trouble=None if full else _mains_doubt(held, current, stop),
+    )  # fmt: skip
+
+
+def _mains_doubt(held: LowStartPoint, current: Trace, stop: int) -> str | None:
+    """Why a precharge that ended in no current may have been ended by its mains; None where it charges again after."""
+    ended = f"the precharge ended at {current.time_s[stop]:.1f} s"
+    again = np.flatnonzero(current.value[stop:] > PULSE_A)
+    if again.size:
+        told = f"{ended} and began again by itself at {current.time_s[stop + int(again[0])]:.1f} s"
+        return f"{told}: a charger that restarts, or mains that were gone for a while; this bench cannot tell"
+    return f"{ended}; {NO_CONTROL}" if held.void else None
 
 
 def _pulses(starts: LowStarts) -> list[tuple[LowStartPoint, Pulse]]:

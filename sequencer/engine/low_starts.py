@@ -70,12 +70,13 @@ def _show(site: Site, step: StartLow, situation: Situation, role: str, cell_V: f
     start_s, watch = site.loop.now_s, _Watch.of(site)
     seen = watch.to_the_end()
     end_s = site.loop.now_s
+    goes_on = seen.kind in CHARGED
     if seen.kind == "precharges" and role == "start, raised":
-        _raise(site, step, cell_V)
+        goes_on = _raise(site, step, cell_V)
     if seen.kind == "precharges" and role == "hold":
-        _hold(site, step, watch.full_A)
+        goes_on = _hold(site, step, watch)
     insertion.take_out(site)
-    void = seen.kind not in CHARGED and not controlled(site, step.cell_voltage)
+    void = not goes_on and not controlled(site, step.cell_voltage)
     site.loop.event(
         "low-start",
         role=role,
@@ -135,8 +136,8 @@ class _Watch:
         return self._full_s is not None and scan.time_s - self._full_s >= insertion.SETTLE_s + insertion.MEAN_s
 
 
-def _raise(site: Site, step: StartLow, from_V: float) -> None:
-    """Raise the pack's voltage in small steps until full current flows."""
+def _raise(site: Site, step: StartLow, from_V: float) -> bool:
+    """Raise the pack's voltage in small steps until full current flows; whether a current flows at the end."""
     loop, full_A = site.loop, full_above_A(site.nominal_current()[0])
     low = site.specification.low_start
     threshold = low.precharge.threshold_per_cell if low is not None and low.precharge is not None else None
@@ -153,16 +154,29 @@ def _raise(site: Site, step: StartLow, from_V: float) -> None:
             loop.observe(insertion.SETTLE_s + insertion.MEAN_s)
         loop.event("low-step", cell_V=level_V, start_s=round(begun_s, 3), end_s=round(loop.now_s, 3), came=came)
         if came:
-            return
+            break
+    return _flows(site)
 
 
-def _hold(site: Site, step: StartLow, full_A: float) -> None:
-    """Wait, the pack's voltage held, until the precharge ends by itself or the step's time has passed."""
+def _hold(site: Site, step: StartLow, watch: _Watch) -> bool:
+    """Wait, the pack's voltage held, until the precharge ends by itself or the step's time has passed.
+
+    Returns whether a current flows at the end. Where none does, mains that were gone for a while let it begin again.
+    """
     loop, begun_s = site.loop, site.loop.now_s
 
     def ends(scan: Scan) -> bool:
-        return scan.current_A.good and not NOTHING_A < scan.current_A.value < full_A
+        return scan.current_A.good and not NOTHING_A < scan.current_A.value < watch.full_A
 
     came = loop.observe(step.hold, ends)
     loop.observe(insertion.SETTLE_s + insertion.MEAN_s)
+    if came and not _flows(site):
+        loop.observe(watch.watch_s, lambda scan: scan.current_A.good and scan.current_A.value > PULSE_A)
     loop.event("low-hold", start_s=round(begun_s, 3), end_s=round(loop.now_s, 3), came=came)
+    return _flows(site)
+
+
+def _flows(site: Site) -> bool:
+    """Whether the last scan shows a current; what it does not show may be the mains' doing, and takes a control."""
+    last = site.loop.last
+    return last is not None and last.current_A.good and last.current_A.value > NOTHING_A

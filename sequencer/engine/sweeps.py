@@ -32,7 +32,7 @@ def sweep_id(site: Site, step: SweepId) -> str:
     try:
         outward = sides(site.specification, step.outside)
         for number, band in enumerate(site.specification.id_bands, 1):
-            _sweep_band(band, [side for side in outward if side.band == number], step, at)
+            _sweep_band(site, band, [side for side in outward if side.band == number], step, at)
         at("open", "open")
         at("short", "short")
     except NoControl as none:
@@ -40,15 +40,29 @@ def sweep_id(site: Site, step: SweepId) -> str:
     return "swept"
 
 
-def _sweep_band(band: IdBand, outward: list[Side], step: SweepId, at: Show) -> None:
+def _sweep_band(site: Site, band: IdBand, outward: list[Side], step: SweepId, at: Show) -> None:
     name = f"band{outward[0].band}"
-    middle = at(band.middle_ohm, f"{name}.middle")
-    at_ends = [at(side.end_ohm, side.roles[1]) for side in outward]
+    middle = _inside(site, step, at, band.middle_ohm, f"{name}.middle")
+    at_ends = [_inside(site, step, at, side.end_ohm, side.roles[1]) for side in outward]
     for side, end in zip(outward, at_ends, strict=True):
         role = side.roles[2 if side.neighbour else 3]
         chain = [(band.middle_ohm, middle), (side.end_ohm, end), (side.beyond_ohm, at(side.beyond_ohm, role))]
         edge = _Edge(_band_of, step.resolution, "geometric", step.repeats)
         edge.find(chain, lambda ohm, role=side.roles[2]: at(ohm, role))  # type: ignore[misc]
+
+
+def _inside(site: Site, step: SweepId, at: Show, ohm: float, role: str) -> Shown:
+    """A point that must charge; where it does not, shown once more, a nominal pack having been charged between.
+
+    Mains that are gone for a while look like a charger that refuses, or breaks off; they do not come back to do it
+    twice.
+    """
+    shown = at(ohm, role)
+    if shown.void or shown.watched.seen.kind == "charges":
+        return shown
+    if shown.watched.began and not controlled(site, step.cell_voltage):
+        raise NoControl(LATCHED)
+    return at(ohm, role)
 
 
 def _band_of(seen: Seen) -> str:

@@ -137,12 +137,30 @@ class Points:
         points = self.at(*roles)
         silent = next((point for point in points if point.seen.kind != "charges" and not point.void), None)
         if silent is not None:
+            doubt = self._silent_once(silent, points)
+            if doubt is not None:
+                return Found(trouble=doubt)
             return Found(none=f"{_where(silent)}: {silent.seen.words}", start_s=silent.start_s, end_s=silent.end_s)
         if any(point.void for point in points):
             return Found(trouble="a control failed twice within the band")
-        if len(points) < len(roles):
-            return self.not_shown(f"{len(points)} of {len(roles)} points of the band were shown")
+        shown = len({point.role for point in points})
+        if shown < len(roles):
+            return self.not_shown(f"{shown} of {len(roles)} points of the band were shown")
         return self._current(min(points, key=lambda point: _margin_A(point, limit)), len(points))
+
+    def _silent_once(self, silent: Point, points: list[Point]) -> str | None:
+        """Why a point of a band that did not charge may have been the mains' doing; None where it did so again."""
+        same = [point for point in points if point.role == silent.role]
+        told = f"{_where(silent)}: {silent.seen.words}"
+        if any(point.seen.kind == "charges" for point in same):
+            return (
+                f"{told}; shown again, it charged: a charger that fails at times, or mains that were gone for a while"
+            )
+        if any(point.void for point in same):
+            return f"{told}; the control after it failed twice"
+        if len(same) == 1 and self.given_up is not None:
+            return f"{told}; it was not shown again: {self.given_up}"
+        return None
 
     def _current(self, point: Point, count: int) -> Found:
         current = self.evidence.trace("charger.current")

@@ -216,3 +216,14 @@ def events(found: Any) -> list[dict[str, Any]]:
     from sequencer.engine.record_reader import Record
 
     return list(Record.open(found.record, check=False).events)
+
+
+@pytest.mark.parametrize(
+    "trouble", ["{at: 33 s, does: mains-lost, lasts: 8 s}", "{at: 40 s, does: mains-lost, lasts: 25 s}"]
+)
+def test_mains_that_are_gone_for_a_while_fail_no_band(rehearse_full: Rehearse, trouble: str) -> None:
+    """The charge of a band's point breaks off, or does not begin; shown once more, it is charged."""
+    found = rehearse_full("id-bands", spec_text=ONE_BAND, changes=QUICK, bench=with_virtual(f"troubles: [{trouble}]"))
+    assert found.failing == set()
+    assert found.verdicts["id.band1.current"] == "inconclusive"
+    assert "shown again, it charged" in found.verdict("id.band1.current")["why"]

@@ -227,3 +227,48 @@ def test_a_wrong_shunt_is_not_the_charger_s_doing(rehearse_full: Rehearse, tmp_p
     found = rehearse_full(short(tmp_path, {**ONE, **NO_WEAK}), bench=bench)
     assert found.failing == set()
     assert found.verdicts["low_start.precharge_current"] == "inconclusive"
+
+
+def test_a_precharge_is_not_missed_where_none_is_declared(rehearse_full: Rehearse, tmp_path: Any) -> None:
+    """The lantern precharges from 2.4 V to 2.82 V; a procedure that starts at 1.2 V and 2.9 V only does not show it."""
+    found = rehearse_full(short(tmp_path, {**FEW, **NO_WEAK}), spec="lantern")
+    assert found.failing == set()
+    for limit in ("precharge_current", "threshold"):
+        assert found.verdicts[f"low_start.{limit}"] == "not run"
+        assert "2.4 V to 2.82 V, where no start voltage" in found.verdict(f"low_start.{limit}")["why"]
+
+
+@pytest.mark.parametrize(
+    ("trouble", "words"),
+    [
+        ("{at: 150 s, does: mains-lost}", "no good control followed"),
+        ("{at: 150 s, does: mains-lost, lasts: 8 s}", "began again by itself"),
+    ],
+)
+@pytest.mark.parametrize("limit", ["{below: 35 min}", "[28.5 min, 31.5 min]"])
+def test_a_precharge_that_the_mains_ended_says_nothing_of_its_timer(
+    rehearse_full: Rehearse, trouble: str, words: str, limit: str
+) -> None:
+    """Ended after 70 s it would pass the one limit and fail the other, and neither is the charger's doing."""
+    found = rehearse_full(
+        "precharge-timer",
+        spec_text={"time: {below: 35 min}": f"time: {limit}"},
+        bench={"  errors: 1\n": f"  errors: 1\n  troubles: [{trouble}]\n"},
+    )
+    assert found.failing == set()
+    assert found.verdicts["low_start.precharge_time"] == "inconclusive"
+    assert words in found.verdict("low_start.precharge_time")["why"]
+
+
+@pytest.mark.parametrize("at_s", [46, 50])
+def test_mains_gone_while_the_pack_is_raised_leave_the_threshold_open(
+    rehearse_full: Rehearse, tmp_path: Any, at_s: int
+) -> None:
+    low = "{refuse_below: 1.4 V, precharge: {below: 3.20 V, current: 0.25 A}, cells: all}"
+    found = rehearse_full(
+        short(tmp_path, {**ONE, **NO_WEAK}),
+        charger={"low_start": low},
+        bench={"  errors: 1\n": f"  errors: 1\n  troubles: [{{at: {at_s} s, does: mains-lost}}]\n"},
+    )
+    assert "low_start.threshold" not in found.failing
+    assert found.verdicts["low_start.threshold"] == "inconclusive"
