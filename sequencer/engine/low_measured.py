@@ -195,7 +195,8 @@ def _mains_doubt(held: LowStartPoint, current: Trace, stop: int) -> str | None:
 
 
 def _pulses(starts: LowStarts) -> list[tuple[LowStartPoint, Pulse]]:
-    return [(point, pulse) for point in starts.points for pulse in point.response.pulses]
+    """Of starts that count: mains that are gone cut a precharge into what looks like a pulse."""
+    return [(point, pulse) for point in starts.points if not point.void for pulse in point.response.pulses]
 
 
 def probe_current(starts: LowStarts) -> Found:

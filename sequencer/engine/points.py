@@ -92,6 +92,7 @@ def is_good(site: Site, watched: Watched) -> bool:
         return False
     if site.control_A is None:
         site.control_A = estimate.value
+        site.control_cell_V = None if site.situation is None else site.situation.cell_V
     return abs(estimate.value - site.control_A) <= CONTROL_SHARE * site.control_A
 
 

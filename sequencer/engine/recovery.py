@@ -101,7 +101,7 @@ def _closed(bench: OpenBench) -> list[BenchFault]:
 
 def control_again(site: Site) -> None:
     """A control point before a repeated step. Raises InstrumentFault where the charger no longer charges as before."""
-    if site.control_A is None or site.situation is None:
+    if site.control_A is None or site.control_cell_V is None:
         return  # nothing was ever charged: the insertion that follows is the first to tell
-    if not points.controlled(site, site.situation.cell_V):
+    if not points.controlled(site, site.control_cell_V):  # not what was in last: that may be a discharged pack
         raise InstrumentFault(site.bench.mains.name, GONE)

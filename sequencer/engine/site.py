@@ -40,6 +40,7 @@ class Site:
     fixture_ohm: float | None = None
     zero_V: float = 0.0
     control_A: float | None = None  # of the first control; later ones must charge within 5 % of it
+    control_cell_V: float | None = None  # at which it was charged so
     situation: Situation | None = None
     vouched: bool = True  # nothing was refused since a nominal pack was last charged, or all of it has its control
 

@@ -239,13 +239,12 @@ def test_a_precharge_is_not_missed_where_none_is_declared(rehearse_full: Rehears
 
 
 @pytest.mark.parametrize(
-    ("trouble", "words"),
+    ("trouble", "words", "limit"),
     [
-        ("{at: 150 s, does: mains-lost}", "no good control followed"),
-        ("{at: 150 s, does: mains-lost, lasts: 8 s}", "began again by itself"),
+        ("{at: 150 s, does: mains-lost}", "no good control followed", "{below: 35 min}"),
+        ("{at: 150 s, does: mains-lost, lasts: 8 s}", "began again by itself", "[28.5 min, 31.5 min]"),
     ],
 )
-@pytest.mark.parametrize("limit", ["{below: 35 min}", "[28.5 min, 31.5 min]"])
 def test_a_precharge_that_the_mains_ended_says_nothing_of_its_timer(
     rehearse_full: Rehearse, trouble: str, words: str, limit: str
 ) -> None:
@@ -260,15 +259,34 @@ def test_a_precharge_that_the_mains_ended_says_nothing_of_its_timer(
     assert words in found.verdict("low_start.precharge_time")["why"]
 
 
-@pytest.mark.parametrize("at_s", [46, 50])
-def test_mains_gone_while_the_pack_is_raised_leave_the_threshold_open(
-    rehearse_full: Rehearse, tmp_path: Any, at_s: int
-) -> None:
+def test_mains_gone_while_the_pack_is_raised_leave_the_threshold_open(rehearse_full: Rehearse, tmp_path: Any) -> None:
     low = "{refuse_below: 1.4 V, precharge: {below: 3.20 V, current: 0.25 A}, cells: all}"
     found = rehearse_full(
         short(tmp_path, {**ONE, **NO_WEAK}),
         charger={"low_start": low},
-        bench={"  errors: 1\n": f"  errors: 1\n  troubles: [{{at: {at_s} s, does: mains-lost}}]\n"},
+        bench={"  errors: 1\n": "  errors: 1\n  troubles: [{at: 50 s, does: mains-lost}]\n"},
     )
     assert "low_start.threshold" not in found.failing
     assert found.verdicts["low_start.threshold"] == "inconclusive"
+
+
+@pytest.mark.parametrize("instrument", ["meter_shunt", "mains"])
+def test_a_link_lost_at_a_discharged_pack_is_followed_by_a_control_with_a_nominal_one(
+    rehearse_full: Rehearse, tmp_path: Any, instrument: str
+) -> None:
+    trouble = f"{{at: 32 s, does: mute, instrument: {instrument}, lasts: 1 s}}"
+    found = rehearse_full(
+        short(tmp_path, {**ONE, **NO_WEAK}), bench={"  errors: 1\n": f"  errors: 1\n  troubles: [{trouble}]\n"}
+    )
+    assert len(events(found, "step-broken")) == 1
+    assert (found.ended.ended, found.failing) == ("complete", set())
+    assert found.verdicts["low_start.threshold"] == "pass"
+
+
+def test_mains_gone_for_good_make_no_probe_of_a_precharge(rehearse_full: Rehearse, tmp_path: Any) -> None:
+    found = rehearse_full(
+        short(tmp_path, {"voltages: [0.8 V, 1.2 V, 1.6 V, 2.0 V, 2.5 V, 2.9 V]": "voltages: [2.5 V]", **NO_WEAK}),
+        spec="lantern",
+        bench={"  errors: 1\n": "  errors: 1\n  troubles: [{at: 38 s, does: mains-lost}]\n"},
+    )
+    assert found.failing == set()
