@@ -66,7 +66,7 @@ def _first_plateau(site: Site, watched: Watched) -> None:
     points.measure_fixture_once(site, watched)
     estimate = watched.seen.current
     if site.control_A is None and estimate is not None:
-        site.control_A = estimate.value
+        site.hold_controls_against(estimate.value)
 
 
 def charge(site: Site, step: FullCharge) -> str:

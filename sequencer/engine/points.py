@@ -91,9 +91,9 @@ def is_good(site: Site, watched: Watched) -> bool:
     if watched.seen.kind != "charges" or estimate is None:
         return False
     if site.control_A is None:
-        site.control_A = estimate.value
-        site.control_cell_V = None if site.situation is None else site.situation.cell_V
-    return abs(estimate.value - site.control_A) <= CONTROL_SHARE * site.control_A
+        site.hold_controls_against(estimate.value)
+    first_A = site.control_A or estimate.value
+    return abs(estimate.value - first_A) <= CONTROL_SHARE * first_A
 
 
 def give_up(site: Site, finding: str, why: str) -> str:

@@ -48,6 +48,11 @@ class Site:
     def bench(self) -> OpenBench:
         return self.loop.bench
 
+    def hold_controls_against(self, current_A: float) -> None:
+        """The pack that is in was charged with this current: later controls must be, at the same voltage."""
+        self.control_A = current_A
+        self.control_cell_V = None if self.situation is None else self.situation.cell_V
+
     def forget_fixture(self) -> None:
         """What lies between charger and node is measured anew at the next insertion, as at the first."""
         self.settling_s, self.fixture_ohm, self.zero_V = None, None, 0.0
