@@ -21,6 +21,8 @@ from sequencer.engine.walks import GOES_ON, OVER_V, STOPPED
 
 TAP_LEADS_ohm = 1.0  # between a tap's channel and the charger's pin, beyond the shunt: common practice, no source
 FOLLOWS_V = 0.05  # a cell that reads further from what it was set to was not raised as the procedure says
+FULL = 0.95  # of the control's current: what is less has begun to fall
+JUST_BEFORE_s = 0.3  # a reading of the fast pace and more
 BEFORE_s = 3.5  # looked back so far for what a cell stood at before it was raised
 
 
@@ -256,10 +258,22 @@ class Walks:
         cells = self._evidence.pack.cells
         if cell < cells:
             return self._channel_V(cell, leg) - self._drop_V(cell, leg) + self._drop_V(cell - 1, leg)
-        until_s = leg.stop_s[1] if leg.stop_s is not None else leg.end_s
-        top_V = _mean(self._evidence.trace("charger.voltage").within(leg.start_s + 0.15, until_s - 1e-6))
+        until_s = self._full_until_s(leg)
+        voltage = self._evidence.trace("charger.voltage")
+        standing = voltage.within(leg.start_s + 0.15, until_s - 1e-6)
+        if not standing.value.size:  # stopped at once: the step left the pack's voltage as it was just before
+            standing = voltage.within(leg.start_s - JUST_BEFORE_s, min(leg.start_s, until_s) - 1e-6)
+        top_V = _mean(standing)
         below_V = sum(self._channel_V(number, leg) for number in range(1, cells))
         return top_V - (below_V - self._drop_V(cells - 1, leg))
+
+    def _full_until_s(self, leg: Leg) -> float:
+        """Until when the whole current flowed in a leg: one aperture may have seen a part of its fall."""
+        if leg.stop_s is None:
+            return leg.end_s
+        window = self._current.within(leg.start_s, leg.stop_s[1])
+        falling = np.flatnonzero(window.value < FULL * (self._control_A or 0.0))
+        return float(window.time_s[falling[0]]) if falling.size else leg.stop_s[1]
 
     def _channel_V(self, number: int, leg: Leg) -> float:
         return _mean(self._evidence.trace(f"tap{number}.voltage").within(leg.start_s, leg.end_s + 0.01))

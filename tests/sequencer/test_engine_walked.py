@@ -57,3 +57,20 @@ def test_a_stop_counts_only_with_a_control_after_it(rehearse_full: Rehearse) -> 
     assert without["tap_trip.cell3.voltage"].trouble is not None
     assert "no good control after the charge had stopped" in without["tap_trip.cell3.voltage"].trouble
     assert without["tap_trip.cell2.voltage"].trouble is None
+
+
+def test_a_top_cell_that_stops_the_charge_at_the_next_step_at_once_has_its_voltage(rehearse_full: Rehearse) -> None:
+    """The cell passed its threshold 2.2 s ago, within the step before; this step is over within a reading.
+
+    What the cell stood at is then what the contacts read just before the step, less the cells below it.
+    """
+    monitor = "{threshold: 4.25 V, filter: 2.28 s, hysteresis: 50 mV, latch: false}"
+    found = rehearse_full("tap-offset", spec="lantern", charger={"tap_monitor": monitor})
+    stopped = [
+        json.loads(line)
+        for line in (found.record / "data" / "events.jsonl").read_text("utf-8").splitlines()
+        if '"tap_trip"' in line and '"out"' in line and '"cell": 3' in line
+    ][-1]
+    assert stopped["end_s"] - stopped["start_s"] < 0.25
+    low, high = found.verdict("tap_trip.cell3.voltage")["interval"]
+    assert low < 4.25 < high == pytest.approx(4.26, abs=0.006)  # the meters of the cells below step by 1 mV each
