@@ -196,7 +196,8 @@ def _mains_doubt(held: LowStartPoint, current: Trace, stop: int) -> str | None:
 
 def _pulses(starts: LowStarts) -> list[tuple[LowStartPoint, Pulse]]:
     """Of starts that count: mains that are gone cut a precharge into what looks like a pulse."""
-    return [(point, pulse) for point in starts.points if not point.void for pulse in point.response.pulses]
+    counted = [point for point in starts.points if not point.void and point.response.kind != "undecided"]
+    return [(point, pulse) for point in counted for pulse in point.response.pulses]
 
 
 def probe_current(starts: LowStarts) -> Found:

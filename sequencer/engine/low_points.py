@@ -87,19 +87,26 @@ class LowStarts:
     # states
 
     def state(self, points: Sequence[LowStartPoint], expected: str | None, missing: str) -> Found:
-        """What the charger did at these starts: of several, the first that is not as declared."""
+        """What the charger did at these starts: of several, the first that is not as declared.
+
+        Shown again because nothing flowed, a start must be answered alike twice; full current is told by one.
+        """
         if not points:
             return self.not_shown(missing)
         allowed = (expected or "").split(OR)
         sure = [point for point in points if not point.void and self.untold(point) is None]
-        astray = next((point for point in sure if point.response.kind not in allowed), None)
-        if astray is not None:
-            return self._seen(astray, len(points))
-        unsure = next((point for point in points if point not in sure), None)
+        odd = [point for point in sure if point.response.kind not in allowed]
+        full = next((point for point in odd if point.response.kind == "full current"), None)
+        if full is None and (unlike := _unlike(odd, sure)) is not None:
+            return unlike
+        if odd:
+            return self._seen(full or odd[0], len(points))
+        told = {(point.cell_V, point.cell) for point in sure}
+        unsure = next((point for point in points if (point.cell_V, point.cell) not in told), None)
         if unsure is not None:
             why = self.untold(unsure) or "the control after it failed twice; what was seen there counts for nothing"
             return Found(trouble=f"{unsure.where}: {why}", start_s=unsure.start_s, end_s=unsure.end_s)
-        return self._seen(points[0], len(points))
+        return self._seen(sure[0], len(points))
 
     def _seen(self, point: LowStartPoint, count: int) -> Found:
         words = f"{point.where}: {point.response.words}"
@@ -124,6 +131,18 @@ class LowStarts:
     @property
     def precharged(self) -> list[LowStartPoint]:
         return [p for p in self.points if p.response.kind == "precharges" and p.response.current and p.role != "weak"]
+
+
+def _unlike(odd: list[LowStartPoint], sure: list[LowStartPoint]) -> Found | None:
+    """Why one start that was answered in two ways tells nothing; None where there is none."""
+    for one in odd:
+        for other in sure:
+            same = (one.cell_V, one.cell) == (other.cell_V, other.cell)
+            if same and one.response.kind != other.response.kind:
+                first, then = sorted((one, other), key=lambda point: point.start_s)
+                told = f"{one.where}: {first.response.words}; shown again: {then.response.words}"
+                return Found(trouble=f"{told}: mains or a contact that came and went?", start_s=first.start_s)
+    return None
 
 
 def _point(evidence: Evidence, event: dict[str, Any], full_A: float) -> LowStartPoint:

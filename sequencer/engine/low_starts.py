@@ -15,6 +15,7 @@ from sequencer.engine.scan import Scan
 from sequencer.engine.site import Site, Situation
 from sequencer.engine.targets import threshold_levels, weak_cells, weak_offsets
 from sequencer.engine.walks import DWELLS
+from sequencer.model.low_start import OR
 from sequencer.model.steps import StartLow
 
 FULL = 0.5  # of the lowest current declared for this pack: above it flows full current
@@ -37,7 +38,7 @@ def start_low(site: Site, step: StartLow) -> str:
         if step.hold and charged:
             _show(site, step, _low(site, step, min(charged)), "hold", min(charged))
         for cell in weak_cells(step, site.specification, site.pack.cells):
-            _show(site, step, _weak(site, step, cell), "weak", step.weak_cell or 0.0, cell)
+            _show_surely(site, step, _weak(site, step, cell), "weak", step.weak_cell or 0.0, cell)
     except NoControl as none:
         return give_up(site, "low_start", str(none))
     return "started low"
@@ -48,8 +49,29 @@ def _starts(site: Site, step: StartLow) -> dict[float, str]:
     kinds: dict[float, str] = {}
     for cell_V in sorted(step.voltages, reverse=True):
         role = "start" if "precharges" in kinds.values() else "start, raised"
-        kinds[cell_V] = _show(site, step, _low(site, step, cell_V), role, cell_V)
+        kinds[cell_V] = _show_surely(site, step, _low(site, step, cell_V), role, cell_V)
     return kinds
+
+
+def _show_surely(
+    site: Site, step: StartLow, situation: Situation, role: str, cell_V: float, cell: int | None = None
+) -> str:
+    """One start, and once more where nothing flowed that is declared to: mains may be gone for a while. Full current
+    into a discharged pack needs no second time.
+    """
+    kind = _show(site, step, situation, role, cell_V, cell)
+    allowed = _declared(site, cell_V, cell)
+    if allowed is None or kind in (*allowed.split(OR), "full current"):
+        return kind
+    return _show(site, step, situation, role, cell_V, cell)
+
+
+def _declared(site: Site, cell_V: float, cell: int | None) -> str | None:
+    """What the charger may do with this start; None where nothing is declared."""
+    low = site.specification.low_start
+    if low is None or cell is not None:
+        return None if low is None else low.weak_cell
+    return next((one.response for one in low.starts if one.holds(cell_V)), None)
 
 
 def _low(site: Site, step: StartLow, cell_V: float) -> Situation:

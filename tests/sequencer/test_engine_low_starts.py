@@ -291,3 +291,29 @@ def test_mains_gone_for_good_make_no_probe_of_a_precharge(rehearse_full: Rehears
         bench={"  errors: 1\n": "  errors: 1\n  troubles: [{at: 38 s, does: mains-lost}]\n"},
     )
     assert found.failing == set()
+
+
+@pytest.mark.parametrize(("at_s", "lasts_s"), [(27, 17), (38, 17)])  # before the precharge begins; while it flows
+def test_mains_gone_for_one_start_fail_nothing(rehearse_full: Rehearse, tmp_path: Any, at_s: int, lasts_s: int) -> None:
+    """Back at the control after it: shown again, the start is precharged, and so the first time tells nothing."""
+    trouble = f"{{at: {at_s} s, does: mains-lost, lasts: {lasts_s} s}}"
+    found = rehearse_full(
+        short(tmp_path, {"voltages: [0.8 V, 1.2 V, 1.6 V, 2.0 V, 2.5 V, 2.9 V]": "voltages: [2.5 V]", **NO_WEAK}),
+        spec="lantern",
+        bench={"  errors: 1\n": f"  errors: 1\n  troubles: [{trouble}]\n"},
+    )
+    assert found.failing == set()
+    assert len([one for one in events(found, "low-start") if one["cell_V"] == 2.5]) == 2
+    assert found.verdicts["low_start.precharge_current"] == "pass"
+
+
+def test_a_start_that_is_refused_twice_is_refused(rehearse_full: Rehearse, tmp_path: Any) -> None:
+    """Declared is a precharge; the charger refuses what lies below 2.6 V."""
+    low = "{refuse_below: 2.6 V, precharge: {below: 2.87 V, current: 0.30 A}}"
+    found = rehearse_full(
+        short(tmp_path, {"voltages: [0.8 V, 1.2 V, 1.6 V, 2.0 V, 2.5 V, 2.9 V]": "voltages: [2.5 V]", **NO_WEAK}),
+        spec="lantern",
+        charger={"low_start": low},
+    )
+    assert "low_start.start2.response" in found.failing
+    assert len([one for one in events(found, "low-start") if one["cell_V"] == 2.5]) == 2
