@@ -115,7 +115,8 @@ def _words(model: type[Written], path: tuple[str | int, ...], detail: Any) -> st
         case "fault":
             return str(detail["ctx"]["words"]) if not path else f"{name}: {detail['ctx']['words']}"
         case "missing":
-            return f"'{name}' is missing"
+            inside = f" in '{path[-2]}'" if len(path) > 1 and isinstance(path[-2], str) else ""
+            return f"'{name}' is missing{inside}"
         case "extra_forbidden":
             return unknown(name, _valid_keys(model, path[:-1]))
         case "value_error":

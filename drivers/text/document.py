@@ -6,7 +6,7 @@ Reading goes over ruamel.yaml's composed nodes (YAML 1.2).
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Container, Iterator, Mapping
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from pathlib import Path
@@ -151,12 +151,17 @@ def scalars(node: Node) -> Iterator[Scalar]:
             yield from scalars(value)
 
 
-def substitute(node: Node, values: Mapping[str, Node]) -> Node:
-    """Put `values[name]` in the place of every scalar "$name"; names without a value stay as they are."""
+def substitute(node: Node, values: Mapping[str, Node], given: Container[str] = ()) -> Node:
+    """Put `values[name]` in the place of every scalar "$name"; names without a value stay as they are.
+
+    given : names whose values were given elsewhere, such as on the command line: a fault of theirs is told there.
+    """
     if isinstance(node, Scalar):
         name = (node.text or "").removeprefix("$")
         known = node.text is not None and node.text.startswith("$") and name in values
-        return replace(values[name], place=node.place) if known else node
+        if not known:
+            return node
+        return values[name] if name in given else replace(values[name], place=node.place)
     if isinstance(node, Listing):
-        return replace(node, items=tuple(substitute(item, values) for item in node.items))
-    return replace(node, entries={key: substitute(value, values) for key, value in node.entries.items()})
+        return replace(node, items=tuple(substitute(item, values, given) for item in node.items))
+    return replace(node, entries={key: substitute(value, values, given) for key, value in node.entries.items()})

@@ -27,7 +27,7 @@ def charger_for(
     None for a real bench. Raises BadInput (no such charger; a charger asked for on a real bench; where a `pack` is
     given, one for another number of cells).
     """
-    from drivers.virtual.charger_file import load_charger
+    from drivers.virtual.charger_file import CHARGERS, load_charger
 
     faults = Faults()
     virtual = file.bench.virtual
@@ -38,11 +38,21 @@ def charger_for(
         return None
     name = asked or virtual.charger or Path(specification or "sprayer").stem
     place = Place("--charger") if asked else file.bound.place("virtual", "charger")
+    if not (asked or virtual.charger or (CHARGERS / f"{name}.yaml").is_file()):
+        told = f"no virtual charger bears the name '{name}' of the specification"
+        faults.add(Place("--charger"), f"{told}: name one, by its path or as one that ships ({', '.join(_shipped())})")
+        faults.raise_if_any()
     charger = load_charger(name, faults, place=place)
     if charger is not None and pack is not None:
         _check_cells(charger, pack, faults)
     faults.raise_if_any()
     return charger
+
+
+def _shipped() -> list[str]:
+    from drivers.virtual.charger_file import CHARGERS
+
+    return sorted(path.stem for path in CHARGERS.glob("*.yaml"))
 
 
 def _check_cells(charger: Bound[ChargerFile], pack: Bound[Pack], faults: Faults) -> None:

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
+from functools import cached_property
 from pathlib import Path
 from typing import Any
 
@@ -58,6 +60,9 @@ class Trace:
         return np.where(index >= 0, self.value[np.maximum(index, 0)], np.nan)
 
 
+KEPT_s = 1.1  # an event ends with a scan; at the quiet pace the next one comes a second later
+
+
 def counted(events: list[dict[str, Any]]) -> list[dict[str, Any]]:
     """All events but those by which a broken step would be judged: it was repeated, and says nothing by itself.
 
@@ -95,7 +100,19 @@ class Evidence:
         return str(self.manifest["ended"])
 
     def events(self, name: str) -> list[dict[str, Any]]:
-        return [event for event in counted(self.record.events) if event["event"] == name]
+        """Every event of a name that counts, with the samples that belong to it.
+
+        Events and samples are written to files of their own: where a full disk cut the samples short, an event may tell
+        of a stretch of which only the beginning was kept, and that beginning says nothing.
+        """
+        named = [event for event in counted(self.record.events) if event["event"] == name]
+        return [event for event in named if event.get("end_s", 0.0) <= self._kept_until_s + KEPT_s]
+
+    @cached_property
+    def _kept_until_s(self) -> float:
+        """Time of the last scan of which samples were kept; without any, nothing is cut."""
+        times = self.record.series("loop.period").time_s
+        return float(times[-1]) if len(times) else math.inf
 
     @property
     def trip(self) -> dict[str, Any] | None:

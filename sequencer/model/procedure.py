@@ -85,7 +85,7 @@ def load_procedure(document: Document, changes: Mapping[str, str], faults: Fault
             faults.add(Place(f"--set {name}={text}"), unknown(name, values, "parameter"))
         else:
             values[name] = Scalar(Place(f"--set {name}={text}"), text)
-    filled = substitute(root, values)
+    filled = substitute(root, values, changes)
     for scalar in scalars(filled):
         if scalar.text is not None and scalar.text.startswith("$"):
             faults.add(scalar.place, unknown(scalar.text.removeprefix("$"), values, "parameter"))

@@ -56,6 +56,11 @@ def test_a_record_opens_as_what_was_run(rehearse: Callable[..., Any]) -> None:
     assert evidence.begun("no such step") is None
     with pytest.raises(BadInput, match=r"other\.yaml"):
         open_evidence(record, ("other.yaml", b"packmime: specification 1\n"))
+    # an event that outlives the samples, as a full disk leaves it, tells of what was not kept
+    last_s = float(evidence.record.series("loop.period").time_s[-1])
+    for end_s, counts in ((last_s, 1), (last_s + 1.0, 2), (last_s + 1.2, 2)):
+        evidence.record.events.append({"event": "point", "start_s": last_s - 5.0, "end_s": end_s, "t": end_s})
+        assert len(evidence.events("point")) == counts
 
 
 def test_a_record_that_was_changed_is_not_judged(rehearse: Callable[..., Any]) -> None:
