@@ -90,7 +90,9 @@ def _kind_is_right(node: Node, kind: str, faults: Faults) -> bool:
 def _report(model: type[Written], root: Node, detail: Any, faults: Faults) -> None:
     path = tuple(part for part in detail["loc"] if isinstance(part, (str, int)))
     split = _split_by_comma(root, path) if detail["type"] == "extra_forbidden" else None
-    faults.add(find(root, path)[1], split or _words(model, path, detail))
+    node, place = find(root, path)
+    given = isinstance(node, Scalar) and str(node.place).startswith("--")  # on the command line, and not in the file
+    faults.add(node.place if given else place, split or _words(model, path, detail))
 
 
 def _split_by_comma(root: Node, path: tuple[str | int, ...]) -> str | None:

@@ -106,6 +106,7 @@ def test_bad_input_lists_all_faults_and_touches_nothing(packmime: Callable, tmp_
         (("charge-profile", "--set", "compression=2000"), "must lie between 1 and 100"),
         (("charge-profile", "--set", "compression"), "NAME=VALUE was expected"),
         (("charge-profile", "--charger", "sprinkler"), "unknown charger 'sprinkler'"),
+        (("charge-profile", "--set", "start=3,7 V"), '--set start=3,7 V: cell_voltage: "3,7 V" has a comma'),
         (("charge-profile", "--bench", "bay-1"), "unknown bench 'bay-1'"),
     ],
 )
