@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import os
+import signal
 import subprocess
 import sys
 from collections.abc import Callable
@@ -44,6 +45,12 @@ def command() -> Callable[..., subprocess.Popen[str]]:
             stderr=subprocess.STDOUT,
             text=True,
             encoding="utf-8",
+            preexec_fn=_hear_hangups if hasattr(signal, "SIGHUP") else None,
         )
 
     return start
+
+
+def _hear_hangups() -> None:
+    """Tests that themselves run under nohup would hand their deafness on, which the command respects."""
+    signal.signal(signal.SIGHUP, signal.SIG_DFL)
