@@ -44,15 +44,20 @@ def legend(figure: Figure, shown: Sequence[Mark], left: float, top: float, width
     handles = [
         Line2D([], [], color=INK, linestyle="none", label=_WORDS.get(kind, kind), **_MARKS[kind]) for kind in kinds
     ]
+    legend_line(figure, handles, left, top, len(kinds) if width_in > 6 else 2, gap=0.2)
+
+
+def legend_line(figure: Figure, handles: Sequence[Any], left: float, top: float, ncols: int, gap: float = 0.4) -> None:
+    """A legend without a frame, its upper left corner at (left, top); gap: between mark and word, in letters."""
     figure.legend(
         handles=handles,
         loc="upper left",
         bbox_to_anchor=(left, top),
-        ncols=len(kinds) if width_in > 6 else 2,
+        ncols=ncols,
         frameon=False,
         borderpad=0,
         borderaxespad=0,
-        handletextpad=0.2,
+        handletextpad=gap,
         columnspacing=1.2,
         fontsize=8.5,
         labelcolor=INK,

@@ -6,6 +6,7 @@ import math
 from typing import TYPE_CHECKING, Any
 
 from reports.canvas import BAND_TOO, CURRENT, GRID, INK, MUTED, PAPER, TRIP, VOLTAGE, frame, settings
+from reports.mark_styles import legend_line
 from reports.tap_map import Exchanged, TapMap
 from reports.wording import si
 
@@ -119,19 +120,7 @@ def _legend(figure: Figure, shown: TapMap, left: float, top: float) -> None:
         Line2D([], [], color=INK, linestyle="none", label=f"standing {way}", **_MARKS[way]) for way in ways
     ]
     handles.append(Patch(facecolor=BAND_TOO, edgecolor=MUTED, linewidth=0.8, label="not to be detected"))
-    figure.legend(
-        handles=handles,
-        loc="upper left",
-        bbox_to_anchor=(left, top),
-        ncols=len(handles),
-        frameon=False,
-        borderpad=0,
-        borderaxespad=0,
-        handletextpad=0.4,
-        columnspacing=1.2,
-        fontsize=8.5,
-        labelcolor=INK,
-    )
+    legend_line(figure, handles, left, top, len(handles))
 
 
 def _patterns(axes: Axes, shown: TapMap) -> None:
